@@ -1,0 +1,1 @@
+"""Electrotonic structure of whole folders of reconstructed neurons."""

@@ -1,0 +1,1 @@
+"""Reconstruction and assumptions to electrotonus; pure arrays, no disk, no tables."""

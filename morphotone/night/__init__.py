@@ -1,0 +1,1 @@
+"""Many items, unattended: discovery, ledger, workers, clock; knows no science."""

@@ -1,0 +1,1 @@
+"""What a scientist asks of a cell or a data set, answered as tables."""

@@ -1,0 +1,1 @@
+"""Bytes to reconstruction to findings; the only floor that opens input files."""
