@@ -17,6 +17,7 @@ Z_ij    Z          transfer impedance                           MOhm
 
 from collections import Counter
 from dataclasses import dataclass, field
+from functools import cache
 
 from mpmath import mp, mpc, mpf
 
@@ -246,6 +247,26 @@ def electrotonic_length(r1, r2, h, c):
     return 2 * h / (mp.sqrt(r1) + mp.sqrt(r2)) * mp.sqrt(2 * resistivity * slant / R_m)
 
 
+def bessel_K1(z):
+    """Return K1(z) by its ascending series, A&S 9.6.11, and by mpmath where |z| is large.
+
+    K1(z) = 1/z + ln(z/2) I1(z) - (z/4) sum_k [psi(k+1) + psi(k+2)] (z^2/4)^k / (k! (k+1)!).
+    The terms grow to e^|z| while K1 falls to e^-|z|: that many digits are added. mpmath's own K1 is exact
+    too, but takes a second for z near 50 at this precision.
+    """
+    if abs(z) > 120:
+        return mp.besselk(1, z)
+    with mp.workdps(mp.dps + 10 + int(2 * abs(z) / mp.log(10))):
+        quarter, term, psi, total, k = z * z / 4, mpf(1), 1 - 2 * mp.euler, mpf(0), 0
+        while abs(term) * (abs(psi) + 1) > mp.eps * (abs(total) + mp.eps) or k < 3:
+            total += psi * term
+            k += 1
+            term *= quarter / (k * (k + 1))
+            psi += mpf(1) / k + mpf(1) / (k + 1)
+        return 1 / z + mp.log(z / 2) * mp.besseli(1, z) - z / 4 * total
+
+
+@cache
 def two_port(r1, r2, h, R_i, g):
     """Return (y11, y12, y22) of a frustum, uS: I1 = y11 V1 + y12 V2, currents into the piece.
 
@@ -268,8 +289,10 @@ def two_port(r1, r2, h, R_i, g):
         def solutions(r):
             """Return V and the axial current -pi r^2/R_i dV/dx of both solutions."""
             z = 2 * mp.sqrt(kappa * r)
-            V = mp.besseli(1, z) / mp.sqrt(r), mp.besselk(1, z) / mp.sqrt(r)
-            dV_dr = mp.sqrt(kappa) * mp.besseli(2, z) / r, -mp.sqrt(kappa) * mp.besselk(2, z) / r
+            I1, I2, K1 = mp.besseli(1, z), mp.besseli(2, z), bessel_K1(z)
+            K2 = (1 / z - I2 * K1) / I1  # A&S 9.6.15, the Wronskian
+            V = I1 / mp.sqrt(r), K1 / mp.sqrt(r)
+            dV_dr = mp.sqrt(kappa) * I2 / r, -mp.sqrt(kappa) * K2 / r
             return V, tuple(-mp.pi * r**2 / resistivity * slope * d for d in dV_dr)
 
         (a1, b1), (i1, k1) = solutions(r1)
