@@ -1,0 +1,81 @@
+"""Work for the tests of the run that is no science: square roots of the numbers in a file.
+
+Module-level functions, since workers import them by name; `functools.partial` sets their options.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import os
+from pathlib import Path
+
+from morphotone.night.outcome import LINE_END, Item, Outcome, csv_line
+
+TABLES = {"roots": "file,number,root", "turned_away": "file,reason,sentence"}
+
+
+def root_of(item: Item) -> Outcome:
+    data = item.path.read_bytes()
+    sha256 = hashlib.sha256(data).hexdigest()
+    if sha256 == item.known_sha256:
+        return Outcome(item.name, "unchanged", sha256)
+    numbers = [float(line) for line in data.split()]
+    if min(numbers) < 0:
+        return Outcome(
+            item.name,
+            "turned away",
+            sha256,
+            len(numbers),
+            reason="negative",
+            sentence=f"{min(numbers)} has no root",
+        )
+    text = "".join(csv_line(item.name, repr(number), repr(number**0.5)) for number in numbers)
+    return Outcome(item.name, "analysed", sha256, len(numbers), {"roots": text})
+
+
+def roots(batch: list[Item]) -> list[Outcome]:
+    return [root_of(item) for item in batch]
+
+
+def roots_noted(batch: list[Item], diary: Path) -> list[Outcome]:
+    """Also note in a file what is really computed."""
+    outcomes = roots(batch)
+    with diary.open("a", encoding="utf-8") as stream:
+        stream.writelines(f"{out.name}\n" for out in outcomes if out.status != "unchanged")
+    return outcomes
+
+
+def roots_but(batch: list[Item], culprit: str) -> list[Outcome]:
+    """Fail as a whole where one of the files is the culprit."""
+    if any(item.name == culprit for item in batch):
+        raise ZeroDivisionError("what nobody\nthought of")
+    return roots(batch)
+
+
+def roots_deadly(batch: list[Item], culprit: str) -> list[Outcome]:
+    """Take the process down, as the system does when memory runs out."""
+    if any(item.name == culprit for item in batch):
+        os._exit(9)
+    return roots(batch)
+
+
+def roots_interrupted(batch: list[Item], at: str) -> list[Outcome]:
+    """Stand for Ctrl-C while a batch is worked on."""
+    if any(item.name == at for item in batch):
+        raise KeyboardInterrupt
+    return roots(batch)
+
+
+def roots_forgetful(batch: list[Item]) -> list[Outcome]:
+    """Lose the last file of each batch."""
+    return roots(batch)[:-1]
+
+
+def roots_unfounded(batch: list[Item]) -> list[Outcome]:
+    """Call everything unchanged."""
+    return [Outcome(item.name, "unchanged", "0" * 64) for item in batch]
+
+
+def roots_unended(batch: list[Item]) -> list[Outcome]:
+    """Leave out the line end."""
+    return [Outcome(item.name, "analysed", "", 1, {"roots": "1,1" + LINE_END[1]}) for item in batch]

@@ -1,0 +1,293 @@
+from __future__ import annotations
+
+import os
+import signal
+import subprocess
+import sys
+import time
+from collections.abc import Callable
+from functools import partial
+from pathlib import Path
+
+import pandas as pd
+import pytest
+
+from morphotone.errors import MorphotoneError
+from morphotone.night import runner
+from morphotone.night.folder import Found, find_files
+from morphotone.night.ledger import Ledger
+from morphotone.night.outcome import BatchFunction, Item, Outcome
+from morphotone.night.progress import Step
+from morphotone.night.results import export
+from morphotone.night.runner import Tally, run
+from tests.night import roots
+
+SMALL = 12_000  # bytes: three of the small files a batch, with what opening each of them costs
+
+both = pytest.mark.parametrize("workers", [1, 2])
+
+
+class Listener:
+    """Keeps what it is told."""
+
+    def __init__(self) -> None:
+        self.told: list[object] = []
+
+    def begin(self, files: int, size: int) -> None:
+        self.told.append((files, size))
+
+    def advance(self, step: Step) -> None:
+        self.told.append(step)
+
+    def end(self) -> None:
+        self.told.append("end")
+
+
+def night(
+    found: list[Found], function: BatchFunction, results: Path, workers: int = 1, **options: object
+) -> Tally:
+    """One run as a command makes it, with its tables."""
+    with Ledger(results, {}) as ledger:
+        tally = run(
+            found,
+            function,
+            ledger=ledger,
+            workers=workers,
+            batch_bytes=SMALL,
+            **options,  # type: ignore[arg-type]
+        )
+        export(ledger, [file.name for file in found], roots.TABLES)
+    return tally
+
+
+def turned_away(results: Path) -> dict[str, str]:
+    table = pd.read_csv(results / "turned_away.csv")
+    return dict(zip(table["file"], table["reason"] + ": " + table["sentence"], strict=True))
+
+
+def tables(results: Path) -> dict[str, bytes]:
+    return {path.name: path.read_bytes() for path in results.glob("*.csv")}
+
+
+@both
+def test_every_file_is_accounted_for(found: Callable[[], list[Found]], tmp_path: Path, workers: int) -> None:
+    tally = night(found(), roots.roots, tmp_path / "out", workers)
+    assert tally == Tally(found=12, analysed=11, turned_away=1, unchanged=0, samples=24)
+    table = pd.read_csv(tmp_path / "out" / "roots.csv")
+    assert list(table["file"].unique()) == [file.name for file in found() if file.name != "b/07.swc"]
+    assert (table["root"] == table["number"] ** 0.5).all()
+    assert turned_away(tmp_path / "out") == {"b/07.swc": "negative: -1.0 has no root"}
+
+
+def test_the_same_bytes_for_any_number_of_workers(found: Callable[[], list[Found]], tmp_path: Path) -> None:
+    for workers in (1, 2, 3):
+        night(found(), roots.roots, tmp_path / str(workers), workers)
+    assert tables(tmp_path / "1") == tables(tmp_path / "2") == tables(tmp_path / "3")
+
+
+@both
+def test_what_is_finished_is_not_computed_again(
+    found: Callable[[], list[Found]], numbers: Path, tmp_path: Path, workers: int
+) -> None:
+    diary, out = tmp_path / "diary", tmp_path / "out"
+    function = partial(roots.roots_noted, diary=diary)
+    first = night(found(), function, out, workers)
+    before = tables(out)
+    assert sorted(diary.read_text(encoding="utf-8").split()) == [file.name for file in found()]
+    diary.unlink()
+
+    assert night(found(), function, out, workers) == Tally(12, 11, 1, unchanged=12, samples=24)
+    assert first.unchanged == 0
+    assert diary.read_text(encoding="utf-8") == ""
+    assert tables(out) == before
+
+    (numbers / "a" / "04.swc").write_text("9\n", encoding="utf-8")
+    (numbers / "b" / "07.swc").write_text("4\n", encoding="utf-8")
+    (numbers / "a" / "00.swc").unlink()
+    (numbers / "new.swc").write_text("16\n", encoding="utf-8")
+    assert night(found(), function, out, workers) == Tally(12, 12, 0, unchanged=9, samples=21)
+    assert sorted(diary.read_text(encoding="utf-8").split()) == ["a/04.swc", "b/07.swc", "new.swc"]
+    table = pd.read_csv(out / "roots.csv").set_index("file")["root"]
+    assert table["a/04.swc"] == 3.0
+    assert "a/00.swc" not in table.index
+    assert turned_away(out) == {}
+
+
+@both
+def test_a_fault_of_the_program_costs_one_file(
+    found: Callable[[], list[Found]], tmp_path: Path, workers: int
+) -> None:
+    function = partial(roots.roots_but, culprit="a/04.swc")
+    tally = night(found(), function, tmp_path / "out", workers)
+    assert (tally.analysed, tally.turned_away) == (10, 2)
+    said = turned_away(tmp_path / "out")
+    assert list(said) == ["a/04.swc", "b/07.swc"]
+    assert said["a/04.swc"].startswith(
+        "program_error: ZeroDivisionError: what nobody thought of (roots.py, line "
+    )
+    # the next run, of a mended program, takes it up again
+    assert night(found(), roots.roots, tmp_path / "out", workers) == Tally(12, 11, 1, 11, 24)
+
+
+@both
+@pytest.mark.parametrize(
+    ("function", "expected"),
+    [
+        (roots.roots_forgetful, r"RuntimeError: outcomes are for \[\], expected \['a/00.swc'\]"),
+        (roots.roots_unfounded, r"RuntimeError: a/00.swc is called unchanged, but its hash is not the known"),
+        (roots.roots_unended, r"ValueError: a/00.swc: part 'roots' ends with '1\\n'"),
+    ],
+)
+def test_a_function_that_breaks_its_word_loses_nothing_in_silence(
+    found: Callable[[], list[Found]], tmp_path: Path, workers: int, function: BatchFunction, expected: str
+) -> None:
+    tally = night(found(), function, tmp_path / "out", workers)
+    assert tally == Tally(12, 0, 12, 0, 0)
+    said = pd.Series(turned_away(tmp_path / "out"))
+    assert said.str.startswith("program_error").all()
+    assert said[:1].str.contains(expected).all()
+
+
+@pytest.mark.parametrize("workers", [2, 3])
+def test_a_worker_that_dies_costs_one_file(
+    found: Callable[[], list[Found]], tmp_path: Path, workers: int
+) -> None:
+    function = partial(roots.roots_deadly, culprit="a/04.swc")
+    tally = night(found(), function, tmp_path / "out", workers)
+    assert (tally.analysed, tally.turned_away) == (10, 2)
+    said = turned_away(tmp_path / "out")
+    assert said["a/04.swc"].startswith("worker_died: the process that worked on this file was ended")
+
+
+@both
+def test_strict_stops_at_the_first_file_turned_away(
+    found: Callable[[], list[Found]], tmp_path: Path, workers: int
+) -> None:
+    expected = r"stopped at the first file turned away .*: b/07\.swc,negative,-1\.0 has no root"
+    # the second time, when the ledger knows the file already, all the same
+    for _ in range(2):
+        with pytest.raises(MorphotoneError, match=expected):
+            night(found(), roots.roots, tmp_path / "out", workers, strict=True)
+    with Ledger(tmp_path / "out", {}) as ledger:
+        assert ledger.known()["b/07.swc"].status == "turned away"
+
+
+def test_strict_says_nothing_when_all_is_well(found: Callable[[], list[Found]], tmp_path: Path) -> None:
+    good = [file for file in found() if file.name != "b/07.swc"]
+    assert night(good, roots.roots, tmp_path / "out", strict=True).analysed == 11
+
+
+def test_an_interruption_leaves_the_finished_batches(
+    found: Callable[[], list[Found]], tmp_path: Path
+) -> None:
+    function = partial(roots.roots_interrupted, at="b/03.swc")
+    listener = Listener()
+    with pytest.raises(KeyboardInterrupt, match=r"^$"):
+        night(found(), function, tmp_path / "out", progress=listener)
+    with Ledger(tmp_path / "out", {}) as ledger:
+        assert list(ledger.known()) == [f"a/{index:02}.swc" for index in range(0, 12, 2)]
+    assert listener.told[-1] == "end"
+    assert night(found(), roots.roots, tmp_path / "out") == Tally(12, 11, 1, 6, 24)
+
+
+def test_what_cannot_be_opened_is_turned_away_unopened(
+    found: Callable[[], list[Found]], tmp_path: Path
+) -> None:
+    spoilt = [*found(), Found(tmp_path / "shut", "shut/", 0, "this folder cannot be listed")]
+    listener = Listener()
+    tally = night(spoilt, roots.roots, tmp_path / "out", progress=listener)
+    assert tally == Tally(13, 11, 2, 0, 24)
+    assert turned_away(tmp_path / "out")["shut/"] == "unreadable: this folder cannot be listed"
+    assert listener.told[1] == Step(files=1, turned_away=1)
+
+
+@both
+def test_progress_hears_of_everything(found: Callable[[], list[Found]], tmp_path: Path, workers: int) -> None:
+    size = sum(file.size for file in found())
+    for _ in range(2):  # files that are unchanged count like the others
+        listener = Listener()
+        night(found(), roots.roots, tmp_path / "out", workers, progress=listener)
+        begin, *steps, end = listener.told
+        assert (begin, end) == ((12, size), "end")
+        assert sum(steps, Step()) == Step(12, size, 24, 1)  # type: ignore[arg-type]
+
+
+def test_batches_depend_on_the_files_alone(tmp_path: Path) -> None:
+    files = [
+        Found(tmp_path / str(i), str(i), size) for i, size in enumerate([10, 10, 99_999, 10, 10, 10, 10])
+    ]
+    with Ledger(tmp_path / "out", {}) as ledger:
+        ledger.record([Outcome("1", "analysed", "h")])
+        batches = list(runner._batches(files, ledger.known(), SMALL))
+    assert [[item.name for item in batch] for batch in batches] == [["0", "1", "2"], ["3", "4", "5"], ["6"]]
+    assert batches[0][1] == Item("1", tmp_path / "1", "h")
+    assert batches[0][0].known_sha256 is None
+
+
+def test_two_files_of_one_name_are_refused(found: Callable[[], list[Found]], tmp_path: Path) -> None:
+    with pytest.raises(ValueError, match="two of the files found have the same name"):
+        night([*found(), found()[0]], roots.roots, tmp_path / "out")
+
+
+def test_a_run_that_loses_files_is_loud(
+    found: Callable[[], list[Found]], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(runner, "_finished", lambda *_: iter(()))
+    with pytest.raises(RuntimeError, match="12 files were found, but 0 analysed and 0 turned away"):
+        night(found(), roots.roots, tmp_path / "out")
+
+
+INTERRUPTED = """
+import sys, time
+from pathlib import Path
+from morphotone.night.folder import find_files
+from morphotone.night.ledger import Ledger
+from morphotone.night.runner import run
+from tests.night.roots import roots
+
+class Herald:
+    def begin(self, files, size): pass
+    def advance(self, step):
+        if step.files:
+            print("batch", flush=True)
+            time.sleep(0.2)
+    def end(self): print("end", flush=True)
+
+with Ledger(Path(sys.argv[2]), {}) as ledger:
+    try:
+        run(find_files(sys.argv[1]), roots, ledger=ledger, progress=Herald(), workers=2, batch_bytes=1)
+    except KeyboardInterrupt:
+        sys.exit(130)
+"""
+
+
+@pytest.mark.slow
+@pytest.mark.skipif(sys.platform == "win32", reason="signals to a process group are a POSIX matter")
+def test_control_c_ends_workers_and_keeps_what_is_finished(numbers: Path, tmp_path: Path) -> None:
+    # In a group of its own, and the signal to the whole group: what a terminal does on Ctrl-C.
+    child = subprocess.Popen(
+        [sys.executable, "-c", INTERRUPTED, str(numbers), str(tmp_path / "out")],
+        stdout=subprocess.PIPE,
+        text=True,
+        start_new_session=True,
+    )
+    assert child.stdout is not None
+    assert [child.stdout.readline() for _ in range(3)] == ["batch\n"] * 3
+    os.killpg(child.pid, signal.SIGINT)
+    child.communicate(timeout=30)
+    assert child.returncode == 130
+    with Ledger(tmp_path / "out", {}) as ledger:
+        assert 3 <= len(ledger.known()) < 12
+    deadline = time.monotonic() + 20
+    while _group_lives(child.pid) and time.monotonic() < deadline:
+        time.sleep(0.1)
+    assert not _group_lives(child.pid)
+    assert night(find_files(numbers), roots.roots, tmp_path / "out").analysed == 11
+
+
+def _group_lives(group: int) -> bool:
+    try:
+        os.killpg(group, 0)
+    except ProcessLookupError:
+        return False
+    return True
