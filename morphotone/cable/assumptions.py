@@ -101,7 +101,7 @@ class Assumptions:
         When a value cannot be used; the sentence names the key.
     """
 
-    membrane: Membrane = Membrane()
+    membrane: Membrane = field(default_factory=Membrane)
     domains: dict[int, Membrane] = field(default_factory=dict)
     unit_um: float = 1.0
     shrinkage: tuple[float, float, float] = (1.0, 1.0, 1.0)
@@ -294,7 +294,7 @@ def _read_table(name: str, content: Mapping[str, object], settings: tuple[Settin
     values = {}
     for key, value in content.items():
         if key not in by_key:
-            raise refuse_key(name, key, value, tuple(by_key))
+            raise refuse_key(name, key, value, settings)
         values[by_key[key].field] = by_key[key].kind.accept(value, f"[{name}] {key}")
     return values
 

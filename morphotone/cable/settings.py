@@ -2,6 +2,7 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass, fields
+from typing import Any
 
 from morphotone.cable.kinds import Ascending, Kind, Number, Triple, Word, nearest, shown
 from morphotone.errors import AssumptionError
@@ -204,7 +205,7 @@ VETTING = tuple(
 TABLES = tuple(dict.fromkeys(setting.table for setting in (*MEMBRANE, *LAYOUT, *VETTING)))
 
 
-def settled(struct: object, settings: Sequence[Setting]) -> dict[str, object]:
+def settled(struct: object, settings: Sequence[Setting]) -> dict[str, Any]:
     """Return a struct's fields in their settled types, by name; raise AssumptionError for an unusable one."""
     values = ((setting, getattr(struct, setting.field)) for setting in settings)
     return {
