@@ -14,7 +14,9 @@ from morphotone.errors import Fault, ReadingError
 from morphotone.reading.findings import Finding
 
 COLUMNS = ("sample number", "type", "x", "y", "z", "radius", "parent")
+SAMPLE_LINE = "seven columns (number, type, x, y, z, radius, parent)"
 WHOLE_COLUMNS = ("sample number", "type", "parent")
+LARGEST_LENGTH = 1e100  # beyond any neuron in any unit; squares and products of such lengths stay finite
 LARGEST_WHOLE = 2.0**53  # above it a float64 no longer tells neighbouring whole numbers apart
 FAULTS_SHOWN = 20  # enough to see a pattern, few enough for one cell of a table
 TEXT_SHOWN = 80  # characters of a line that an error quotes: a sample fits, a page of binary does not
@@ -84,8 +86,8 @@ def diagnose(text: bytes, name: str) -> Diagnosis:
         if (content := raw.split(b"#", 1)[0].strip())
     ]
     if not rows:
-        kind = "comments and blank lines" if text.strip() else "nothing"
-        raise ReadingError(f"{name}: read {kind}, expected samples; leave the file out", "empty")
+        found = "only comments and blank lines" if text.strip() else "an empty file"
+        raise ReadingError(f"{name}: read {found}, expected samples; leave the file out", "empty")
     _refuse_other_formats(rows, name)
     flaws = [flaw for row in rows if (flaw := _flaw_in(row))]
     broken = {flaw.fault.line for flaw in flaws}
@@ -124,8 +126,8 @@ def refusal(name: str, flaws: Iterable[Flaw]) -> ReadingError:
 
 
 def quote(text: bytes) -> str:
-    """Decode a line for an error message, shortened to `TEXT_SHOWN` characters."""
-    shown = " ".join(text[: 4 * TEXT_SHOWN].decode("utf-8", "replace").split())
+    """Decode a line for an error message, without padding and shortened to `TEXT_SHOWN` characters."""
+    shown = b" ".join(text[: 4 * TEXT_SHOWN].split()).decode("utf-8", "replace")
     return shown if len(shown) <= TEXT_SHOWN else shown[:TEXT_SHOWN] + "…"
 
 
@@ -151,13 +153,11 @@ def _refuse_other_formats(rows: Sequence[Row], name: str) -> None:
     if kind is None and any(b"\0" in row.text for row in rows):
         kind = "a binary file"
     if kind is None and 2 * sum(map(_resembles_sample, rows)) < len(rows):
-        kind = "another kind of text"
+        kind = "another format"
     if kind:
-        raise ReadingError(
-            f"{name}: line {rows[0].line}: read {quote(first)!r}, which looks like {kind}, expected lines of "
-            "number, type, x, y, z, radius, parent; leave the file out or export it as SWC",
-            "not_swc",
-        )
+        expected = f"{SAMPLE_LINE}, but this looks like {kind}"
+        fault = Fault(rows[0].line, quote(first), expected)
+        raise ReadingError(f"{name}: {fault}; export it as SWC or leave the file out", "not_swc", [fault])
 
 
 def _resembles_sample(row: Row) -> bool:
@@ -169,8 +169,7 @@ def _resembles_sample(row: Row) -> bool:
 def _flaw_in(row: Row) -> Flaw | None:
     """Return the first fault that a line has by itself."""
     if len(row.fields) < len(COLUMNS):
-        columns = "seven columns (number, type, x, y, z, radius, parent)"
-        return _flaw(row, "fields_missing", columns)
+        return _flaw(row, "fields_missing", SAMPLE_LINE)
     for column, field in zip(COLUMNS, row.fields, strict=False):
         wrong = _wrong_with(column, field)
         if wrong:
@@ -180,19 +179,14 @@ def _flaw_in(row: Row) -> Flaw | None:
 
 def _wrong_with(column: str, field: bytes) -> tuple[str, str] | None:
     """Return reason and expectation if a field cannot be what its column says."""
-    whole = column in WHOLE_COLUMNS
-    if not _NUMBER.fullmatch(field):
-        if _NOT_FINITE.fullmatch(field):
-            return (
-                ("not_whole", f"a whole number as {column}")
-                if whole
-                else ("not_finite", f"a finite {column}")
-            )
+    is_number = _NUMBER.fullmatch(field) is not None
+    if not is_number and not _NOT_FINITE.fullmatch(field):
         point = ", with a decimal point" if b"," in field else ""
         return "not_a_number", f"a number as {column}{point}"
-    value = float(field)
-    if not whole:
-        return None if math.isfinite(value) else ("not_finite", f"a finite {column}")
+    value = float(field) if is_number else math.nan
+    if column not in WHOLE_COLUMNS:
+        bound = f" below {LARGEST_LENGTH:g}" if is_number else ""
+        return None if abs(value) < LARGEST_LENGTH else ("not_finite", f"a finite {column}{bound}")
     if not value.is_integer():
         return "not_whole", f"a whole number as {column}"
     if abs(value) >= LARGEST_WHOLE:
@@ -208,15 +202,13 @@ def _flaws_between(rows: Sequence[Row], *, complete: bool) -> list[Flaw]:
     With `complete` false some lines could not be read, and a parent may be absent for that reason only.
     """
     flaws = []
-    first_line: dict[int, int] = {}
-    for row in rows:
-        number = int(float(row.fields[0]))
-        if first_line.setdefault(number, row.line) != row.line:
+    pairs = [(int(float(row.fields[0])), int(float(row.fields[6]))) for row in rows]
+    first_line = {number: row.line for row, (number, _) in zip(reversed(rows), reversed(pairs), strict=True)}
+    for row, (number, parent) in zip(rows, pairs, strict=True):
+        if first_line[number] != row.line:
             expected = f"a sample number of its own ({number} stands on line {first_line[number]} already)"
             flaws.append(_flaw(row, "number_repeated", expected))
-    for row in rows:
-        number, parent = int(float(row.fields[0])), int(float(row.fields[6]))
-        if parent == number:
+        elif parent == number:
             flaws.append(_flaw(row, "parent_self", "another sample as parent, or -1 for a root"))
         elif complete and parent >= 0 and parent not in first_line:
             flaws.append(_flaw(row, "parent_absent", f"sample {parent} in the file, or parent -1 for a root"))

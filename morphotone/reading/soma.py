@@ -12,11 +12,13 @@ from morphotone.errors import AssumptionError
 SOMA_RULES = ("auto", "sphere", "three-point", "chain", "outline", "none")
 SOMA = 1  # type code of the SWC standard
 
-# How far a three-sample soma may be from the convention's equal radii and offsets of one radius, as a
-# share of the radius: files round to two decimals, and the sphere and the chain differ little here.
-THREE_POINT_TOLERANCE = 0.1
-# Samples of a contour carry the width of the pen or nothing; a traced cell body's are of the order of its
-# spread. Between a tenth and a half hardly any file is found; a tenth keeps slender chains chains.
+# Every number below is our choice, as a share that makes it independent of the cell's size.
+# The convention writes one radius three times, and files round it: a hundredth is rounding of a small soma.
+EQUAL_RADII_SHARE = 0.01
+# "About one radius": within a tenth, sphere and chain agree to a tenth as well, so that little hangs on it.
+OFFSET_SHARE = 0.1
+# Samples of a contour carry the width of a pen or nothing; radii of a traced cell body are of the order of
+# its spread. A tenth keeps slender chains chains.
 OUTLINE_RADIUS_SHARE = 0.1
 # A contour goes around: its second extent is a fair share of its first. A straight slender chain's is not.
 OUTLINE_ROUNDNESS = 0.2
@@ -156,8 +158,9 @@ def _is_three_point(local: NDArray[np.int64], place: NDArray[np.float64], size: 
     if len(local) != 3 or local[1] != 0 or local[2] != 0:
         return False
     offset = np.linalg.norm(place[1:] - place[0], axis=1)
-    deviation = np.abs(np.concatenate((size[1:], offset)) - size[0])
-    return bool((deviation <= THREE_POINT_TOLERANCE * size[0]).all())
+    equal = np.abs(size[1:] - size[0]) <= EQUAL_RADII_SHARE * size[0]
+    one_radius_away = np.abs(offset - size[0]) <= OFFSET_SHARE * size[0]
+    return bool(equal.all() and one_radius_away.all())
 
 
 def _is_outline(place: NDArray[np.float64], size: NDArray[np.float64]) -> bool:

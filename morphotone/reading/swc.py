@@ -21,7 +21,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from morphotone.errors import Fault, ReadingError
-from morphotone.reading.diagnosis import COLUMNS, LARGEST_WHOLE, NUMBER, diagnose, quote
+from morphotone.reading.diagnosis import COLUMNS, LARGEST_LENGTH, LARGEST_WHOLE, NUMBER, diagnose, quote
 from morphotone.reading.findings import Finding
 
 # The largest reconstructions hold some million samples, about 100 MB of text. Twenty times that is no
@@ -30,6 +30,7 @@ SIZE_LIMIT_BYTES = 2 * 1024**3
 
 _GZIP_SIGNATURE = b"\x1f\x8b"
 _UTF8_MARK = b"\xef\xbb\xbf"
+_DOS_END = b"\x1a"  # end-of-file character that programs of the DOS age wrote
 _UTF16_MARKS = (b"\xff\xfe", b"\xfe\xff")
 
 _HEADER = re.compile(rb"(?:[ \t]*(?:#[^\r\n]*)?(?:\r\n|\r|\n))*")
@@ -124,12 +125,12 @@ def _unreadable(name: str, why: str) -> ReadingError:
 
 
 def _plain_text(data: bytes, name: str) -> bytes:
-    """Decompress, and take off a byte-order mark."""
+    """Decompress, and take off a byte-order mark and a DOS end of file."""
     if data.startswith(_GZIP_SIGNATURE) or name.lower().endswith(".gz"):
         data = _decompress(data, name)
     if data.startswith(_UTF16_MARKS):
         data = data.decode("utf-16", "replace").encode()
-    return data.removeprefix(_UTF8_MARK)
+    return data.removeprefix(_UTF8_MARK).removesuffix(_DOS_END)
 
 
 def _decompress(data: bytes, name: str) -> bytes:
@@ -224,12 +225,12 @@ def _columns(body: bytes) -> list[NDArray[np.float64]] | None:
 
 
 def _columns_make_sense(columns: list[NDArray[np.float64]]) -> bool:
-    """Check that all is finite and that numbers, types and parents are whole."""
+    """Check that all is finite (NaN fails too) and that numbers, types and parents are whole."""
     whole = (columns[0], columns[1], columns[6])
     return (
-        all(np.isfinite(column).all() for column in columns)
+        all((np.abs(column) < LARGEST_LENGTH).all() for column in columns)
         and all((np.rint(column) == column).all() for column in whole)
-        and all(max(column.max(), -column.min()) < LARGEST_WHOLE for column in whole)
+        and all((np.abs(column) < LARGEST_WHOLE).all() for column in whole)
         and columns[0].min() >= 0
     )
 
