@@ -1,0 +1,184 @@
+"""What of a reconstruction becomes cable: corrected coordinates, the soma, orphans, the axon."""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.spatial import cKDTree
+
+from morphotone.cable.assumptions import Assumptions
+from morphotone.errors import ReadingError
+from morphotone.reading.reconstruction import Reconstruction, trees
+from morphotone.reading.soma import Soma, find_soma, reroot
+
+AXON = 2  # type code of the SWC standard
+
+Index = NDArray[np.int64]
+Real = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+
+@dataclass(frozen=True, eq=False)
+class Traced:
+    """The samples of one cell, corrected and hung from the soma.
+
+    Attributes
+    ----------
+    position : ndarray, shape (n, 3)
+        After shrinkage correction, µm.
+    radius : ndarray, shape (n,)
+        After diameter correction, µm, positive.
+    kind, parent : ndarray of int64, shape (n,)
+        Type codes; parents after re-hanging and joining, -1 at roots; in no particular order.
+    soma : Soma
+        Of the corrected coordinates.
+    root : int
+        The sample the cell hangs from: the head of the soma, or without a soma the root sample.
+    share : ndarray, shape (n,)
+        How much of the frustum that ends at the sample is analysed, from its parent on: 1, or 0 for
+        orphans and an axon left out, or between at the place where the axon is cut.
+    re_hung : bool
+        Whether the file's root was not the soma, so that the tree was hung from the soma instead.
+    orphans, joined : int
+        Trees left out, and trees joined across a gap.
+    orphan_um : float
+        Cable length of the trees left out, µm.
+    """
+
+    position: Real
+    radius: Real
+    kind: Index
+    parent: Index
+    soma: Soma
+    root: int
+    share: Real
+    re_hung: bool
+    orphans: int
+    joined: int
+    orphan_um: float
+
+
+def trace(rec: Reconstruction, assumptions: Assumptions) -> Traced:
+    """Correct a reconstruction's coordinates, hang it from its soma, and choose what is analysed.
+
+    Parameters
+    ----------
+    rec : Reconstruction
+        As read.
+    assumptions : Assumptions
+        Shrinkage, diameters, soma rule, orphans and axon are used here.
+
+    Raises
+    ------
+    ReadingError
+        When a radius is not positive (reason ``radius_not_positive``), when there are orphans and the
+        assumptions refuse them (``orphans_refused``), or when nothing is left (``nothing_left``).
+    """
+    position = rec.position * np.asarray(assumptions.shrinkage)
+    radius = _corrected_radius(rec, assumptions)
+    soma = find_soma(rec.kind, rec.parent, position, radius, assumptions.soma_rule)
+    main = rec.tree[soma.members[0]] if len(soma.members) else _longest_tree(position, rec)
+    root = int(soma.members[0]) if len(soma.members) else int(np.argmax(rec.tree == main))
+    re_hung = bool(rec.parent[root] >= 0)
+    parent = reroot(rec.parent, root) if re_hung else rec.parent
+    tree, pieces = rec.tree, int(rec.tree.max())
+    if pieces and assumptions.orphans == "refused":
+        raise ReadingError(
+            f"{rec.file}: read {pieces} pieces that are not connected to the analysed tree, expected none "
+            'under orphans = "refused"; connect them, or leave them out or join them by the assumptions',
+            "orphans_refused",
+        )
+    if pieces and assumptions.orphans == "joined":
+        parent = _joined(position, parent, rec.tree, main, float(assumptions.orphan_gap_um or 0.0))
+        tree = trees(parent)
+    left = int(tree.max())
+    ours = tree == tree[root]
+    share = np.where(ours, _share_of_axon(position, parent, rec.kind, assumptions), 0.0)
+    if not len(soma.members) and np.count_nonzero(share) < 2:
+        raise ReadingError(
+            f"{rec.file}: nothing is left to analyse, since there is no soma and the assumptions leave out "
+            "all cable; keep the axon or leave the file out",
+            "nothing_left",
+        )
+    lost = float(step_lengths(position, parent)[~ours].sum()) if left else 0.0
+    return Traced(
+        position, radius, rec.kind, parent, soma, root, share, re_hung, left, pieces - left, lost
+    )  # fmt: skip
+
+
+def step_lengths(position: Real, parent: Index) -> Real:
+    """Return the distance of each sample from its parent, µm, 0 at roots."""
+    steps = position - position[parent]
+    steps[parent < 0] = 0.0
+    return np.sqrt(np.einsum("ij,ij->i", steps, steps))
+
+
+def _corrected_radius(rec: Reconstruction, assumptions: Assumptions) -> Real:
+    radius = assumptions.diameter_factor * rec.radius + assumptions.diameter_offset_um / 2.0
+    wrong = np.flatnonzero(~(radius > 0))
+    if len(wrong):
+        at = wrong[0]
+        raise ReadingError(
+            f"{rec.file}: line {rec.line[at]}: radius {rec.radius[at]:g} um becomes {radius[at]:g} um after "
+            f"the diameter correction, expected a positive one ({len(wrong)} such samples); change the "
+            "correction, or mend the radii",
+            "radius_not_positive",
+        )
+    return radius
+
+
+def _longest_tree(position: Real, rec: Reconstruction) -> int:
+    """Return the tree with the most cable; the first root's where that is equal."""
+    if not rec.tree.any():
+        return 0
+    lengths = np.bincount(rec.tree, weights=step_lengths(position, rec.parent))
+    return int(np.argmax(lengths))
+
+
+def _joined(position: Real, parent: Index, tree: Index, main: int, gap: float) -> Index:
+    """Join to the main tree every piece within the gap of it, then of the pieces joined, until none is left.
+
+    A piece is hung from its sample nearest to what is joined already, so that the gap is bridged by one frustum.
+    """
+    parent = parent.copy()
+    waiting = np.setdiff1d(np.unique(tree), [main])
+    ours = np.flatnonzero(tree == main)
+    while len(ours) and len(waiting):
+        near = cKDTree(position[ours])
+        newly = []
+        for piece in waiting:
+            members = np.flatnonzero(tree == piece)
+            distance, neighbour = near.query(
+                position[members], distance_upper_bound=np.nextafter(gap, np.inf)
+            )
+            best = int(np.argmin(distance))
+            if distance[best] <= gap:
+                parent = reroot(parent, int(members[best]))
+                parent[members[best]] = ours[neighbour[best]]
+                newly.append(piece)
+        ours = np.flatnonzero(np.isin(tree, newly))
+        waiting = np.setdiff1d(waiting, newly)
+    return parent
+
+
+def _share_of_axon(position: Real, parent: Index, kind: Index, assumptions: Assumptions) -> Real:
+    """Return per sample the share of its frustum that the axon rule leaves, 1 outside the axon.
+
+    What hangs on the axon goes with it.
+    """
+    if assumptions.axon == "kept":
+        return np.ones(len(parent))
+    axon = kind == AXON
+    length = np.where(axon, step_lengths(position, parent), 0.0)
+    depth, length_to = axon.astype(np.int64), length
+    above = parent.copy()
+    while (above >= 0).any():  # sums over ancestors by doubling the stretch seen
+        hung = above >= 0
+        depth = depth + np.where(hung, depth[above], 0)
+        length_to = length_to + np.where(hung, length_to[above], 0.0)
+        above = np.where(hung, above[above], -1)
+    if assumptions.axon == "left out":
+        return np.where(depth > 0, 0.0, 1.0)
+    remains = float(assumptions.axon_cut_um or 0.0) - (length_to - length)
+    reached = np.divide(remains, length, out=np.where(remains >= 0, 1.0, 0.0), where=axon & (length > 0))
+    return np.where(depth > 0, np.clip(reached, 0.0, 1.0), 1.0)
