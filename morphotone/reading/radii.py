@@ -1,0 +1,151 @@
+"""Radii that were not measured, or not finely enough."""
+
+from collections.abc import Iterator
+
+import numpy as np
+
+from morphotone.reading.findings import Finding, Severity
+from morphotone.reading.measures import Mask, Measures
+from morphotone.reading.thresholds import Thresholds
+from morphotone.reading.wording import counted, number, percent
+
+
+def unusable(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield radius_zero, radius_minus_one and radius_negative, weighed by their common share."""
+    radius = measures.rec.radius
+    if radius.min() > 0:
+        return
+    broken = radius <= 0
+    severity: Severity = "unfit" if broken.mean() > limits.mended_share else "doubtful"
+    minus_one = radius == -measures.rec.unit_um
+    negative = (radius < 0) & ~minus_one
+    kinds = (
+        ("radius_zero", radius == 0, "radius 0"),
+        ("radius_minus_one", minus_one, "radius -1, the mark of a radius that was not measured"),
+        ("radius_negative", negative, f"a negative radius, down to {number(radius.min())} µm"),
+    )
+    for code, mask, words in kinds:
+        if mask.any():
+            place = measures.first(mask)
+            verb = "has" if place.count == 1 else "have"
+            sentence = (
+                f"{place.count:,} of {counted(len(radius), 'sample')} {verb} {words} (first at {place})."
+            )
+            yield Finding(code, sentence, place.line, place.sample, place.count, severity)
+
+
+def constant(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield radius_constant: unfit in a branched tracing of some size, doubtful in less."""
+    radii = measures.neurite_radii
+    radius, share = radii.commonest
+    if not _is_constant(measures, limits):
+        return
+    place = measures.first(measures.neurite & (measures.rec.radius == radius))
+    tracing = radii.total > limits.constant_samples and measures.tips >= limits.branched_tips
+    yield Finding(
+        "radius_constant",
+        f"{place.count:,} of {counted(radii.total, 'neurite sample')} have the same radius, "
+        f"{number(radius)} µm ({percent(share)}; first at {place}).",
+        place.line,
+        place.sample,
+        place.count,
+        "unfit" if tracing else "doubtful",
+    )
+
+
+def placeholder(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield radius_placeholder: one radius for nearly all of the axon, or of the other neurites."""
+    if _is_constant(measures, limits):
+        return
+    marked: Mask = np.zeros(len(measures.soma), dtype=bool)
+    seen = []
+    groups = (
+        ("axon", measures.axon, measures.axon_radii),
+        ("dendrite", measures.neurite & ~measures.axon, measures.dendrite_radii),
+    )
+    for name, group, radii in groups:
+        radius, share = radii.commonest
+        if radii.total >= limits.placeholder_samples and share >= limits.placeholder_share:
+            marked |= group & (measures.rec.radius == radius)
+            seen.append(f"{percent(share)} of the {name}'s samples have radius {number(radius)} µm")
+    if not seen:
+        return
+    place, weight = measures.first(marked), measures.membrane_share(marked)
+    yield Finding(
+        "radius_placeholder",
+        f"{' and '.join(seen)} (first at {place}); {percent(weight)} of the neurites' membrane rests "
+        "on that.",
+        place.line,
+        place.sample,
+        place.count,
+        "doubtful" if weight >= limits.placeholder_membrane else "note",
+    )
+
+
+def below_optics(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield diameter_below_optics."""
+    radius = measures.rec.radius
+    thin = measures.neurite & (radius > 0) & (2 * radius < limits.optics_diameter_um)
+    if not thin.any():
+        return
+    place, weight = measures.first(thin), measures.membrane_share(thin)
+    yield Finding(
+        "diameter_below_optics",
+        f"{place.count:,} of {counted(int(measures.neurite.sum()), 'neurite sample')}, with "
+        f"{percent(weight)} of the membrane, are thinner than {limits.optics_diameter_um:g} µm, which "
+        f"light microscopy does not resolve (first at {place}); this matters if the cell was traced "
+        "from light microscopy.",
+        place.line,
+        place.sample,
+        place.count,
+        "doubtful" if weight >= limits.optics_membrane else "note",
+    )
+
+
+def quantised(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield diameter_quantised: few different diameters in a large tree."""
+    radii = measures.neurite_radii
+    different = len(radii.radius)
+    if (
+        radii.total < limits.quantised_samples
+        or different > limits.quantised_diameters
+        or _is_constant(measures, limits)
+    ):
+        return
+    shown = ", ".join(number(2 * radius) for radius in radii.radius[:4]) + (", ..." if different > 4 else "")
+    yield Finding(
+        "diameter_quantised",
+        f"{counted(radii.total, 'neurite sample')} have only {different} different diameters ({shown} µm).",
+        count=different,
+        severity="doubtful" if different <= limits.quantised_classes else "note",
+    )
+
+
+def jumps(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield diameter_jump: neighbours within a branch whose diameters differ severalfold."""
+    radius, parent = measures.rec.radius, measures.parent
+    within = measures.inner & (measures.children[parent] == 1)
+    near, far = radius[parent], radius
+    thin, thick = np.minimum(near, far), np.maximum(near, far)
+    jump = within & (thin > 0) & (thick > limits.jump_ratio * thin)
+    if not jump.any():
+        return
+    place = measures.first(jump)
+    share = place.count / int(measures.inner.sum())
+    greatest = float((thick[jump] / thin[jump]).max())
+    yield Finding(
+        "diameter_jump",
+        f"The diameter changes more than {limits.jump_ratio:g}-fold from one sample to the next "
+        f"within a branch at {counted(place.count, 'place')} (first at {place}; greatest change "
+        f"{number(greatest)}-fold).",
+        place.line,
+        place.sample,
+        place.count,
+        "doubtful" if share > limits.jump_share else "note",
+    )
+
+
+def _is_constant(measures: Measures, limits: Thresholds) -> bool:
+    """Whether one radius holds nearly everywhere in a file large enough to tell."""
+    radii = measures.neurite_radii
+    return radii.total >= limits.few_samples and radii.commonest[1] >= limits.constant_share

@@ -1,0 +1,229 @@
+"""What the coordinates, the tree and the types show: unit, pieces, steps, depth, domains."""
+
+from collections.abc import Iterator
+
+import numpy as np
+
+from morphotone.reading.findings import Finding, Severity
+from morphotone.reading.measures import Floats, Integers, Mask, Measures
+from morphotone.reading.thresholds import Thresholds
+from morphotone.reading.wording import counted, number, percent
+
+KNOWN_DOMAINS = (1, 2, 3, 4)
+DEPTH = 2
+
+
+def unit(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield unit_implausible where sizes occur that no neuron has; files too small to tell are let pass."""
+    extent, radii = float(measures.extent.max()), measures.neurite_radii
+    branched = measures.tips >= limits.branched_tips
+    enough = radii.total >= limits.few_samples
+    wide = extent > limits.unit_extent_um
+    largest = float(measures.rec.radius.max())
+    absurd = []
+    if (
+        wide
+        and branched
+        and len(measures.steps) >= limits.few_samples
+        and measures.median_step > limits.unit_step_um
+    ):
+        absurd.append(f"half of all steps are longer than {number(measures.median_step)} µm")
+    if wide and largest > limits.unit_largest_radius_um:
+        absurd.append(f"the largest radius is {number(largest)} µm")
+    if enough and branched and radii.median > limits.unit_typical_radius_um:
+        absurd.append(f"half of the neurite samples have a radius of {number(radii.median)} µm or more")
+    if enough and radii.median < limits.unit_thinnest_radius_um:
+        absurd.append(f"half of the neurite samples have a radius of {number(radii.median)} µm or less")
+    if absurd:
+        yield Finding(
+            "unit_implausible",
+            f"Read in units of {measures.rec.unit_um:g} µm the cell is {number(extent)} µm wide and "
+            f"{' and '.join(absurd)}, which no neuron shows: say the file's unit with --unit-um (0.001 for "
+            "nanometres, the edge in µm for voxels) or as unit_um in the assumptions file.",
+        )
+
+
+def pieces(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield piece_apart, one for each piece not connected to the soma, the longest first."""
+    tree = measures.rec.tree
+    if tree.max() == 0:
+        return
+    length: Floats = np.bincount(tree, weights=measures.cable).astype(np.float64)
+    samples = np.bincount(tree)
+    main = _main_tree(measures)
+    apart = np.delete(np.arange(len(length)), main)
+    apart = apart[np.argsort(-length[apart], kind="stable")]
+    severity = _severity_apart(length, main, limits)
+    listed = len(apart) if len(apart) <= limits.apart_listed else limits.apart_listed - 1
+    for piece in apart[:listed]:
+        place = measures.first(tree == piece)
+        yield Finding(
+            "piece_apart",
+            f"A piece of {counted(int(samples[piece]), 'sample')} and {number(float(length[piece]))} "
+            f"µm of cable, from {place}, is not connected to {_anchor(measures)}.",
+            place.line,
+            place.sample,
+            severity=severity,
+        )
+    rest = apart[listed:]
+    if len(rest):
+        place = measures.first(np.isin(tree, rest))
+        yield Finding(
+            "piece_apart",
+            f"{len(rest):,} shorter pieces of together {number(float(length[rest].sum()))} µm of "
+            f"cable are not connected to {_anchor(measures)} either (first at {place}).",
+            place.line,
+            place.sample,
+            len(rest),
+            severity,
+        )
+
+
+def _main_tree(measures: Measures) -> int:
+    """Return the tree that is analysed: the soma's, else that of the first root."""
+    members = measures.lump.members
+    return int(measures.rec.tree[members[0]]) if len(members) else 0
+
+
+def _anchor(measures: Measures) -> str:
+    return "the soma" if measures.soma.any() else "the first root"
+
+
+def _severity_apart(length: Floats, main: int, limits: Thresholds) -> Severity:
+    """Weigh the cable (um, by tree) that lies outside the main tree."""
+    whole = float(length.sum())
+    share = 1 - float(length[main]) / whole if whole > 0 else 0.0
+    if share > limits.apart_most:
+        return "unfit"
+    return "doubtful" if share > limits.apart_share else "note"
+
+
+def coincident(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield samples_coincident: neurite samples at the very place of their parent."""
+    mask = measures.inner & (measures.distance == 0)
+    if mask.any():
+        place = measures.first(mask)
+        verb = "lies" if place.count == 1 else "lie"
+        yield Finding(
+            "samples_coincident",
+            f"{counted(place.count, 'neurite sample')} {verb} exactly where the parent sample does "
+            f"(first at {place}).",
+            place.line,
+            place.sample,
+            place.count,
+        )
+
+
+def long_steps(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield step_long: steps that stand out of the file's own."""
+    if len(measures.steps) < limits.few_samples:
+        return
+    limit = max(limits.step_ratio * measures.median_step, limits.step_least_um)
+    mask = measures.inner & (measures.distance > limit)
+    if not mask.any():
+        return
+    place, share = measures.first(mask), measures.cable_share(mask)
+    verb = "is" if place.count == 1 else "are"
+    yield Finding(
+        "step_long",
+        f"{counted(place.count, 'step')} {verb} longer than {number(limit)} µm, where the median step "
+        f"is {number(measures.median_step)} µm (first at {place}; longest "
+        f"{number(float(measures.steps.max()))} µm; {percent(share)} of the cable).",
+        place.line,
+        place.sample,
+        place.count,
+        "doubtful" if share > limits.step_share else "note",
+    )
+
+
+def flat(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield flat: a tracing without depth."""
+    depth, width = float(measures.extent[DEPTH]), float(measures.extent.max())
+    if len(measures.soma) < limits.flat_samples or depth >= limits.flat_ratio * width:
+        return
+    yield Finding(
+        "flat",
+        f"The cell is {number(width)} µm wide and {number(depth)} µm deep: the depth was not traced, "
+        "or was lost.",
+    )
+
+
+def depth_zigzag(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield depth_zigzag: paths that turn back steeply in z far more often than in x and y."""
+    if len(measures.steps) < limits.few_samples:
+        return
+    worst, words = limits.zigzag_share, ""
+    for stride in sorted({1, limits.zigzag_stride}):
+        shares = _turning_back(measures, stride)
+        lateral, deep = float(shares[:DEPTH].max()), float(shares[DEPTH])
+        if deep >= worst and deep >= limits.zigzag_ratio * lateral:
+            worst = deep
+            words = (
+                f"Over {counted(stride, 'sample')} to either side the depth turns back steeply at "
+                f"{percent(deep)} of the samples, against {percent(lateral)} in x or y."
+            )
+    if words:
+        yield Finding("depth_zigzag", words)
+
+
+def _turning_back(measures: Measures, stride: int) -> Floats:
+    """Return, by axis, the share of samples around which the path turns back steeply, shape (3,).
+
+    Around the ancestor `stride` samples before, the leg to it and the leg from it both run within 45° of the
+    axis, in opposite senses. Legs that reach into the soma or past the root are left out.
+    """
+    middle = _ancestor(measures.parent, np.arange(len(measures.parent)), stride)
+    start = _ancestor(measures.parent, middle, stride)
+    inside = np.flatnonzero(measures.neurite & measures.neurite[start] & (start != middle))
+    if not len(inside):
+        return np.zeros(3)
+    position = measures.rec.position
+    after = position[inside] - position[middle[inside]]
+    before = position[middle[inside]] - position[start[inside]]
+    opposite = after * before < 0
+    share: Floats = np.mean(opposite & _along(after) & _along(before), axis=0)
+    return share
+
+
+def _along(leg: Floats) -> Mask:
+    """Return by axis whether a leg (n, 3) runs within 45° of it."""
+    squares = leg * leg
+    along: Mask = 2 * squares > squares.sum(axis=1, keepdims=True)
+    return along
+
+
+def _ancestor(parent: Integers, start: Integers, steps: int) -> Integers:
+    """Return the sample some steps nearer to the root, at most the root."""
+    for _ in range(steps):
+        start = parent[start]
+    return start
+
+
+def domains(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
+    """Yield domain_unknown and axon_only."""
+    kind = measures.rec.kind
+    unknown = ~np.isin(kind, KNOWN_DOMAINS)
+    if unknown.any():
+        codes, counts = np.unique(kind[unknown], return_counts=True)
+        shown = ", ".join(
+            f"{code} ({counted(int(count), 'sample')})"
+            for code, count in zip(codes[:5], counts[:5], strict=True)
+        )
+        place = measures.first(unknown)
+        yield Finding(
+            "domain_unknown",
+            f"{place.count:,} of {counted(len(kind), 'sample')} have a type other than soma 1, axon "
+            f"2, basal 3 and apical 4 (first at {place}): {shown}{', ...' if len(codes) > 5 else ''}.",
+            place.line,
+            place.sample,
+            place.count,
+        )
+    if measures.axon.any() and (measures.axon | measures.soma).all():
+        place = measures.first(measures.axon)
+        yield Finding(
+            "axon_only",
+            f"All {counted(place.count, 'neurite sample')} are axon (type 2); there is no dendrite.",
+            place.line,
+            place.sample,
+            place.count,
+        )
