@@ -118,7 +118,8 @@ def _trace(
         place = place + direction * (length / count * rng.uniform(0.7, 1.3))
         diameter = bud.diameter + (end - bud.diameter) * row / count
         radius = 0.5 * diameter * np.exp(0.03 * rng.normal())
-        samples.append(Sample(arbor.kind, *place.tolist(), float(radius), parent))
+        x, y, z = place.tolist()
+        samples.append(Sample(arbor.kind, x, y, z, float(radius), parent))
         parent = len(samples) - 1
         direction = _unit(direction + arbor.wander * rng.normal(size=3) + arbor.drift)
     return direction
@@ -140,7 +141,8 @@ def _fork(rng: Generator, arbor: Arbor, bud: Bud) -> list[Bud]:
 
 def _unit(vector: np.ndarray) -> np.ndarray:
     """Return the vector at length 1."""
-    return vector / np.sqrt(vector @ vector)
+    unit: np.ndarray = vector / np.sqrt(vector @ vector)
+    return unit
 
 
 def input_resistance(samples: Sequence[Sample], R_m: float, R_i: float, spine_factor: float) -> float:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 
 import numpy as np
-from sample_growth import BASAL, Arbor, Sample, draw_soma, grow
+from sample_growth import BASAL, SOMA, Arbor, Sample, draw_soma, grow
 
 TWIG = Arbor(
     kind=BASAL,
@@ -17,7 +17,7 @@ TWIG = Arbor(
     reach=(90.0, 120.0),
     forks=2,
     share=(0.5, 0.6),
-    step=4.0,
+    step=2.6,
     wander=0.12,
 )
 UNKNOWN_KIND = 7
@@ -93,6 +93,18 @@ def soma_not_root(rows: Rows) -> str:
     return in_columns(rows, [6], lambda row, text: turned.get(str(row + 1), text))
 
 
+def soma_outline(rows: Rows) -> str:
+    """Trace the soma's edge as a dozen thin samples in place of one thick one."""
+    x, y, radius = (float(rows[0][column]) for column in (2, 3, 5))
+    edge = np.linspace(0.0, 2 * np.pi, 12, endpoint=False)
+    rows[0][2:6] = [f"{x + radius:.2f}", f"{y:.2f}", rows[0][4], "0.200"]
+    for angle in edge[1:]:
+        above = "1" if angle == edge[1] else rows[-1][0]
+        place = f"{x + radius * np.cos(angle):.2f}", f"{y + radius * np.sin(angle):.2f}", rows[0][4]
+        rows.append([str(len(rows) + 1), str(SOMA), *place, "0.200", above])
+    return plain(rows)
+
+
 def numbers_twice(rows: Rows) -> str:
     """Give one sample its neighbour's number."""
     rows[20][0] = rows[19][0]
@@ -159,7 +171,7 @@ def radius_negative(rows: Rows) -> str:
     return in_columns(rows, [5], lambda row, text: f"-{text}" if row in (14, 15, 27) else text)
 
 
-#: File name without ending, what is wrong in words, and what spoils the body; `None` writes no header either.
+#: File name without ending, what is wrong in words, and what spoils the rows.
 TROUBLES: tuple[tuple[str, str, Callable[[Rows], str]], ...] = (
     ("nanometres", "lengths in nanometres", nanometres),
     ("radii_zero", "every third radius is 0", _dendrite_radius(lambda row, text: text if row % 3 else "0")),
@@ -171,9 +183,20 @@ TROUBLES: tuple[tuple[str, str, Callable[[Rows], str]], ...] = (
         "radii in steps of 0.25 um",
         _dendrite_radius(lambda _, text: f"{max(1, round(float(text) * 4)) / 4}"),
     ),
+    (
+        "diameters_thin",
+        "dendrites a quarter as thick as they were",
+        _dendrite_radius(lambda _, text: f"{float(text) / 4:.3f}"),
+    ),
+    (
+        "decimal_slipped",
+        "one radius ten times too large",
+        _dendrite_radius(lambda row, text: f"{10 * float(text):.3f}" if row == 60 else text),
+    ),
     ("roots_several", "two pieces are cut loose", roots_several),
     ("soma_absent", "no soma", soma_absent),
     ("soma_not_root", "the tree starts from a tip", soma_not_root),
+    ("soma_outline", "a soma traced as its outline", soma_outline),
     ("numbers_twice", "two samples share a number", numbers_twice),
     ("coordinates_NA", "three depths are NA", coordinates_na),
     ("padded_CRLF", "padded columns, Windows line ends", padded_crlf),
