@@ -9,10 +9,10 @@ from __future__ import annotations
 import traceback
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
-from itertools import chain
+from itertools import chain, islice
 from pathlib import Path
 
-from joblib import Parallel, delayed, parallel_config
+from joblib.externals.loky import FIRST_COMPLETED, Future, get_reusable_executor, wait
 from joblib.externals.loky.process_executor import TerminatedWorkerError
 
 from morphotone.errors import MorphotoneError
@@ -23,6 +23,15 @@ from morphotone.night.progress import Progress, Silent, Step
 
 BATCH_BYTES = 2_000_000  # of files: a second or so of work, so that little is lost when a run is stopped
 _FILE_COST = 4_000  # bytes: what opening a file costs, as if it were that much longer
+_IDLE_SECONDS = 300  # after which a worker without work ends
+# The workers are as many as the processors already; one thread of linear algebra each, whatever the library.
+_ONE_THREAD = {
+    "OMP_NUM_THREADS": "1",
+    "OPENBLAS_NUM_THREADS": "1",
+    "MKL_NUM_THREADS": "1",
+    "BLIS_NUM_THREADS": "1",
+    "VECLIB_MAXIMUM_THREADS": "1",
+}
 
 
 @dataclass(frozen=True)
@@ -122,9 +131,12 @@ def _finished(
 ) -> Iterator[list[Outcome]]:
     """Yield the outcomes of each batch as it is finished, in any order.
 
-    When a worker dies, joblib gives up all that was under way. The batches that had been handed out are
-    the suspects: each of their files gets a worker of its own. Then the others go on.
+    When a worker dies, all that was under way is lost. The batches that had been handed out are the
+    suspects: each of their files gets a worker of its own. Then the others go on.
     """
+    if workers == 1:
+        yield from (_attempt(batch, function) for batch in batches)
+        return
     waiting = dict(enumerate(batches))
     while waiting:
         handed_out: list[int] = []
@@ -140,17 +152,27 @@ def _finished(
 def _in_pool(
     waiting: Mapping[int, list[Item]], handed_out: list[int], function: BatchFunction, workers: int
 ) -> Iterator[tuple[int, list[Outcome]]]:
-    """Yield index and outcomes of batches as they are finished, noting each that is handed to a worker."""
+    """Yield index and outcomes of batches as they are finished, noting each that is handed to a worker.
 
-    def tasks() -> Iterator[object]:
-        for index, batch in list(waiting.items()):
-            handed_out.append(index)
-            yield delayed(_attempt_indexed)(index, batch, function)
-
-    # One thread of linear algebra per worker: the workers are as many as the processors already.
-    with parallel_config(backend="loky", inner_max_num_threads=1):
-        pool = Parallel(n_jobs=workers, batch_size=1, return_as="generator_unordered")
-    yield from pool(tasks())
+    `joblib.Parallel` would hand out work without regard to how fast the outcomes are taken from it, and
+    pile them up in memory where the ledger's disk is slow; hence its pool of workers, and a short queue.
+    """
+    pool = get_reusable_executor(max_workers=workers, timeout=_IDLE_SECONDS, env=_ONE_THREAD)
+    rest = iter(list(waiting.items()))
+    running: set[Future[tuple[int, list[Outcome]]]] = set()
+    try:
+        while True:
+            for index, batch in islice(rest, 2 * workers - len(running)):
+                handed_out.append(index)
+                running.add(pool.submit(_attempt_indexed, index, batch, function))
+            if not running:
+                return
+            # Now and then a look round: on Windows, Ctrl-C does not wake what waits without limit.
+            done, running = wait(running, timeout=1.0, return_when=FIRST_COMPLETED)
+            yield from (future.result() for future in done)
+    except BaseException:
+        pool.shutdown(wait=True, kill_workers=True)
+        raise
 
 
 def _attempt_indexed(index: int, batch: list[Item], function: BatchFunction) -> tuple[int, list[Outcome]]:
@@ -170,8 +192,7 @@ def _attempt(batch: list[Item], function: BatchFunction) -> list[Outcome]:
 def _alone(item: Item, function: BatchFunction) -> list[Outcome]:
     """Work on one file in a process that may die of it."""
     try:
-        # Two workers, of which one stays idle: with one, joblib would work in this very process.
-        ((_, outcomes),) = _in_pool({0: [item]}, [], function, workers=2)
+        ((_, outcomes),) = _in_pool({0: [item]}, [], function, workers=1)
     except TerminatedWorkerError:
         sentence = (
             "the process that worked on this file was ended by the system, as happens when memory runs out; "

@@ -79,3 +79,9 @@ def roots_unfounded(batch: list[Item]) -> list[Outcome]:
 def roots_unended(batch: list[Item]) -> list[Outcome]:
     """Leave out the line end."""
     return [Outcome(item.name, "analysed", "", 1, {"roots": "1,1" + LINE_END[1]}) for item in batch]
+
+
+def roots_with_threads(batch: list[Item]) -> list[Outcome]:
+    """Tell what the worker's environment allows the linear algebra."""
+    text = os.environ.get("OPENBLAS_NUM_THREADS", "any")
+    return [Outcome(item.name, "analysed", "", 1, {"roots": csv_line(item.name, text, "")}) for item in batch]

@@ -159,6 +159,25 @@ def test_a_worker_that_dies_costs_one_file(
     assert said["a/04.swc"].startswith("worker_died: the process that worked on this file was ended")
 
 
+def test_work_is_handed_out_no_faster_than_outcomes_are_taken(
+    found: Callable[[], list[Found]], tmp_path: Path
+) -> None:
+    with Ledger(tmp_path / "out", {}) as ledger:
+        batches = runner._batches(found(), ledger.known(), batch_bytes=1)
+    handed_out: list[int] = []
+    pool = runner._in_pool(dict(enumerate(batches)), handed_out, roots.roots, workers=2)
+    next(pool)
+    time.sleep(0.3)  # long enough for the workers to finish everything, if they were given it
+    assert len(handed_out) == 4
+    assert len(list(pool)) == 11
+    assert handed_out == list(range(12))
+
+
+def test_a_worker_has_one_thread_of_linear_algebra(found: Callable[[], list[Found]], tmp_path: Path) -> None:
+    night(found(), roots.roots_with_threads, tmp_path / "out", workers=2)
+    assert set(pd.read_csv(tmp_path / "out" / "roots.csv")["number"]) == {1}
+
+
 @both
 def test_strict_stops_at_the_first_file_turned_away(
     found: Callable[[], list[Found]], tmp_path: Path, workers: int
