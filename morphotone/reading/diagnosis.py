@@ -25,6 +25,7 @@ TEXT_SHOWN = 80  # characters of a line that an error quotes: a sample fits, a p
 NUMBER = rb"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?"
 _NUMBER = re.compile(NUMBER)
 _NOT_FINITE = re.compile(rb"[+-]?(?:na|n/a|nan|inf|infinity|null|none)", re.IGNORECASE)
+_CONTROL_CHARACTER = re.compile(rb"[\x00-\x08\x0e-\x1f]")
 
 _SIGNATURES = (
     (b"%PDF", "a PDF document"),
@@ -86,7 +87,7 @@ def diagnose(text: bytes, name: str) -> Diagnosis:
         if (content := raw.split(b"#", 1)[0].strip())
     ]
     if not rows:
-        found = "only comments and blank lines" if text.strip() else "an empty file"
+        found = "only comments and blank lines" if text else "an empty file"
         raise ReadingError(f"{name}: read {found}, expected samples; leave the file out", "empty")
     _refuse_other_formats(rows, name)
     flaws = [flaw for row in rows if (flaw := _flaw_in(row))]
@@ -150,10 +151,9 @@ def _refuse_other_formats(rows: Sequence[Row], name: str) -> None:
     """Say in one sentence that a file is something else, instead of listing a fault for each line."""
     first = rows[0].text
     kind = next((kind for signature, kind in _SIGNATURES if first.startswith(signature)), None)
-    if kind is None and any(b"\0" in row.text for row in rows):
-        kind = "a binary file"
     if kind is None and 2 * sum(map(_resembles_sample, rows)) < len(rows):
-        kind = "another format"
+        binary = any(_CONTROL_CHARACTER.search(row.text) for row in rows)
+        kind = "a binary file" if binary else "another format"
     if kind:
         expected = f"{SAMPLE_LINE}, but this looks like {kind}"
         fault = Fault(rows[0].line, quote(first), expected)
