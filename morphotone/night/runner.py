@@ -23,7 +23,7 @@ from morphotone.night.progress import Progress, Silent, Step
 
 BATCH_BYTES = 2_000_000  # of files: a second or so of work, so that little is lost when a run is stopped
 _FILE_COST = 4_000  # bytes: what opening a file costs, as if it were that much longer
-_IDLE_SECONDS = 300  # after which a worker without work ends
+_IDLE_SECONDS = 30  # after which a worker without work ends, as one does whose run was killed
 # The workers are as many as the processors already; one thread of linear algebra each, whatever the library.
 _ONE_THREAD = {
     "OMP_NUM_THREADS": "1",

@@ -71,6 +71,16 @@ def test_nothing_is_in_place_before_all_is_written(tmp_path: Path) -> None:
     assert (tmp_path / "sub" / "x.csv").read_bytes() == b"a\r\n"
 
 
+@pytest.mark.skipif(not hasattr(os, "link"), reason="no hard links here")
+def test_the_old_file_is_replaced_and_not_written_over(tmp_path: Path) -> None:
+    path, reader = tmp_path / "x.csv", tmp_path / "reader"
+    path.write_text("old", encoding="utf-8")
+    os.link(path, reader)  # like a program that has the old file open
+    with atomic(path) as stream:
+        stream.write("new")
+    assert (path.read_text(encoding="utf-8"), reader.read_text(encoding="utf-8")) == ("new", "old")
+
+
 def test_one_file_per_item_mirrors_the_folders(tmp_path: Path) -> None:
     with Ledger(tmp_path, {}) as ledger:
         fill(ledger, "a.swc", "sub/b c.swc", "../up.swc")
@@ -107,6 +117,7 @@ def test_an_item_that_comes_to_share_its_name_leaves_no_stale_file(tmp_path: Pat
         ("plain/cell 1 (left)_v2.swc", "plain/cell 1 (left)_v2.swc"),
         ("Größe/神経.swc", "Größe/神経.swc"),
         ("u\u0308.swc", "u%CC%88.swc"),
+        ("\u1112\u1161\u11ab.swc", "%E1%84%92%E1%85%A1%E1%86%AB.swc"),  # 한 taken apart, as macOS does
         ("../../etc/x", "%2E%2E/%2E%2E/etc/x"),
         ("/etc/x", "%/etc/x"),
         ("a//b", "a/%/b"),

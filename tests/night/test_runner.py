@@ -191,6 +191,24 @@ def test_strict_stops_at_the_first_file_turned_away(
         assert ledger.known()["b/07.swc"].status == "turned away"
 
 
+def test_workers_do_not_go_on_after_strict_has_stopped(
+    found: Callable[[], list[Found]], tmp_path: Path
+) -> None:
+    diary = tmp_path / "diary"
+    bad, *others = sorted(found(), key=lambda file: file.name != "b/07.swc")
+    with Ledger(tmp_path / "out", {}) as ledger, pytest.raises(MorphotoneError, match="stopped at the first"):
+        run(
+            [bad, *others],
+            partial(roots.roots_slow, diary=diary),
+            ledger=ledger,
+            workers=2,
+            batch_bytes=1,
+            strict=True,
+        )
+    time.sleep(1.5)
+    assert not diary.exists()
+
+
 def test_strict_says_nothing_when_all_is_well(found: Callable[[], list[Found]], tmp_path: Path) -> None:
     good = [file for file in found() if file.name != "b/07.swc"]
     assert night(good, roots.roots, tmp_path / "out", strict=True).analysed == 11
