@@ -89,11 +89,11 @@ def diagnose(text: bytes, name: str) -> Diagnosis:
     if not rows:
         found = "only comments and blank lines" if text else "an empty file"
         raise ReadingError(f"{name}: read {found}, expected samples; leave the file out", "empty")
-    _refuse_other_formats(rows, name)
     flaws = [flaw for row in rows if (flaw := _flaw_in(row))]
     broken = {flaw.fault.line for flaw in flaws}
     flaws += _flaws_between([row for row in rows if row.line not in broken], complete=not broken)
     if flaws:
+        _refuse_other_formats(rows, name)
         raise refusal(name, flaws)
     values = np.array([[float(field) for field in row.fields[:7]] for row in rows])
     lines = np.array([row.line for row in rows], dtype=np.int64)

@@ -255,11 +255,10 @@ def _lines(header: bytes, body: bytes, samples: int) -> NDArray[np.int64] | None
     ends = _line_ends(codes)
     if np.count_nonzero(ends) + (not ends[-1]) == samples:  # every line of the body is a sample
         return np.arange(before + 1, before + 1 + samples)
-    line_of: NDArray[np.int64] = np.cumsum(ends) - ends  # of every character, from 0
-    visible = np.flatnonzero(codes > ord(" "))
-    line: NDArray[np.int64] = line_of[visible]
-    opens = np.concatenate(([True], line[1:] != line[:-1]))  # first visible character of its line
-    lines: NDArray[np.int64] = line[opens & (codes[visible] != ord("#"))] + before + 1
+    starts = np.concatenate(([0], np.flatnonzero(ends[:-1]) + 1))
+    marks = np.flatnonzero(ends | (codes > ord(" ")))  # what is not padding
+    first = np.append(codes[marks], ord("\n"))[np.searchsorted(marks, starts)]
+    lines: NDArray[np.int64] = np.flatnonzero((first > ord(" ")) & (first != ord("#"))) + before + 1
     return lines if len(lines) == samples else None
 
 
