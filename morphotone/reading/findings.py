@@ -95,8 +95,10 @@ CATALOGUE: dict[str, Kind] = {
         explanation=(
             "Some samples have radius 0, mostly because no diameter was taken there. They are mended "
             "before the analysis: each takes the nearest positive radius toward the root, else below, and "
-            "the finding radius_mended says so. Above the share mended_share of the samples the file is "
-            "unfit, since the result would then be that of the borrowed radii."
+            "the finding radius_mended says so. Up to the share mended_few of the samples this is a note, "
+            "above mended_share the file is unfit, since the result would be that of the borrowed radii. "
+            "The commonest among radii of zero, of -1 and other negative ones is weighed with the share "
+            "of all three."
         ),
     ),
     "radius_negative": Kind(
@@ -107,8 +109,7 @@ CATALOGUE: dict[str, Kind] = {
         ),
         explanation=(
             "Some radii are negative, through an error of export or an unusual code for not measured. "
-            "They are mended like radii of zero. Above the share mended_share of the samples the file is "
-            "unfit."
+            "They are mended and weighed like radii of zero."
         ),
     ),
     "radius_minus_one": Kind(
@@ -117,8 +118,8 @@ CATALOGUE: dict[str, Kind] = {
         effect="Without a radius neither membrane nor axial resistance can be computed.",
         explanation=(
             "By a habit of large electron-microscopic data sets, -1 stands for a radius that nobody "
-            "measured. Single ones are mended like radii of zero. Above the share mended_share of the "
-            "samples, as in skeletons without diameters, the file is unfit for cable work."
+            "measured. Single ones are mended like radii of zero, and weighed like them: skeletons "
+            "without diameters are unfit for cable work."
         ),
     ),
     "radius_constant": Kind(
@@ -126,9 +127,9 @@ CATALOGUE: dict[str, Kind] = {
         title="one radius for the whole cell",
         effect="λ, X, R_in and every attenuation follow from the one value that was typed in.",
         explanation=(
-            "Nearly all neurite samples have one and the same radius, as tracings do whose makers wanted "
-            "the path and not the calibre. A branched tracing of more than constant_samples samples is "
-            "unfit; a smaller one, or an unbranched cylinder as models use it, is doubtful."
+            "Nearly all neurite samples (constant_share) have one and the same radius, as tracings do "
+            "whose makers wanted the path and not the calibre. A tracing of more than constant_samples "
+            "samples is unfit; a smaller one, or a straight cylinder as models use it, is doubtful."
         ),
     ),
     "radius_placeholder": Kind(
@@ -153,10 +154,11 @@ CATALOGUE: dict[str, Kind] = {
         ),
         explanation=(
             "Light microscopy resolves λ/(2 NA) after Abbe: 0.196 µm at 550 nm and NA 1.4. Diameters "
-            "below that were not measured if the cell was traced from light microscopy. Reconstructions "
-            "from electron microscopy resolve far less, and for them the finding means nothing: set "
+            "below that were not measured if the cell was traced from light microscopy. Electron "
+            "microscopy resolves far less, and for its reconstructions the finding means nothing: set "
             "optics_diameter_um to the resolution of the data. With half of the membrane "
-            "(optics_membrane) on such samples the file is doubtful."
+            "(optics_membrane) on such samples, and few different diameters among them as the steps of a "
+            "light microscope leave, the file is doubtful."
         ),
     ),
     "diameter_quantised": Kind(
@@ -179,7 +181,8 @@ CATALOGUE: dict[str, Kind] = {
         explanation=(
             "From one sample to the next within a branch the diameter changes more than jump_ratio-fold. "
             "A few are boutons or slips of the pen; where more than the share jump_share of the neurite "
-            "samples do it, the diameters were not taken with care and the file is doubtful."
+            "samples do it, and jump_count of them at least, the diameters were not taken with care and "
+            "the file is doubtful."
         ),
     ),
     "soma_absent": Kind(
@@ -332,7 +335,9 @@ CATALOGUE: dict[str, Kind] = {
         explanation=(
             "Radii of zero or below were replaced: by the nearest positive radius on the path toward the "
             "root, else the nearest below, else the median of the neurites; soma and neurites do not "
-            "borrow from each other. The file itself was not changed."
+            "borrow from each other. The file itself was not changed. The finding weighs what the radii "
+            "replaced weighed: up to the share mended_few of the samples a note, above mended_share "
+            "unfit."
         ),
     ),
 }

@@ -8,6 +8,7 @@ from numpy.typing import NDArray
 
 from morphotone.reading.reconstruction import Reconstruction
 from morphotone.reading.soma import SOMA, Soma, find_soma
+from morphotone.reading.thresholds import Thresholds
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -123,14 +124,15 @@ class Measures:
         return self.neurite & self.soma[self.parent]
 
     @cached_property
-    def between(self) -> Floats:
-        """Vectors from the parent to the sample, shape (n, 3), um; zero at a root."""
-        return self.rec.position - self.rec.position[self.parent]
+    def axes(self) -> Floats:
+        """Coordinates x, y and z in rows, shape (3, n), um: one axis lies together in memory."""
+        return np.ascontiguousarray(self.rec.position.T)
 
     @cached_property
     def distance(self) -> Floats:
         """Straight distance to the parent, um; zero at a root."""
-        distance: Floats = np.sqrt(np.einsum("ij,ij->i", self.between, self.between))
+        x, y, z = self.axes - self.axes[:, self.parent]
+        distance: Floats = np.sqrt(x * x + y * y + z * z)
         return distance
 
     @cached_property
@@ -170,8 +172,18 @@ class Measures:
     @cached_property
     def extent(self) -> Floats:
         """Size of the box around all samples, shape (3,), um."""
-        extent: Floats = np.ptp(self.rec.position, axis=0)
+        extent: Floats = np.ptp(self.axes, axis=1)
         return extent
+
+    @cached_property
+    def winding(self) -> float:
+        """Length of all steps within neurites over the diagonal of the box: 1 for a straight line."""
+        diagonal = float(np.sqrt(self.extent @ self.extent))
+        return float(self.steps.sum()) / diagonal if diagonal > 0 else 0.0
+
+    def traced(self, limits: Thresholds) -> bool:
+        """Whether the neurites branch or wind, as tracings do and cylinders drawn straight do not."""
+        return self.winding > limits.drawn_winding or self.tips >= limits.branched_tips
 
     @cached_property
     def axon_radii(self) -> Tally:
@@ -186,9 +198,11 @@ class Measures:
     @cached_property
     def neurite_radii(self) -> Tally:
         """Radii of all neurites."""
-        if not self.axon.any():
-            return self.dendrite_radii
-        return tally(self.rec.radius[self.neurite])
+        radius = np.concatenate((self.axon_radii.radius, self.dendrite_radii.radius))
+        merged, place = np.unique(radius, return_inverse=True)
+        count = np.zeros(len(merged), dtype=np.int64)
+        np.add.at(count, place, np.concatenate((self.axon_radii.count, self.dendrite_radii.count)))
+        return Tally(merged, count)
 
     def first(self, mask: Mask) -> Place:
         """Return the place, in the order of the file, of the first of the samples that a mask (n,) marks."""

@@ -5,25 +5,24 @@ from collections.abc import Iterator
 import numpy as np
 
 from morphotone.reading.findings import Finding, Severity
-from morphotone.reading.measures import Mask, Measures
+from morphotone.reading.measures import Mask, Measures, tally
 from morphotone.reading.thresholds import Thresholds
 from morphotone.reading.wording import counted, number, percent
 
 
 def unusable(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
-    """Yield radius_zero, radius_minus_one and radius_negative, weighed by their common share."""
+    """Yield radius_zero, radius_minus_one and radius_negative; the commonest bears the weight of them all."""
     radius = measures.rec.radius
     if radius.min() > 0:
         return
-    broken = radius <= 0
-    severity: Severity = "unfit" if broken.mean() > limits.mended_share else "doubtful"
     minus_one = radius == -measures.rec.unit_um
     negative = (radius < 0) & ~minus_one
     kinds = (
         ("radius_zero", radius == 0, "radius 0"),
         ("radius_minus_one", minus_one, "radius -1, the mark of a radius that was not measured"),
-        ("radius_negative", negative, f"a negative radius, down to {number(radius.min())} µm"),
+        ("radius_negative", negative, f"a negative radius, down to {number(float(radius.min()))} µm"),
     )
+    most = max(np.count_nonzero(mask) for _, mask, _ in kinds)
     for code, mask, words in kinds:
         if mask.any():
             place = measures.first(mask)
@@ -31,7 +30,17 @@ def unusable(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
             sentence = (
                 f"{place.count:,} of {counted(len(radius), 'sample')} {verb} {words} (first at {place})."
             )
-            yield Finding(code, sentence, place.line, place.sample, place.count, severity)
+            share = float(np.mean(radius <= 0)) if place.count == most else place.count / len(radius)
+            yield Finding(
+                code, sentence, place.line, place.sample, place.count, unusable_severity(share, limits)
+            )
+
+
+def unusable_severity(share: float, limits: Thresholds) -> Severity:
+    """Weigh a share of radii that are zero or below."""
+    if share > limits.mended_share:
+        return "unfit"
+    return "doubtful" if share > limits.mended_few else "note"
 
 
 def constant(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
@@ -41,11 +50,12 @@ def constant(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
     if not _is_constant(measures, limits):
         return
     place = measures.first(measures.neurite & (measures.rec.radius == radius))
-    tracing = radii.total > limits.constant_samples and measures.tips >= limits.branched_tips
+    tracing = radii.total > limits.constant_samples and measures.traced(limits)
+    which = "All" if share == 1 else f"{place.count:,} of"
     yield Finding(
         "radius_constant",
-        f"{place.count:,} of {counted(radii.total, 'neurite sample')} have the same radius, "
-        f"{number(radius)} µm ({percent(share)}; first at {place}).",
+        f"{which} {counted(radii.total, 'neurite sample')} have the same radius, {number(radius)} µm "
+        f"(first at {place}).",
         place.line,
         place.sample,
         place.count,
@@ -89,6 +99,7 @@ def below_optics(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
     if not thin.any():
         return
     place, weight = measures.first(thin), measures.membrane_share(thin)
+    few = len(tally(radius[thin]).radius) <= limits.quantised_diameters
     yield Finding(
         "diameter_below_optics",
         f"{place.count:,} of {counted(int(measures.neurite.sum()), 'neurite sample')}, with "
@@ -98,7 +109,7 @@ def below_optics(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
         place.line,
         place.sample,
         place.count,
-        "doubtful" if weight >= limits.optics_membrane else "note",
+        "doubtful" if weight >= limits.optics_membrane and few else "note",
     )
 
 
@@ -141,7 +152,7 @@ def jumps(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
         place.line,
         place.sample,
         place.count,
-        "doubtful" if share > limits.jump_share else "note",
+        "doubtful" if share > limits.jump_share and place.count >= limits.jump_count else "note",
     )
 
 

@@ -7,11 +7,13 @@ import numpy as np
 from morphotone.errors import Fault, ReadingError
 from morphotone.reading.findings import Finding
 from morphotone.reading.measures import Floats, Mask, Measures
+from morphotone.reading.radii import unusable_severity
 from morphotone.reading.reconstruction import Reconstruction
+from morphotone.reading.thresholds import DEFAULTS, Thresholds
 from morphotone.reading.wording import counted, number
 
 
-def mend_radii(rec: Reconstruction) -> Reconstruction:
+def mend_radii(rec: Reconstruction, thresholds: Thresholds = DEFAULTS) -> Reconstruction:
     """Give every sample whose radius is zero or negative the radius of a neighbour.
 
     It takes the nearest positive radius on its path toward the root; where there is none, the nearest
@@ -23,6 +25,8 @@ def mend_radii(rec: Reconstruction) -> Reconstruction:
     ----------
     rec : Reconstruction
         As read, parents before their children.
+    thresholds : Thresholds
+        Limits that weigh the finding by the share of samples mended, as for the radii found.
 
     Returns
     -------
@@ -48,7 +52,9 @@ def mend_radii(rec: Reconstruction) -> Reconstruction:
     _borrow_toward_root(radius, measures, alike)
     radius[(radius == 0) & measures.neurite] = np.median(rec.radius[usable])
     _borrow_from_below(radius, measures, measures.hung)
-    return replace(rec, radius=radius, findings=(*rec.findings, _record(measures, broken, radius)))
+    return replace(
+        rec, radius=radius, findings=(*rec.findings, _record(measures, broken, radius, thresholds))
+    )
 
 
 def _borrow_toward_root(radius: Floats, measures: Measures, link: Mask) -> None:
@@ -69,7 +75,7 @@ def _borrow_from_below(radius: Floats, measures: Measures, link: Mask) -> None:
             reach[parent], radius[parent] = length, radius[sample]
 
 
-def _record(measures: Measures, broken: Mask, radius: Floats) -> Finding:
+def _record(measures: Measures, broken: Mask, radius: Floats, limits: Thresholds) -> Finding:
     place, given = measures.first(broken), radius[broken]
     verb = "was" if place.count == 1 else "were"
     span = number(float(given.min()))
@@ -82,6 +88,7 @@ def _record(measures: Measures, broken: Mask, radius: Floats) -> Finding:
         place.line,
         place.sample,
         place.count,
+        unusable_severity(place.count / len(radius), limits),
     )
 
 

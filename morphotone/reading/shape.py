@@ -1,46 +1,56 @@
 """What the coordinates, the tree and the types show: unit, pieces, steps, depth, domains."""
 
 from collections.abc import Iterator
+from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from morphotone.reading.findings import Finding, Severity
-from morphotone.reading.measures import Floats, Integers, Mask, Measures
+from morphotone.reading.measures import Floats, Measures
 from morphotone.reading.thresholds import Thresholds
 from morphotone.reading.wording import counted, number, percent
 
-KNOWN_DOMAINS = (1, 2, 3, 4)
+KNOWN_DOMAINS = range(1, 5)  # soma, axon, basal, apical
 DEPTH = 2
 
 
 def unit(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
     """Yield unit_implausible where sizes occur that no neuron has; files too small to tell are let pass."""
-    extent, radii = float(measures.extent.max()), measures.neurite_radii
-    branched = measures.tips >= limits.branched_tips
-    enough = radii.total >= limits.few_samples
-    wide = extent > limits.unit_extent_um
-    largest = float(measures.rec.radius.max())
-    absurd = []
-    if (
-        wide
-        and branched
-        and len(measures.steps) >= limits.few_samples
-        and measures.median_step > limits.unit_step_um
-    ):
-        absurd.append(f"half of all steps are longer than {number(measures.median_step)} µm")
-    if wide and largest > limits.unit_largest_radius_um:
-        absurd.append(f"the largest radius is {number(largest)} µm")
-    if enough and branched and radii.median > limits.unit_typical_radius_um:
-        absurd.append(f"half of the neurite samples have a radius of {number(radii.median)} µm or more")
-    if enough and radii.median < limits.unit_thinnest_radius_um:
-        absurd.append(f"half of the neurite samples have a radius of {number(radii.median)} µm or less")
+    absurd, width = _absurd_sizes(measures, limits), float(measures.extent.max())
     if absurd:
         yield Finding(
             "unit_implausible",
-            f"Read in units of {measures.rec.unit_um:g} µm the cell is {number(extent)} µm wide and "
-            f"{' and '.join(absurd)}, which no neuron shows: say the file's unit with --unit-um (0.001 for "
+            f"Read in units of {measures.rec.unit_um:g} µm the cell is {number(width)} µm wide, "
+            f"{', '.join(absurd)}, which no neuron shows: say the file's unit with --unit-um (0.001 for "
             "nanometres, the edge in µm for voxels) or as unit_um in the assumptions file.",
         )
+
+
+def _absurd_sizes(measures: Measures, limits: Thresholds) -> list[str]:
+    """Describe what is too large or too small for any neuron, one phrase each."""
+    step, radii, largest = measures.median_step, measures.neurite_radii, float(measures.rec.radius.max())
+    traced = measures.traced(limits)
+    wide = measures.extent.max() > limits.unit_extent_um
+    many_steps = len(measures.steps) >= limits.few_samples
+    many_radii = radii.total >= limits.few_samples
+    half = "half of the neurite samples have a radius of"
+    phrases = (
+        (
+            wide and traced and many_steps and step > limits.unit_step_um,
+            f"half of all steps are longer than {number(step)} µm",
+        ),
+        (wide and largest > limits.unit_largest_radius_um, f"the largest radius is {number(largest)} µm"),
+        (
+            traced and many_radii and radii.median > limits.unit_typical_radius_um,
+            f"{half} {number(radii.median)} µm or more",
+        ),
+        (
+            many_radii and radii.median < limits.unit_thinnest_radius_um,
+            f"{half} {number(radii.median)} µm or less",
+        ),
+    )
+    return [phrase for seen, phrase in phrases if seen]
 
 
 def pieces(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
@@ -150,59 +160,56 @@ def flat(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
 
 def depth_zigzag(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
     """Yield depth_zigzag: paths that turn back steeply in z far more often than in x and y."""
-    if len(measures.steps) < limits.few_samples:
+    if len(measures.steps) < limits.zigzag_samples:
         return
-    worst, words = limits.zigzag_share, ""
-    for stride in sorted({1, limits.zigzag_stride}):
-        shares = _turning_back(measures, stride)
-        lateral, deep = float(shares[:DEPTH].max()), float(shares[DEPTH])
-        if deep >= worst and deep >= limits.zigzag_ratio * lateral:
-            worst = deep
-            words = (
-                f"Over {counted(stride, 'sample')} to either side the depth turns back steeply at "
-                f"{percent(deep)} of the samples, against {percent(lateral)} in x or y."
-            )
-    if words:
-        yield Finding("depth_zigzag", words)
+    turns = (_turning_back(measures, stride) for stride in (1, limits.zigzag_stride))
+    worst = max(turns, key=lambda turn: turn.deep)
+    if worst.deep >= limits.zigzag_share and worst.deep >= limits.zigzag_ratio * worst.lateral:
+        yield Finding(
+            "depth_zigzag",
+            f"Over {counted(worst.stride, 'sample')} to either side the depth turns back steeply at "
+            f"{percent(worst.deep)} of the samples, against {percent(worst.lateral)} in x or y.",
+        )
 
 
-def _turning_back(measures: Measures, stride: int) -> Floats:
-    """Return, by axis, the share of samples around which the path turns back steeply, shape (3,).
+@dataclass(frozen=True)
+class _Turns:
+    """At which share of the samples a path turns back steeply."""
 
-    Around the ancestor `stride` samples before, the leg to it and the leg from it both run within 45° of the
-    axis, in opposite senses. Legs that reach into the soma or past the root are left out.
+    stride: int  #: length of each leg, samples
+    deep: float  #: share along z
+    lateral: float  #: the larger of the shares along x and y
+
+
+def _turning_back(measures: Measures, stride: int) -> _Turns:
+    """Return how often the path turns back steeply.
+
+    Two legs of `stride` samples meet at a place; the path turns back steeply there if both run within 45° of
+    the same axis, in opposite senses. Legs that reach into the soma or past the root are left out.
     """
-    middle = _ancestor(measures.parent, np.arange(len(measures.parent)), stride)
-    start = _ancestor(measures.parent, middle, stride)
-    inside = np.flatnonzero(measures.neurite & measures.neurite[start] & (start != middle))
-    if not len(inside):
-        return np.zeros(3)
-    position = measures.rec.position
-    after = position[inside] - position[middle[inside]]
-    before = position[middle[inside]] - position[start[inside]]
-    opposite = after * before < 0
-    share: Floats = np.mean(opposite & _along(after) & _along(before), axis=0)
-    return share
+    middle = measures.parent
+    for _ in range(stride - 1):
+        middle = measures.parent[middle]
+    start = middle[middle]
+    inside = measures.neurite & measures.neurite[start] & (start != middle)
+    heading = _heading(measures.axes - measures.axes[:, middle])
+    turns = (heading * heading[:, middle] < 0) & inside
+    x, y, z = (int(np.count_nonzero(axis)) / max(int(np.count_nonzero(inside)), 1) for axis in turns)
+    return _Turns(stride, z, max(x, y))
 
 
-def _along(leg: Floats) -> Mask:
-    """Return by axis whether a leg (n, 3) runs within 45° of it."""
+def _heading(leg: Floats) -> NDArray[np.int8]:
+    """Return for legs (3, n) the sense, 1 or -1, in which they run along an axis within 45° of it; else 0."""
     squares = leg * leg
-    along: Mask = 2 * squares > squares.sum(axis=1, keepdims=True)
-    return along
-
-
-def _ancestor(parent: Integers, start: Integers, steps: int) -> Integers:
-    """Return the sample some steps nearer to the root, at most the root."""
-    for _ in range(steps):
-        start = parent[start]
-    return start
+    steep = 2 * squares > squares[0] + squares[1] + squares[2]
+    heading: NDArray[np.int8] = np.sign(leg).astype(np.int8) * steep
+    return heading
 
 
 def domains(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
     """Yield domain_unknown and axon_only."""
     kind = measures.rec.kind
-    unknown = ~np.isin(kind, KNOWN_DOMAINS)
+    unknown = (kind < KNOWN_DOMAINS[0]) | (kind > KNOWN_DOMAINS[-1])
     if unknown.any():
         codes, counts = np.unique(kind[unknown], return_counts=True)
         shown = ", ".join(

@@ -22,6 +22,12 @@ class Thresholds:
             "fewer samples than this do not show what is typical of a file, so nothing is concluded"
         ),
     )
+    drawn_winding: float = field(
+        default=1.02,
+        metadata=_because(
+            "cable no longer than the box's diagonal is a cylinder drawn straight, which may be of any size"
+        ),
+    )
     branched_tips: int = field(
         default=3,
         metadata=_because(
@@ -75,6 +81,12 @@ class Thresholds:
             "the neighbours'"
         ),
     )
+    mended_few: float = field(
+        default=0.01,
+        metadata=_because(
+            "one radius in a hundred borrowed from its neighbour changes no result that matters"
+        ),
+    )
     constant_share: float = field(
         default=0.98,
         metadata=_because("one radius for 98 % of all neurite samples was typed in, not measured"),
@@ -108,7 +120,10 @@ class Thresholds:
     )
     optics_membrane: float = field(
         default=0.5,
-        metadata=_because("with half of the membrane on unresolved diameters the cell's result is a guess"),
+        metadata=_because(
+            "with half of the membrane on unresolved diameters the cell's result is a guess, where their few "
+            "values (quantised_diameters or fewer) speak for the steps of a light microscope"
+        ),
     )
     quantised_diameters: int = field(
         default=12,
@@ -155,6 +170,9 @@ class Thresholds:
         default=0.02,
         metadata=_because("a bouton or varicosity here and there is real; one sample in fifty is noise"),
     )
+    jump_count: int = field(
+        default=10, metadata=_because("fewer places than this are slips of the pen, in a small file too")
+    )
     step_ratio: float = field(
         default=20.0, metadata=_because("twenty times the file's own median step stands out in any tracing")
     )
@@ -170,6 +188,9 @@ class Thresholds:
         metadata=_because("even ganglion cells of the retina are deeper than a hundredth of their width"),
     )
     flat_samples: int = field(default=50, metadata=_because("small drawn models are flat on purpose"))
+    zigzag_samples: int = field(
+        default=100, metadata=_because("in a few dozen steps two or three chance turns make a share")
+    )
     zigzag_stride: int = field(
         default=4,
         metadata=_because(
@@ -184,6 +205,9 @@ class Thresholds:
         default=3.0,
         metadata=_because("a neurite that winds in all directions is no artefact of the depth axis"),
     )
+
+
+DEFAULTS = Thresholds()
 
 
 def reasons() -> dict[str, str]:

@@ -8,7 +8,7 @@ from morphotone.reading import header, radii, shape, somata
 from morphotone.reading.findings import Finding, Severity
 from morphotone.reading.measures import Measures
 from morphotone.reading.reconstruction import Reconstruction
-from morphotone.reading.thresholds import Thresholds
+from morphotone.reading.thresholds import DEFAULTS, Thresholds
 
 __all__ = ["Grade", "Thresholds", "Vetting", "grade_of", "vet_reconstruction"]
 
@@ -36,8 +36,6 @@ CHECKS: tuple[Check, ...] = (
     shape.flat,
     shape.depth_zigzag,
 )
-
-DEFAULTS = Thresholds()
 
 
 @dataclass(frozen=True)
