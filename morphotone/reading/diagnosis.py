@@ -168,12 +168,15 @@ def _resembles_sample(row: Row) -> bool:
 
 def _flaw_in(row: Row) -> Flaw | None:
     """Return the first fault that a line has by itself."""
+    is_remark = not any(map(_NUMBER.fullmatch, row.fields))
+    way_out = ", or # in front of a comment" if is_remark else ""
     if len(row.fields) < len(COLUMNS):
-        return _flaw(row, "fields_missing", SAMPLE_LINE)
+        return _flaw(row, "fields_missing", SAMPLE_LINE + way_out)
     for column, field in zip(COLUMNS, row.fields, strict=False):
         wrong = _wrong_with(column, field)
         if wrong:
-            return _flaw(row, *wrong)
+            reason, expected = wrong
+            return _flaw(row, reason, expected + way_out)
     return None
 
 

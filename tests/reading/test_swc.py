@@ -143,6 +143,8 @@ def cell_with(line, place=3):
 
 REFUSED = {
     "six columns": ("5 3 0 0 0 1", "fields_missing", "seven columns"),
+    "titles": ("n type x y z r parent", "not_a_number", "as sample number, or # in front of a comment"),
+    "remark": ("bent here", "fields_missing", "parent), or # in front of a comment"),
     "word": ("5 3 0 zero 0 1 1", "not_a_number", "a number as y"),
     "underscore": ("5 3 0 1_0 0 1 1", "not_a_number", "a number as y"),
     "hexadecimal": ("5 3 0 0x1F 0 1 1", "not_a_number", "a number as y"),
