@@ -6,6 +6,9 @@ knows, so that the same list gives the same batches and the same bytes.
 
 from __future__ import annotations
 
+import os
+import threading
+import time
 import traceback
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
@@ -23,7 +26,7 @@ from morphotone.night.progress import Progress, Silent, Step
 
 BATCH_BYTES = 2_000_000  # of files: a second or so of work, so that little is lost when a run is stopped
 _FILE_COST = 4_000  # bytes: what opening a file costs, as if it were that much longer
-_IDLE_SECONDS = 30  # after which a worker without work ends, as one does whose run was killed
+_IDLE_SECONDS = 30  # after which a worker without work ends
 # The workers are as many as the processors already; one thread of linear algebra each, whatever the library.
 _ONE_THREAD = {
     "OMP_NUM_THREADS": "1",
@@ -157,7 +160,13 @@ def _in_pool(
     `joblib.Parallel` would hand out work without regard to how fast the outcomes are taken from it, and
     pile them up in memory where the ledger's disk is slow; hence its pool of workers, and a short queue.
     """
-    pool = get_reusable_executor(max_workers=workers, timeout=_IDLE_SECONDS, env=_ONE_THREAD)
+    pool = get_reusable_executor(
+        max_workers=workers,
+        timeout=_IDLE_SECONDS,
+        env=_ONE_THREAD,
+        initializer=_end_with,
+        initargs=(os.getpid(),),
+    )
     rest = iter(list(waiting.items()))
     running: set[Future[tuple[int, list[Outcome]]]] = set()
     try:
@@ -173,6 +182,20 @@ def _in_pool(
     except BaseException:
         pool.shutdown(wait=True, kill_workers=True)
         raise
+
+
+def _end_with(run: int) -> None:
+    """Have this worker end with the process of the run.
+
+    A run that is killed cannot tell its workers, which then wait for ever to hand over their outcomes.
+    """
+
+    def watch() -> None:
+        while os.getppid() == run:
+            time.sleep(1.0)
+        os._exit(1)
+
+    threading.Thread(target=watch, daemon=True).start()
 
 
 def _attempt_indexed(index: int, batch: list[Item], function: BatchFunction) -> tuple[int, list[Outcome]]:

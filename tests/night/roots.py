@@ -8,6 +8,7 @@ from __future__ import annotations
 import hashlib
 import os
 import time
+from dataclasses import replace
 from pathlib import Path
 
 from morphotone.night.outcome import LINE_END, Item, Outcome, csv_line
@@ -75,6 +76,11 @@ def roots_slow(batch: list[Item], diary: Path) -> list[Outcome]:
         with diary.open("a", encoding="utf-8") as stream:
             stream.write(f"{batch[0].name}\n")
     return outcomes
+
+
+def roots_large(batch: list[Item]) -> list[Outcome]:
+    """Hand back more than a pipe holds, so that a worker waits for someone to take it."""
+    return [replace(out, parts={**out.parts, "ballast": "0\r\n" * 1_000_000}) for out in roots(batch)]
 
 
 def roots_forgetful(batch: list[Item]) -> list[Outcome]:

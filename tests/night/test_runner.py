@@ -280,7 +280,7 @@ from pathlib import Path
 from morphotone.night.folder import find_files
 from morphotone.night.ledger import Ledger
 from morphotone.night.runner import run
-from tests.night.roots import roots
+from tests.night.roots import roots_large
 
 class Herald:
     def begin(self, files, size): pass
@@ -292,16 +292,26 @@ class Herald:
 
 with Ledger(Path(sys.argv[2]), {}) as ledger:
     try:
-        run(find_files(sys.argv[1]), roots, ledger=ledger, progress=Herald(), workers=2, batch_bytes=1)
+        run(find_files(sys.argv[1]), roots_large, ledger=ledger, progress=Herald(), workers=2, batch_bytes=1)
     except KeyboardInterrupt:
         sys.exit(130)
 """
 
 
+def _control_c(run: int) -> None:
+    os.killpg(run, signal.SIGINT)  # a terminal sends it to the run and its workers
+
+
+def _kill(run: int) -> None:
+    os.kill(run, signal.SIGKILL)
+
+
 @pytest.mark.slow
 @pytest.mark.skipif(sys.platform == "win32", reason="signals to a process group are a POSIX matter")
-def test_control_c_ends_workers_and_keeps_what_is_finished(numbers: Path, tmp_path: Path) -> None:
-    # In a group of its own, and the signal to the whole group: what a terminal does on Ctrl-C.
+@pytest.mark.parametrize(("stop", "code"), [(_control_c, 130), (_kill, -9)])
+def test_a_stopped_run_keeps_what_is_finished_and_leaves_no_workers(
+    numbers: Path, tmp_path: Path, stop: Callable[[int], None], code: int
+) -> None:
     child = subprocess.Popen(
         [sys.executable, "-c", INTERRUPTED, str(numbers), str(tmp_path / "out")],
         stdout=subprocess.PIPE,
@@ -310,9 +320,9 @@ def test_control_c_ends_workers_and_keeps_what_is_finished(numbers: Path, tmp_pa
     )
     assert child.stdout is not None
     assert [child.stdout.readline() for _ in range(3)] == ["batch\n"] * 3
-    os.killpg(child.pid, signal.SIGINT)
+    stop(child.pid)
     child.communicate(timeout=30)
-    assert child.returncode == 130
+    assert child.returncode == code
     with Ledger(tmp_path / "out", {}) as ledger:
         assert 3 <= len(ledger.known()) < 12
     deadline = time.monotonic() + 20
