@@ -204,7 +204,8 @@ def _pieces(shape: Shape, theta2: Values) -> Real:
     stretch = np.divide(falls, shape.taper, out=np.ones_like(falls), where=shape.taper > 0)
     by_length = np.sqrt(np.abs(theta2)) * stretch / _LARGEST_THETA
     by_ratio = falls / -np.log1p(-_WIDEST_TAPER)
-    return np.ceil(np.maximum(by_length, by_ratio).max(axis=1, initial=1.0))
+    pieces: Real = np.ceil(np.maximum(by_length, by_ratio).max(axis=1, initial=1.0))
+    return pieces
 
 
 def _cut_and_joined(conductance: Values, shape: Shape, theta2: Values) -> Pi:

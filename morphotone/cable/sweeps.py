@@ -26,14 +26,14 @@ class Step(NamedTuple):
 
     ``parent`` holds for each the node it then hangs on.  In a folding step ``child`` holds the one
     node below it; in a hanging step ``child`` is None and ``parent`` is sorted, with the positions in
-    ``groups`` at which a new parent begins.
+    ``groups`` at which a new parent begins (empty in a folding step).
     """
 
     first: int
     last: int
     parent: Index
     child: Index | None
-    groups: Index | None
+    groups: Index
 
 
 @dataclass(frozen=True)
@@ -123,7 +123,7 @@ def _runs(parent: Index) -> Runs:
 
 
 def _streams(runs: Runs, parent: Index) -> tuple[Index, Index, Index, Index]:
-    """Return per run its order, the nodes of its stream below it, its stream; per stream the node it hangs on.
+    """Return per run its order, the nodes below it in its stream, its stream; per stream where it hangs.
 
     Horton–Strahler order as in Strahler 1957, Trans Am Geophys Union 38:913–920: a tip has order 1; where
     two or more streams of the highest order meet the order grows by one, else the highest flows on.
@@ -148,14 +148,15 @@ def _streams(runs: Runs, parent: Index) -> tuple[Index, Index, Index, Index]:
             elif order[run] == highest[up]:
                 ties[up] += 1
     is_root = [up < 0 for up in parent_run]
-    stream, hangs_on = [0] * count, []
+    stream = [0] * count
+    hangs_on: list[int] = []
     for run in range(count):
         up = parent_run[run]
         if up >= 0 and not is_root[up] and heir[up] == run:
             stream[run] = stream[up]
         else:
             stream[run] = len(hangs_on)
-            hangs_on.append(hook[run])
+            hangs_on.append(int(hook[run]))
     below = [0 if root else nodes for root, nodes in zip(is_root, below, strict=True)]
     return np.array(order), np.array(below), np.array(stream), np.array(hangs_on)
 
@@ -173,7 +174,7 @@ def _steps(key: Index, sequence: Index, place: Index, up: Index, down: Index) ->
             groups = np.flatnonzero(np.diff(parent, prepend=-1))
             steps.append(Step(first, last, parent, None, groups))
         else:
-            steps.append(Step(first, last, parent, place[down[nodes]], None))
+            steps.append(Step(first, last, parent, place[down[nodes]], parent[:0]))
     return tuple(steps)
 
 
@@ -221,7 +222,8 @@ def sweep(plan: Schedule, pieces: Pi, load: Values) -> Looks:
 def _behind(axial: Values, shunt: Values, beyond: Values, near: Values) -> Values:
     """Return near + axial in series with (shunt + beyond): a piece seen from one end."""
     far = shunt + beyond
-    return near + axial * (far / (axial + far))
+    seen: Values = near + axial * (far / (axial + far))
+    return seen
 
 
 def _fold_and_hang(plan: Schedule, pieces: Pi, total: Values, looked_into: Values) -> list[Pi | None]:
@@ -252,12 +254,10 @@ def _others(plan: Schedule, load: Values, looked_into: Values) -> Values:
     "The sum without me" is taken as (sum of all but the largest) + (the largest − me): the first term
     is at least as large as what the difference may have lost, so nothing cancels.
     """
-    hung = np.concatenate([np.arange(step.first, step.last) for step in plan.hanging()] or [[]]).astype(
-        np.int64
-    )
     others = np.zeros_like(load)
-    if not len(hung):
+    if not plan.steps:
         return others
+    hung = np.concatenate([np.arange(step.first, step.last) for step in plan.hanging()])
     parent = np.concatenate([step.parent for step in plan.hanging()])
     by_parent = np.argsort(parent, kind="stable")
     hung, parent = hung[by_parent], parent[by_parent]

@@ -110,7 +110,8 @@ def step_lengths(position: Real, parent: Index) -> Real:
     """Return the distance of each sample from its parent, µm, 0 at roots."""
     steps = position - position[parent]
     steps[parent < 0] = 0.0
-    return np.sqrt(np.einsum("ij,ij->i", steps, steps))
+    lengths: Real = np.sqrt(np.einsum("ij,ij->i", steps, steps))
+    return lengths
 
 
 def _corrected_radius(rec: Reconstruction, assumptions: Assumptions) -> Real:
@@ -136,9 +137,9 @@ def _longest_tree(position: Real, rec: Reconstruction) -> int:
 
 
 def _joined(position: Real, parent: Index, tree: Index, main: int, gap: float) -> Index:
-    """Join to the main tree every piece within the gap of it, then of the pieces joined, until none is left.
+    """Join to the main tree every piece within the gap of it, then those within the gap of the joined.
 
-    A piece is hung from its sample nearest to what is joined already, so that the gap is bridged by one frustum.
+    A piece is hung from its sample nearest to what is joined already; one frustum bridges the gap.
     """
     parent = parent.copy()
     waiting = np.setdiff1d(np.unique(tree), [main])
@@ -148,9 +149,7 @@ def _joined(position: Real, parent: Index, tree: Index, main: int, gap: float) -
         newly = []
         for piece in waiting:
             members = np.flatnonzero(tree == piece)
-            distance, neighbour = near.query(
-                position[members], distance_upper_bound=np.nextafter(gap, np.inf)
-            )
+            distance, neighbour = (np.atleast_1d(found) for found in near.query(position[members]))
             best = int(np.argmin(distance))
             if distance[best] <= gap:
                 parent = reroot(parent, int(members[best]))

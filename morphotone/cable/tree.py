@@ -1,6 +1,5 @@
 """From traced samples to cable: electrical nodes joined by frusta, one cell or a forest of many."""
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -13,7 +12,7 @@ from morphotone.reading.reconstruction import Reconstruction, parents_first
 Index = NDArray[np.int64]
 Real = NDArray[np.float64]
 
-# Soma rules whose surface is that of the sphere of equal area; else it is the parent sample's own radius away.
+# Rules whose soma ends at the sphere of its area; with the others it ends one radius from the parent sample.
 _SPHERES = ("sphere", "outline")
 
 

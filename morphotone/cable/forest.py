@@ -1,0 +1,198 @@
+"""Many cells as one set of arrays in order of elimination, solved for all cases at once."""
+
+from collections.abc import Sequence
+from typing import Any, NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from morphotone.cable.assumptions import Assumptions
+from morphotone.cable.frustum import Pi, Values, pi_of_frusta
+from morphotone.cable.sweeps import path_sums, schedule, sweep
+from morphotone.cable.tree import Cable
+from morphotone.reading.soma import SOMA
+from morphotone.units import (
+    FARAD_PER_MICROFARAD,
+    MICROSIEMENS_PER_NANOSIEMENS,
+    MICROSIEMENS_PER_S_CM2_UM2,
+    PER_UM_PER_CM,
+    UM_PER_CM,
+)
+
+Index = NDArray[np.int64]
+Real = NDArray[np.float64]
+
+
+class Case(NamedTuple):
+    """One choice of assumptions and frequency (Hz)."""
+
+    assumptions: Assumptions
+    hz: float
+
+
+class Solved(NamedTuple):
+    """By place, one column per case: impedances in MΩ, natural logarithms of the attenuations."""
+
+    Z_in: Values
+    Z_transfer: Values
+    log_attenuation_to_soma: Real
+    log_attenuation_from_soma: Real
+
+
+class Forest:
+    """Cells and cases, ready to be solved; arrays are by place in the order of elimination.
+
+    Parameters
+    ----------
+    cells : sequence of sequence of Cable
+        Per cell one cable per assumptions object, all with the same nodes.
+    cases : sequence of Case
+        The columns; all cases of one assumptions object stand together.
+    """
+
+    def __init__(self, cells: Sequence[Sequence[Cable]], cases: Sequence[Case]) -> None:
+        self.cells, self.cases = cells, tuple(cases)
+        sizes = [len(cables[0].parent) for cables in cells]
+        self.offsets = np.concatenate(([0], np.cumsum(sizes)))
+        parent = np.concatenate(
+            [
+                np.where(cables[0].parent < 0, -1, cables[0].parent + offset)
+                for cables, offset in zip(cells, self.offsets, strict=False)
+            ]
+        )
+        self.plan = schedule(parent)
+        self.at_root = self.plan.place[self.offsets[:-1]]
+        order = self.plan.order
+        self.kind = np.concatenate([cables[0].kind for cables in cells])[order]
+        # One column of geometry where all assumptions agree on it, else one per assumptions object.
+        alike = all(cable is cables[0] for cables in cells for cable in cables)
+        columns = 1 if alike else len(cells[0])
+        self.assumptions_of = _assumptions_of_cases(self.cases)
+        self.r_start, self.r_end, self.length = (
+            np.concatenate(
+                [np.stack([getattr(cable, name) for cable in cables[:columns]], axis=1) for cables in cells]
+            )[order]
+            for name in ("r_start", "r_end", "length")
+        )
+        self.soma_area = np.array(
+            [[cable.traced.soma.area for cable in cables[:columns]] for cables in cells]
+        )
+        self.has_soma = np.array([len(cables[0].traced.soma.members) > 0 for cables in cells])
+
+    def constants(self, columns: Sequence[int], code: Index | None = None) -> tuple[Values, Values]:
+        """Return R_i (ohm cm) and g(s) = F·(1/R_m + s·C_m) (S/cm2), (1 or n, columns).
+
+        By place, or for the type codes given.
+        """
+        codes, which = np.unique(self.kind if code is None else code, return_inverse=True)
+        per_code = [[self.cases[column].assumptions.of(int(c)) for column in columns] for c in codes]
+        if all(row == per_code[0] for row in per_code):
+            per_code, which = per_code[:1], np.zeros(1, np.int64)
+        R_i = np.array([[m.R_i_ohm_cm for m in row] for row in per_code])
+        leak = np.array([[m.spine_factor / m.R_m_ohm_cm2 for m in row] for row in per_code])
+        omega = 2.0 * np.pi * np.array([self.cases[column].hz for column in columns])
+        if not omega.any():
+            return R_i[which], leak[which]
+        charge = np.array(
+            [[m.spine_factor * m.C_m_uF_cm2 * FARAD_PER_MICROFARAD for m in row] for row in per_code]
+        )
+        return R_i[which], (leak + 1j * omega * charge)[which]
+
+    def geometry(self, columns: Sequence[int]) -> tuple[Real, Real, Real]:
+        """Return r_start, r_end, length, each (n, 1) or (n, columns)."""
+        if self.r_start.shape[1] == 1:
+            return self.r_start, self.r_end, self.length
+        which = [self.assumptions_of[column] for column in columns]
+        return self.r_start[:, which], self.r_end[:, which], self.length[:, which]
+
+    def solved(self, columns: Sequence[int]) -> Solved:
+        """Return impedances and log-attenuations of some cases, all at 0 Hz or none.
+
+        Z_in = 1/(admittance away + admittance toward the soma).  Over one frustum V_parent/V =
+        1 + (shunt + away)/axial for current at the soma, and V/V_parent = 1 + (shunt + beyond)/axial
+        for current at the site; both are 1 plus a positive number at 0 Hz, and their logarithms add up along the path
+        (Zador, Agmon-Snir & Segev 1995, J Neurosci 15:1669–1682).
+        """
+        R_i, g = self.constants(columns)
+        first_root = len(self.kind) - self.plan.roots
+        pieces = _frusta_only(first_root, self.geometry(columns), R_i, g)
+        looks = sweep(self.plan, pieces, self.load(columns, g.dtype))
+        far = pieces.start + looks.beyond
+        toward = pieces.end + pieces.axial * (far / (pieces.axial + far))
+        toward[first_root:] = 0.0
+        z_in = 1.0 / (looks.away + toward)
+        fall_from = (pieces.end + looks.away) / pieces.axial
+        fall_to = far / pieces.axial
+        log_from = path_sums(self.plan, np.log1p(fall_from))
+        log_to = path_sums(self.plan, np.log1p(fall_to).real)
+        at_soma = z_in[self._root_of_place()]
+        return Solved(z_in, at_soma * np.exp(-log_from), log_to, log_from.real)
+
+    def load(self, columns: Sequence[int], dtype: np.dtype[np.generic]) -> Values:
+        """Return the soma's membrane and shunt at the roots, µS, by place; 0 elsewhere."""
+        _, g = self.constants(columns, np.full(1, SOMA))
+        area = (
+            self.soma_area
+            if self.soma_area.shape[1] == 1
+            else self.soma_area[:, [self.assumptions_of[c] for c in columns]]
+        )
+        shunt = np.array([self.cases[column].assumptions.soma_shunt_nS for column in columns])
+        load = np.zeros((len(self.kind), len(columns)), dtype)
+        load[self.at_root] = MICROSIEMENS_PER_S_CM2_UM2 * area * g + np.where(
+            self.has_soma[:, None], MICROSIEMENS_PER_NANOSIEMENS * shunt, 0.0
+        )
+        return load
+
+    def distances(self) -> tuple[Real, Real, Real]:
+        """Return path distance (µm), X, and λ = sqrt((R_m/R_i)(d/4)) (µm; NaN at a soma), by place and case.
+
+        Per frustum X = 2h/(√r1 + √r2)·sqrt(2·R_i·σ/R_m), exact for a linear taper.
+        """
+        first = [self.assumptions_of.index(which) for which in range(self.assumptions_of[-1] + 1)]
+        r_start, r_end, length = self.geometry(first)
+        R_i, g = self.constants(first)
+        slant = np.hypot(1.0, np.divide(r_end - r_start, length, out=np.zeros_like(length), where=length > 0))
+        membrane = np.sqrt(2.0 * PER_UM_PER_CM * R_i * g.real * slant)
+        x = 2.0 * length / (np.sqrt(r_start) + np.sqrt(r_end)) * membrane
+        sums = path_sums(self.plan, np.concatenate((length + np.zeros_like(x), x), axis=1))
+        lambdas = np.sqrt(UM_PER_CM * self._local_radius(first) / (2.0 * R_i * g.real))
+        path, x = sums[:, : len(first)], sums[:, len(first) :]
+        return path[:, self.assumptions_of], x[:, self.assumptions_of], lambdas[:, self.assumptions_of]
+
+    def _local_radius(self, columns: Sequence[int]) -> Real:
+        """Return the radius at the end of each frustum, at root samples their own, at somata NaN, µm."""
+        radius = self.geometry(columns)[1].copy()
+        roots = [[cable.traced.radius[cable.traced.root] for cable in cables] for cables in self.cells]
+        radius[self.at_root] = np.where(self.has_soma[:, None], np.nan, np.array(roots)[:, : radius.shape[1]])
+        return radius
+
+    def _root_of_place(self) -> Index:
+        cell = np.repeat(self.at_root, np.diff(self.offsets))
+        return cell[self.plan.order]
+
+    def by_cell(self, values: NDArray[Any]) -> list[NDArray[Any]]:
+        """Cut an array by place into one by node per cell."""
+        by_node = values[self.plan.place]
+        return [by_node[first:last] for first, last in zip(self.offsets[:-1], self.offsets[1:], strict=True)]
+
+
+def _assumptions_of_cases(cases: Sequence[Case]) -> list[int]:
+    """Return which assumptions object, in order of appearance, each case has."""
+    seen: list[Assumptions] = []
+    which = []
+    for case in cases:
+        if not seen or case.assumptions is not seen[-1]:
+            seen.append(case.assumptions)
+        which.append(len(seen) - 1)
+    return which
+
+
+def _frusta_only(first_root: int, geometry: tuple[Real, Real, Real], R_i: Values, g: Values) -> Pi:
+    """Return the πs of all frusta, and at the roots, where there is none, an axial admittance of 1."""
+    rows = slice(0, first_root)
+    constants = [values if len(values) == 1 else values[rows] for values in (R_i, g)]
+    frusta = pi_of_frusta(*(part[rows] for part in geometry), *constants)
+    padding = np.zeros((len(geometry[0]) - first_root, frusta.axial.shape[1]), frusta.axial.dtype)
+    return Pi(
+        *(np.concatenate((part, padding + fill)) for part, fill in zip(frusta, (1.0, 0.0, 0.0), strict=True))
+    )
