@@ -110,8 +110,8 @@ class Forest:
 
         Z_in = 1/(admittance away + admittance toward the soma).  Over one frustum V_parent/V =
         1 + (shunt + away)/axial for current at the soma, and V/V_parent = 1 + (shunt + beyond)/axial
-        for current at the site; both are 1 plus a positive number at 0 Hz, and their logarithms add up along the path
-        (Zador, Agmon-Snir & Segev 1995, J Neurosci 15:1669–1682).
+        for current at the site; both are 1 plus a positive number at 0 Hz, and their logarithms add up
+        along the path (Zador, Agmon-Snir & Segev 1995, J Neurosci 15:1669–1682).
         """
         R_i, g = self.constants(columns)
         first_root = len(self.kind) - self.plan.roots

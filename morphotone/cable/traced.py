@@ -13,6 +13,9 @@ from morphotone.reading.soma import Soma, find_soma, reroot
 
 AXON = 2  # type code of the SWC standard
 
+# Rules whose soma ends at the sphere of its area; with the others it ends one radius from the parent sample.
+_SPHERES = ("sphere", "outline")
+
 Index = NDArray[np.int64]
 Real = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -32,6 +35,11 @@ class Traced:
         Type codes; parents after re-hanging and joining, -1 at roots; in no particular order.
     soma : Soma
         Of the corrected coordinates.
+    stem : ndarray of bool, shape (n,)
+        Whether the sample's parent is a soma sample and it is none itself.
+    length : ndarray, shape (n,)
+        Axial length of the frustum that ends at each sample, before any cut, µm; a stem's counts from the
+        soma's surface; 0 at roots and in the soma.
     root : int
         The sample the cell hangs from: the head of the soma, or without a soma the root sample.
     share : ndarray, shape (n,)
@@ -50,6 +58,8 @@ class Traced:
     kind: Index
     parent: Index
     soma: Soma
+    stem: Mask
+    length: Real
     root: int
     share: Real
     re_hung: bool
@@ -76,7 +86,9 @@ def trace(rec: Reconstruction, assumptions: Assumptions) -> Traced:
     """
     position = rec.position * np.asarray(assumptions.shrinkage)
     radius = _corrected_radius(rec, assumptions)
-    soma = find_soma(rec.kind, rec.parent, position, radius, assumptions.soma_rule)
+    # The rule is chosen on the coordinates as traced: a correction must not make a chain of three points.
+    rule = find_soma(rec.kind, rec.parent, rec.position, rec.radius, assumptions.soma_rule).rule
+    soma = find_soma(rec.kind, rec.parent, position, radius, rule)
     main = rec.tree[soma.members[0]] if len(soma.members) else _longest_tree(position, rec)
     root = int(soma.members[0]) if len(soma.members) else int(np.argmax(rec.tree == main))
     re_hung = bool(rec.parent[root] >= 0)
@@ -93,17 +105,33 @@ def trace(rec: Reconstruction, assumptions: Assumptions) -> Traced:
         tree = trees(parent)
     left = int(tree.max())
     ours = tree == tree[root]
-    share = np.where(ours, _share_of_axon(position, parent, rec.kind, assumptions), 0.0)
+    stem, length = _frustum_lengths(position, radius, parent, soma)
+    share = np.where(ours, _share_of_axon(length, parent, rec.kind, assumptions), 0.0)
     if not len(soma.members) and np.count_nonzero(share) < 2:
         raise ReadingError(
             f"{rec.file}: nothing is left to analyse, since there is no soma and the assumptions leave out "
             "all cable; keep the axon or leave the file out",
             "nothing_left",
         )
-    lost = float(step_lengths(position, parent)[~ours].sum()) if left else 0.0
     return Traced(
-        position, radius, rec.kind, parent, soma, root, share, re_hung, left, pieces - left, lost
+        position, radius, rec.kind, parent, soma, stem, length, root, share, re_hung,
+        left, pieces - left, float(length[~ours].sum()),
     )  # fmt: skip
+
+
+def _frustum_lengths(position: Real, radius: Real, parent: Index, soma: Soma) -> tuple[Mask, Real]:
+    """Return which samples start a stem, and the axial length of every sample's frustum, µm."""
+    length = step_lengths(position, parent)
+    in_soma = np.zeros(len(parent), bool)
+    in_soma[soma.members] = True
+    stem = in_soma[parent] & (parent >= 0) & ~in_soma
+    if soma.rule in _SPHERES:
+        surface = np.linalg.norm(position - soma.centre, axis=1) - soma.radius
+    else:
+        surface = length - radius[parent]
+    length = np.where(stem, np.maximum(surface, 0.0), length)
+    length[in_soma] = 0.0
+    return stem, length
 
 
 def step_lengths(position: Real, parent: Index) -> Real:
@@ -160,7 +188,7 @@ def _joined(position: Real, parent: Index, tree: Index, main: int, gap: float) -
     return parent
 
 
-def _share_of_axon(position: Real, parent: Index, kind: Index, assumptions: Assumptions) -> Real:
+def _share_of_axon(length: Real, parent: Index, kind: Index, assumptions: Assumptions) -> Real:
     """Return per sample the share of its frustum that the axon rule leaves, 1 outside the axon.
 
     What hangs on the axon goes with it.
@@ -168,7 +196,7 @@ def _share_of_axon(position: Real, parent: Index, kind: Index, assumptions: Assu
     if assumptions.axon == "kept":
         return np.ones(len(parent))
     axon = kind == AXON
-    length = np.where(axon, step_lengths(position, parent), 0.0)
+    length = np.where(axon, length, 0.0)
     depth, length_to = axon.astype(np.int64), length
     above = parent.copy()
     while (above >= 0).any():  # sums over ancestors by doubling the stretch seen

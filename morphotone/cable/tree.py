@@ -6,14 +6,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.traced import Traced, step_lengths, trace
+from morphotone.cable.traced import Traced, trace
 from morphotone.reading.reconstruction import Reconstruction, parents_first
 
 Index = NDArray[np.int64]
 Real = NDArray[np.float64]
-
-# Rules whose soma ends at the sphere of its area; with the others it ends one radius from the parent sample.
-_SPHERES = ("sphere", "outline")
 
 
 @dataclass(frozen=True, eq=False)
@@ -81,8 +78,8 @@ def build(rec: Reconstruction, assumptions: Assumptions) -> Cable:
     from its parent sample; samples at no distance share a node.
     """
     traced = trace(rec, assumptions)
-    r_start, length = _frusta(traced, assumptions.branch_start)
-    length *= traced.share
+    r_start = _start_radius(traced, assumptions.branch_start)
+    length = traced.length * traced.share
     node, sample = _nodes(traced, length)
     ends = sample[1:]
     parent = node[traced.parent[ends]]
@@ -103,24 +100,13 @@ def build(rec: Reconstruction, assumptions: Assumptions) -> Cable:
     )
 
 
-def _frusta(traced: Traced, branch_start: str) -> tuple[Real, Real]:
-    """Return the radius at which each sample's frustum starts, and its length, µm."""
-    parent, radius, soma = traced.parent, traced.radius, traced.soma
-    length = step_lengths(traced.position, parent)
-    start = radius[parent]
-    in_soma = np.zeros(len(parent), bool)
-    in_soma[soma.members] = True
+def _start_radius(traced: Traced, branch_start: str) -> Real:
+    """Return the radius at which each sample's frustum starts, µm."""
+    own = traced.stem
     if branch_start == "own radius":
-        children = np.bincount(parent[parent >= 0], minlength=len(parent))
-        start = np.where(children[parent] > 1, radius, start)
-    stem = in_soma[parent] & (parent >= 0)
-    if soma.rule in _SPHERES:
-        surface = np.linalg.norm(traced.position - soma.centre, axis=1) - soma.radius
-    else:
-        surface = length - radius[parent]
-    length = np.where(stem, np.maximum(surface, 0.0), length)
-    length[soma.members] = 0.0
-    return np.where(stem, radius, start), length
+        children = np.bincount(traced.parent[traced.parent >= 0], minlength=len(traced.parent))
+        own = own | (children[traced.parent] > 1)
+    return np.where(own, traced.radius, traced.radius[traced.parent])
 
 
 def _nodes(traced: Traced, length: Real) -> tuple[Index, Index]:
