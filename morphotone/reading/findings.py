@@ -154,11 +154,10 @@ CATALOGUE: dict[str, Kind] = {
         ),
         explanation=(
             "Light microscopy resolves λ/(2 NA) after Abbe: 0.196 µm at 550 nm and NA 1.4. Diameters "
-            "below that were not measured if the cell was traced from light microscopy. Electron "
-            "microscopy resolves far less, and for its reconstructions the finding means nothing: set "
-            "optics_diameter_um to the resolution of the data. With half of the membrane "
-            "(optics_membrane) on such samples, and few different diameters among them as the steps of a "
-            "light microscope leave, the file is doubtful."
+            "below that were not measured if the cell was traced from light microscopy; with half of the "
+            "membrane (optics_membrane) on such samples the file is doubtful. Electron microscopy "
+            "resolves far less, and for its reconstructions the finding means nothing: set "
+            "optics_diameter_um in [vetting] of the assumptions file to the resolution of the data."
         ),
     ),
     "diameter_quantised": Kind(
@@ -179,10 +178,10 @@ CATALOGUE: dict[str, Kind] = {
         title="sudden changes of diameter within a branch",
         effect="A narrow sample works as an extra axial resistance, a thick one as a pool of membrane.",
         explanation=(
-            "From one sample to the next within a branch the diameter changes more than jump_ratio-fold. "
-            "A few are boutons or slips of the pen; where more than the share jump_share of the neurite "
-            "samples do it, and jump_count of them at least, the diameters were not taken with care and "
-            "the file is doubtful."
+            "From one sample to the next within a branch the diameter changes by more than the "
+            "factor jump_ratio. A few are boutons or slips of the pen; where more than the share "
+            "jump_share of the neurite samples do it, and jump_count of them at least, the diameters "
+            "were not taken with care and the file is doubtful."
         ),
     ),
     "soma_absent": Kind(

@@ -5,7 +5,7 @@ from collections.abc import Iterator
 import numpy as np
 
 from morphotone.reading.findings import Finding, Severity
-from morphotone.reading.measures import Mask, Measures, tally
+from morphotone.reading.measures import Mask, Measures
 from morphotone.reading.thresholds import Thresholds
 from morphotone.reading.wording import counted, number, percent
 
@@ -99,17 +99,16 @@ def below_optics(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
     if not thin.any():
         return
     place, weight = measures.first(thin), measures.membrane_share(thin)
-    few = len(tally(radius[thin]).radius) <= limits.quantised_diameters
     yield Finding(
         "diameter_below_optics",
         f"{place.count:,} of {counted(int(measures.neurite.sum()), 'neurite sample')}, with "
         f"{percent(weight)} of the membrane, are thinner than {limits.optics_diameter_um:g} µm, which "
         f"light microscopy does not resolve (first at {place}); this matters if the cell was traced "
-        "from light microscopy.",
+        "from light microscopy, for electron microscopy set optics_diameter_um.",
         place.line,
         place.sample,
         place.count,
-        "doubtful" if weight >= limits.optics_membrane and few else "note",
+        "doubtful" if weight >= limits.optics_membrane else "note",
     )
 
 

@@ -52,6 +52,7 @@ def mend_radii(rec: Reconstruction, thresholds: Thresholds = DEFAULTS) -> Recons
     _borrow_toward_root(radius, measures, alike)
     radius[(radius == 0) & measures.neurite] = np.median(rec.radius[usable])
     _borrow_from_below(radius, measures, measures.hung)
+    _borrow_toward_root(radius, measures, measures.hung)
     return replace(
         rec, radius=radius, findings=(*rec.findings, _record(measures, broken, radius, thresholds))
     )

@@ -120,10 +120,7 @@ class Thresholds:
     )
     optics_membrane: float = field(
         default=0.5,
-        metadata=_because(
-            "with half of the membrane on unresolved diameters the cell's result is a guess, where their few "
-            "values (quantised_diameters or fewer) speak for the steps of a light microscope"
-        ),
+        metadata=_because("with half of the membrane on unresolved diameters the cell's result is a guess"),
     )
     quantised_diameters: int = field(
         default=12,

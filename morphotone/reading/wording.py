@@ -9,7 +9,7 @@ def number(value: float) -> str:
 def percent(share: float) -> str:
     """Return a share as per cent: two digits below 10 %, three above 99 %, so that only all is 100 %."""
     if share > 0.99:
-        return "100 %" if share == 1 else f"{min(100 * share, 99.9):.1f} %"
+        return "100 %" if share > 1 - 1e-9 else f"{min(100 * share, 99.9):.1f} %"
     return f"{100 * share:.2g} %" if share < 0.1 else f"{100 * share:.0f} %"
 
 
