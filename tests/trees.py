@@ -203,11 +203,6 @@ def zero_length_joints():
     return tree.text()
 
 
-def lone_sample():
-    """One sample that is no soma: no membrane at all."""
-    return "1 3 0 0 0 1 -1\n"
-
-
 def deep_chain(samples=100_000, length=10_000.0, diameter=2.0):
     """One unbranched cylinder of very many samples; path depth equals the number of samples."""
     x = np.linspace(0.0, length, samples)
@@ -228,9 +223,14 @@ def ball_and_stick(soma_radius=10.0, length=600.0, diameter=2.0, pieces=3):
     return tree.text()
 
 
-def soma_only(radius=5.0):
-    """One sphere and nothing else."""
-    return f"1 1 0 0 0 {radius!r} -1\n"
+def stem_within_the_soma(radius=5.0):
+    """One sphere; the stem's first samples lie inside it, so that cable starts at the third."""
+    tree = Tree()
+    last = tree.add((0, 0, 0), radius, kind=SOMA)
+    for x in (0.4 * radius, 0.4 * radius + 50.0):
+        last = tree.add((x, 0, 0), 0.7, last)
+    tree.grow(1, (0, radius, 0), 0.5)  # nothing but a point on the surface
+    return tree.text()
 
 
 def soma_three_points(r=5.0):
@@ -304,7 +304,7 @@ FAMILIES: dict[str, tuple[Callable[[], str], str]] = {
     "extremes": (extremes, "none"),
     "zero-length joints": (zero_length_joints, "none"),
     "ball and stick": (ball_and_stick, "sphere"),
-    "soma only": (soma_only, "sphere"),
+    "stem within the soma": (stem_within_the_soma, "sphere"),
     "soma of three points": (soma_three_points, "three-point"),
     "soma chain": (soma_chain, "chain"),
     "soma outline": (soma_outline, "outline"),

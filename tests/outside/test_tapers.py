@@ -35,7 +35,7 @@ TAPERS = rows(  # given: d_start, d_end um, length um, what; R_m 1e4, R_i 100, s
     "conical pin fin analogy: Gardner 1945; Incropera Table 3.5; tip diameter 0",
     MEMORY,
     1e-8,
-    ("cone_Rin", (4.0, 4e-5, 1000.0, "R"), 183.7276206),
+    ("cone_Rin", (4.0, 4e-5, 1000.0 * (1 - 1e-5), "R"), 183.7276206),  # cut 10 nm before the tip
 )
 
 
@@ -67,10 +67,10 @@ PINS = rows(  # given: mL, m = 1/lambda at the base; efficiency 2 I2(2mL)/(mL I1
 
 @pytest.mark.parametrize("row", PINS)
 def test_conical_pin_fin_is_a_conical_dendrite(row):
-    d, tip = 4.0, 4e-6
+    d, share_left_out = 4.0, 1e-6  # a file's radii are positive: the cone is cut just before its tip
     h = row.given[0] * lambda_um(1e4, 100, d)
-    R_m = without_slant(d, tip, h)
-    G_in = 1 / solved(trees.frustum(h, d, tip), R_m).R_in_MOhm[0, 0]
+    cut = h * (1 - share_left_out), d, d * share_left_out
+    G_in = 1 / solved(trees.frustum(*cut), without_slant(d, 0.0, h)).R_in_MOhm[0, 0]
     ideal = pi * d / 2 * h / 1e4 * 1e-2  # uS: the whole mantle (pi d h/2, no slant) at the base's potential
     assert_published(G_in / ideal, row)
 
@@ -105,18 +105,18 @@ def test_membrane_area_of_a_frustum(row):
     assert_published((start + end) / 1e-15 * 1e2, row)
 
 
-SOMA = [  # given: the file; expected um2
+SOMA = [  # given: the file, a stem's first sample within the soma (no cable); expected um2
     *rows(
         "INCF SWC specification, docs/source/swc.rst: one sample is a sphere",
         LOOKED_UP_FORMULA,
         1e-9,
-        ("soma1_area", ("1 1 0 0 0 5 -1\n",), 314.1592654),
+        ("soma1_area", ("1 1 0 0 0 5 -1\n2 3 1 0 0 1 1\n",), 314.1592654),
     ),
     *rows(
         "NeuroMorpho.Org, soma format representation as of version 5.3: three samples",
         LOOKED_UP_FORMULA,
         1e-9,
-        ("soma3_area", ("1 1 0 0 0 5 -1\n2 1 0 -5 0 5 1\n3 1 0 5 0 5 1\n",), 314.1592654),
+        ("soma3_area", ("1 1 0 0 0 5 -1\n2 1 0 -5 0 5 1\n3 1 0 5 0 5 1\n4 3 1 0 0 1 1\n",), 314.1592654),
     ),
 ]
 
