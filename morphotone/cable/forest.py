@@ -7,7 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.frustum import Pi, Values, pi_of_frusta
+from morphotone.cable.frustum import Pi, Values, electrotonic_lengths, pi_of_frusta
 from morphotone.cable.sweeps import path_sums, schedule, sweep
 from morphotone.cable.tree import Cable
 from morphotone.reading.soma import SOMA
@@ -15,7 +15,6 @@ from morphotone.units import (
     FARAD_PER_MICROFARAD,
     MICROSIEMENS_PER_NANOSIEMENS,
     MICROSIEMENS_PER_S_CM2_UM2,
-    PER_UM_PER_CM,
     UM_PER_CM,
 )
 
@@ -37,6 +36,27 @@ class Solved(NamedTuple):
     Z_transfer: Values
     log_attenuation_to_soma: Real
     log_attenuation_from_soma: Real
+
+
+class Membrane(NamedTuple):
+    """Passive constants with the spine factor F in them, shape (1,) where all rows agree, else (rows,)."""
+
+    R_i: Real  # ohm cm
+    leak: Real  # F/R_m, S/cm2
+    capacity: Real  # F·C_m, F/cm2
+
+
+def membrane_of(kind: Index, assumptions: Assumptions) -> Membrane:
+    """Return the constants of each type code under given assumptions."""
+    codes, which = np.unique(kind, return_inverse=True)
+    domains = [assumptions.of(int(code)) for code in codes]
+    if all(domain == domains[0] for domain in domains):
+        domains, which = domains[:1], np.zeros(1, np.int64)
+    constants = [
+        (d.R_i_ohm_cm, d.spine_factor / d.R_m_ohm_cm2, d.spine_factor * d.C_m_uF_cm2 * FARAD_PER_MICROFARAD)
+        for d in domains
+    ]
+    return Membrane(*np.array(constants)[which].T)
 
 
 class Forest:
@@ -80,23 +100,17 @@ class Forest:
         self.has_soma = np.array([len(cables[0].traced.soma.members) > 0 for cables in cells])
 
     def constants(self, columns: Sequence[int], code: Index | None = None) -> tuple[Values, Values]:
-        """Return R_i (ohm cm) and g(s) = F·(1/R_m + s·C_m) (S/cm2), (1 or n, columns).
+        """Return R_i (ohm cm) and g(s) = F·(1/R_m + s·C_m) (S/cm2), shape (1 or n, columns).
 
         By place, or for the type codes given.
         """
-        codes, which = np.unique(self.kind if code is None else code, return_inverse=True)
-        per_code = [[self.cases[column].assumptions.of(int(c)) for column in columns] for c in codes]
-        if all(row == per_code[0] for row in per_code):
-            per_code, which = per_code[:1], np.zeros(1, np.int64)
-        R_i = np.array([[m.R_i_ohm_cm for m in row] for row in per_code])
-        leak = np.array([[m.spine_factor / m.R_m_ohm_cm2 for m in row] for row in per_code])
-        omega = 2.0 * np.pi * np.array([self.cases[column].hz for column in columns])
-        if not omega.any():
-            return R_i[which], leak[which]
-        charge = np.array(
-            [[m.spine_factor * m.C_m_uF_cm2 * FARAD_PER_MICROFARAD for m in row] for row in per_code]
+        kind = self.kind if code is None else code
+        per_case = [membrane_of(kind, self.cases[column].assumptions) for column in columns]
+        R_i, leak, capacity = (
+            np.stack(np.broadcast_arrays(*values), axis=1) for values in zip(*per_case, strict=True)
         )
-        return R_i[which], (leak + 1j * omega * charge)[which]
+        omega = 2.0 * np.pi * np.array([self.cases[column].hz for column in columns])
+        return R_i, leak + 1j * omega * capacity if omega.any() else leak
 
     def geometry(self, columns: Sequence[int]) -> tuple[Real, Real, Real]:
         """Return r_start, r_end, length, each (n, 1) or (n, columns)."""
@@ -144,18 +158,16 @@ class Forest:
         return load
 
     def distances(self) -> tuple[Real, Real, Real]:
-        """Return path distance (µm), X, and λ = sqrt((R_m/R_i)(d/4)) (µm; NaN at a soma), by place and case.
+        """Return path distance (µm), X and λ (µm; NaN at a soma), by place and case.
 
-        Per frustum X = 2h/(√r1 + √r2)·sqrt(2·R_i·σ/R_m), exact for a linear taper.
+        λ = sqrt((R_m/R_i)(d/4)) with the local diameter d.
         """
         first = [self.assumptions_of.index(which) for which in range(self.assumptions_of[-1] + 1)]
         r_start, r_end, length = self.geometry(first)
-        R_i, g = self.constants(first)
-        slant = np.hypot(1.0, np.divide(r_end - r_start, length, out=np.zeros_like(length), where=length > 0))
-        membrane = np.sqrt(2.0 * PER_UM_PER_CM * R_i * g.real * slant)
-        x = 2.0 * length / (np.sqrt(r_start) + np.sqrt(r_end)) * membrane
+        R_i, leak = self.constants(first)
+        x = electrotonic_lengths(r_start, r_end, length, R_i, leak)
         sums = path_sums(self.plan, np.concatenate((length + np.zeros_like(x), x), axis=1))
-        lambdas = np.sqrt(UM_PER_CM * self._local_radius(first) / (2.0 * R_i * g.real))
+        lambdas = np.sqrt(UM_PER_CM * self._local_radius(first) / (2.0 * R_i * leak))
         path, x = sums[:, : len(first)], sums[:, len(first) :]
         return path[:, self.assumptions_of], x[:, self.assumptions_of], lambdas[:, self.assumptions_of]
 

@@ -121,6 +121,24 @@ def pi_of_frusta(r_start: Values, r_end: Values, length: Values, R_i: Values, g:
     )
 
 
+def electrotonic_lengths(r_start: Real, r_end: Real, length: Real, R_i: Real, leak: Real) -> Real:
+    """Return the L of each frustum at 0 Hz, exact for a linear taper; 0 for no length.
+
+    L = 2h/(√r1 + √r2)·sqrt(2·R_i·g·σ), the integral of dx/λ with λ² = r/(2 R_i g σ).
+
+    Parameters
+    ----------
+    r_start, r_end, length : ndarray
+        Radii of the two ends and axial length, µm.
+    R_i, leak : ndarray
+        Axial resistivity, ohm cm; F/R_m, S/cm2; broadcast against the others.
+    """
+    slant = np.hypot(length, r_end - r_start)  # h·σ
+    roots = np.sqrt(r_start) + np.sqrt(r_end)
+    lengths: Real = 2.0 / roots * np.sqrt(2.0 * PER_UM_PER_CM * R_i * leak * slant * length)
+    return lengths
+
+
 def join(first: Pi, second: Pi) -> Pi:
     """Return the π of two pieces end to end (star–mesh transformation of the shared point).
 
