@@ -26,36 +26,47 @@ def main() -> int:
     """Install, survey the samples, show where the results are; 0 when all went as it should."""
     python = prepare(HOME / "venv", ".")
     shutil.rmtree(RESULTS, ignore_errors=True)
-    command = [str(python), "-m", "morphotone", "survey", SAMPLES.name, "--into", str(RESULTS)]
     say(f"Surveying: python -m morphotone survey {SAMPLES.name} --into {RESULTS.relative_to(CHECKOUT)}\n")
-    code = subprocess.run(command, cwd=CHECKOUT, check=False).returncode
-    if code != SOME_TURNED_AWAY:
-        say(f"\nThe survey ended with exit code {code}; {SOME_TURNED_AWAY} was expected. This is a fault.")
+    code = survey(python)
+    files = sum(1 for _ in SAMPLES.rglob("*.swc"))
+    cells, turned_away = rows_of("cells.csv"), rows_of("turned_away.csv")
+    if code != SOME_TURNED_AWAY or not cells or len(cells) + len(turned_away) != files:
+        say(
+            f"\nThis is a fault: the survey ended with exit code {code} ({SOME_TURNED_AWAY} was expected), "
+            f"and of {files} files {len(cells)} were analysed and {len(turned_away)} turned away."
+        )
         return 1
-    explain()
+    explain(cells, len(turned_away))
     return 0
 
 
-def explain() -> None:
+def survey(python: Path) -> int:
+    """Run the survey of the samples and return its exit code."""
+    command = [str(python), "-m", "morphotone", "survey", SAMPLES.name, "--into", str(RESULTS)]
+    return subprocess.run(command, cwd=CHECKOUT, check=False).returncode
+
+
+def rows_of(table: str) -> list[dict[str, str]]:
+    """Return the rows of a table of the results, none if it was not written."""
+    path = RESULTS / table
+    if not path.exists():
+        return []
+    with path.open(newline="", encoding="utf-8") as lines:
+        return list(csv.DictReader(lines))
+
+
+def explain(cells: list[dict[str, str]], turned_away: int) -> None:
     """Say what the exit code means, show some rows, name the files."""
-    refused = len(rows_of(RESULTS / "turned_away.csv"))
     say(
-        f"\nThe survey's exit code was 1, as it should be here: {refused} files of "
-        f"{SAMPLES.name}/troubles were turned away, on purpose. turned_away.csv says why.\n"
+        f"\nThe survey's exit code was {SOME_TURNED_AWAY}, as it should be here: {turned_away} of the files "
+        f"in {SAMPLES.name}/troubles were turned away, on purpose. turned_away.csv says why.\n"
     )
-    cells = rows_of(RESULTS / "cells.csv")
     say(f"cells.csv has {len(cells)} cells; four of its columns, the first {SHOWN_ROWS}:")
     for line in [SHOWN, *([cell[column] for column in SHOWN] for cell in cells[:SHOWN_ROWS])]:
         say("  " + "".join(field[:22].ljust(24) for field in line).rstrip())
     say("\nWhere to look:")
     for path in sorted(RESULTS.iterdir()):
         say(f"  {path}")
-
-
-def rows_of(path: Path) -> list[dict[str, str]]:
-    """Return the rows of a CSV file."""
-    with path.open(newline="", encoding="utf-8") as lines:
-        return list(csv.DictReader(lines))
 
 
 if __name__ == "__main__":
