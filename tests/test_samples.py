@@ -10,6 +10,7 @@ import pandas as pd
 import pytest
 
 from morphotone.cable.assumptions import Assumptions
+from morphotone.cable.electrotonus import solve
 from morphotone.errors import ReadingError
 from morphotone.reading.reconstruction import Reconstruction, read
 from morphotone.reading.vetting import vet_reconstruction
@@ -161,6 +162,13 @@ def test_recordings_are_within_what_such_cells_show() -> None:
     assert recordings["R_in_MOhm"].between(30, 400).all()
     assert recordings["tau0_ms"].between(5, 30).all()
     assert recordings["temperature_C"].between(30, 37).all()
+
+
+def test_each_recording_is_near_its_own_cell() -> None:
+    assumptions = Assumptions.from_toml((STUDY / "assumptions.toml").read_text(encoding="utf-8"))
+    for name, recorded in rows_of("recordings.csv")[["cell", "R_in_MOhm"]].to_numpy():
+        R_in = solve(cell_of(name), assumptions).R_in_MOhm[0, 0]
+        assert 0.6 < R_in / recorded < 1.6, name
 
 
 def test_the_assumptions_file_reads_without_a_warning() -> None:
