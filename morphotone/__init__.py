@@ -1,1 +1,60 @@
-"""Electrotonic structure of whole folders of reconstructed neurons."""
+"""Electrotonic structure of whole folders of reconstructed neurons.
+
+The floors, top to bottom as data flows: ``reading`` (bytes to reconstruction to findings), ``cable``
+(reconstruction and assumptions to electrotonus), ``questions`` (tables), ``night`` (many files, unattended),
+``showing`` (text people read), ``commands``. What a script needs stands here, and is imported when asked for:
+
+>>> import morphotone
+>>> rec = morphotone.read("sample_morphologies/spar_01.swc")          # doctest: +SKIP
+>>> morphotone.solve(rec, hz=[100]).attenuation_to_soma               # doctest: +SKIP
+"""
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from morphotone.cable.assumptions import Assumptions, Membrane
+    from morphotone.cable.electrotonus import Electrotonus, solve
+    from morphotone.commands.survey import Survey, survey
+    from morphotone.commands.vet import vet
+    from morphotone.errors import AssumptionError, MorphotoneError, ReadingError, ResultsError
+    from morphotone.reading.reconstruction import Reconstruction, read
+
+_HOMES = {
+    "Assumptions": "morphotone.cable.assumptions",
+    "Membrane": "morphotone.cable.assumptions",
+    "Electrotonus": "morphotone.cable.electrotonus",
+    "solve": "morphotone.cable.electrotonus",
+    "Survey": "morphotone.commands.survey",
+    "survey": "morphotone.commands.survey",
+    "vet": "morphotone.commands.vet",
+    "AssumptionError": "morphotone.errors",
+    "MorphotoneError": "morphotone.errors",
+    "ReadingError": "morphotone.errors",
+    "ResultsError": "morphotone.errors",
+    "Reconstruction": "morphotone.reading.reconstruction",
+    "read": "morphotone.reading.reconstruction",
+}
+
+__all__ = [
+    "AssumptionError",
+    "Assumptions",
+    "Electrotonus",
+    "Membrane",
+    "MorphotoneError",
+    "ReadingError",
+    "Reconstruction",
+    "ResultsError",
+    "Survey",
+    "read",
+    "solve",
+    "survey",
+    "vet",
+]
+
+
+def __getattr__(name: str) -> Any:
+    """Import a public name when it is first asked for: ``--help`` must not wait for pandas."""
+    if name not in _HOMES:
+        raise AttributeError(f"module 'morphotone' has no attribute {name!r}")
+    return getattr(import_module(_HOMES[name]), name)

@@ -1,4 +1,8 @@
-"""Units: lengths in µm, R_m in ohm cm2, R_i in ohm cm, C_m in µF/cm2; conductances come out in µS, impedances in MΩ."""
+"""Factors between units.
+
+Lengths are in µm, R_m in ohm cm2, R_i in ohm cm, C_m in µF/cm2; conductances come out
+in µS, impedances in MΩ.
+"""
 
 from typing import Final
 

@@ -60,7 +60,7 @@ def pieces(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
         return
     length: Floats = np.bincount(tree, weights=measures.cable).astype(np.float64)
     samples = np.bincount(tree)
-    main = _main_tree(measures)
+    main = _main_tree(measures, length)
     apart = np.delete(np.arange(len(length)), main)
     apart = apart[np.argsort(-length[apart], kind="stable")]
     severity = _severity_apart(length, main, limits)
@@ -89,14 +89,14 @@ def pieces(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
         )
 
 
-def _main_tree(measures: Measures) -> int:
-    """Return the tree that is analysed: the soma's, else that of the first root."""
+def _main_tree(measures: Measures, length: Floats) -> int:
+    """Return the tree that is analysed: the soma's, else the one with the most cable (um, by tree)."""
     members = measures.lump.members
-    return int(measures.rec.tree[members[0]]) if len(members) else 0
+    return int(measures.rec.tree[members[0]]) if len(members) else int(length.argmax())
 
 
 def _anchor(measures: Measures) -> str:
-    return "the soma" if measures.soma.any() else "the first root"
+    return "the soma" if measures.soma.any() else "the longest piece"
 
 
 def _severity_apart(length: Floats, main: int, limits: Thresholds) -> Severity:

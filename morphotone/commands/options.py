@@ -1,0 +1,42 @@
+"""Options that several commands have, and what they come to."""
+
+import argparse
+from dataclasses import replace
+from pathlib import Path
+
+from morphotone.cable.assumptions import Assumptions
+from morphotone.commands.assumptions import load_assumptions, print_warnings
+
+
+def add_assumption_options(parser: argparse.ArgumentParser) -> None:
+    """Add --assume and --unit-um."""
+    parser.add_argument(
+        "--assume",
+        metavar="FILE.toml",
+        type=Path,
+        help="assumptions file (`morphotone assumptions` prints one); the defaults unless given",
+    )
+    parser.add_argument(
+        "--unit-um",
+        metavar="UM",
+        type=float,
+        help="length of the files' unit in um, e.g. 0.001 for nanometres; overrides the assumptions file",
+    )
+
+
+def assumptions_of(args: argparse.Namespace) -> Assumptions:
+    """Return the assumptions that the options state; warnings go to standard error.
+
+    Raises
+    ------
+    AssumptionError
+        The file cannot be used.
+    """
+    assumptions = load_assumptions(args.assume) if args.assume else Assumptions()
+    changes = {"unit_um": args.unit_um, "hz": getattr(args, "hz", None)}
+    given = {field: value for field, value in changes.items() if value is not None}
+    if "hz" in given:
+        given["hz"] = tuple(given["hz"])
+    assumptions = replace(assumptions, **given)
+    print_warnings(assumptions)
+    return assumptions

@@ -1,0 +1,284 @@
+"""`morphotone survey`: the night's run over a folder, to CSV tables."""
+
+import argparse
+import hashlib
+import os
+import sys
+from collections.abc import Sequence
+from contextlib import ExitStack
+from dataclasses import dataclass
+from datetime import UTC, datetime
+from functools import partial
+from importlib.metadata import version
+from pathlib import Path
+from tempfile import TemporaryDirectory
+from typing import Any
+
+import joblib
+import pandas as pd
+
+from morphotone.cable.assumptions import Assumptions
+from morphotone.commands.options import add_assumption_options, assumptions_of
+from morphotone.errors import ReadingError
+from morphotone.night.folder import PATTERNS, find_files
+from morphotone.night.ledger import Ledger
+from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER, Item, Outcome, Status
+from morphotone.night.progress import Progress, progress_on
+from morphotone.night.record import run_record, write_record
+from morphotone.night.results import atomic, export, export_each
+from morphotone.night.runner import Tally
+from morphotone.night.runner import run as run_night
+from morphotone.questions.survey import Answer, Request, answers, cell_name, content_of, headers
+from morphotone.showing.tables import csv_texts
+
+NAME = "survey"
+_LEADING = ["file", "cell"]  # columns that say whose row it is
+_TEXT = dict.fromkeys(("file", "cell", "domain", "reason", "sentence"), str)
+
+_EPILOG = """\
+what is written into RESULTS:
+  cells.csv         one row per analysed reconstruction
+  branches.csv      one row per unbranched run of cable
+  samples/          with --samples: one CSV per cell, one row per SWC sample
+  findings.csv      one row per observation about a file
+  turned_away.csv   one row per file not analysed, with the reason
+  assumptions.toml  what was assumed, whole
+  run.json          the record: versions, assumptions, counts, SHA-256 of the inputs, times
+  ledger.sqlite     what is finished: the same command again goes on from there
+
+units: um, MOhm, nS, Hz; every column is explained in the README
+
+example:
+  morphotone survey sample_morphologies --into results --hz 100
+
+exit code: 0 all analysed, 1 something was turned away (turned_away.csv says why), 2 wrong usage or unusable
+assumptions or results folder, 130 interrupted
+"""
+
+
+@dataclass(frozen=True, eq=False)
+class Survey:
+    """The tables of a survey, as read back from what it wrote.
+
+    Attributes
+    ----------
+    cells, branches, findings, turned_away : DataFrame
+        Columns as in README.
+    samples : dict of str to DataFrame
+        By file; empty unless asked for.
+    tally : Tally
+        Files found = analysed + turned away.
+    """
+
+    cells: pd.DataFrame
+    branches: pd.DataFrame
+    findings: pd.DataFrame
+    turned_away: pd.DataFrame
+    samples: dict[str, pd.DataFrame]
+    tally: Tally
+
+
+def survey(
+    folder: str | os.PathLike[str],
+    into: str | os.PathLike[str] | None = None,
+    *,
+    assumptions: Assumptions | None = None,
+    samples: bool = False,
+    keep_unfit: bool = False,
+    patterns: Sequence[str] = PATTERNS,
+    workers: int = 1,
+    strict: bool = False,
+) -> Survey:
+    """Survey a folder of reconstructions.
+
+    Parameters
+    ----------
+    folder : path
+        Searched at any depth.
+    into : path, optional
+        Results folder; without one nothing is kept on disk.
+    assumptions : Assumptions, optional
+        The defaults unless given; their frequencies are cases besides 0 Hz.
+    samples : bool
+        Give the tables by sample too.
+    keep_unfit : bool
+        Analyse files of grade unfit too, flagged.
+    patterns : sequence of str
+        Which file names count.
+    workers : int
+        Number of processes.
+    strict : bool
+        Stop at the first file turned away.
+
+    Raises
+    ------
+    MorphotoneError
+        The folder holds no such file; or in strict mode, the first file turned away.
+    ResultsError
+        The results folder belongs to another run or cannot be written to.
+    """
+    request = Request(assumptions or Assumptions(), keep_unfit, samples)
+    with ExitStack() as stack:
+        target = Path(into if into is not None else stack.enter_context(TemporaryDirectory()))
+        tally = write_survey(
+            folder, target, request, patterns=patterns, workers=workers, strict=strict, progress=None
+        )
+        return read_survey(target, tally)
+
+
+def write_survey(
+    folder: str | os.PathLike[str],
+    into: Path,
+    request: Request,
+    *,
+    patterns: Sequence[str],
+    workers: int,
+    strict: bool,
+    progress: Progress | None,
+) -> Tally:
+    """Survey a folder and write the tables; parameters and errors as for `survey`."""
+    started = datetime.now(UTC)
+    found = find_files(folder, patterns, exclude=into)
+    names = [file.name for file in found]
+    columns = {table: ",".join(_LEADING + rest) for table, rest in headers(request).items()}
+    by_sample = columns.pop("samples", None)
+    with Ledger(into, _fingerprint(request)) as ledger:
+        tally = run_night(
+            found,
+            partial(outcomes, request=request),
+            ledger=ledger,
+            progress=progress,
+            workers=workers,
+            strict=strict,
+        )
+        export(ledger, names, {**columns, TURNED_AWAY: TURNED_AWAY_HEADER})
+        if by_sample is not None:
+            export_each(ledger, names, "samples", by_sample)
+        with atomic(into / "assumptions.toml") as stream:
+            stream.write(request.assumptions.to_toml())
+        details = {
+            "folder": str(folder),
+            "patterns": list(patterns),
+            **_fingerprint(request),
+            "warnings": list(request.assumptions.warnings),
+        }
+        record = run_record(started=started, tally=tally, ledger=ledger, names=names, details=details)
+        write_record(into / "run.json", record)
+    return tally
+
+
+def outcomes(items: list[Item], request: Request) -> list[Outcome]:
+    """Work on a batch of the night's items; a file whose bytes are known is left as it is."""
+    contents = {item.name: content_of(item.path, item.name) for item in items}
+    unchanged = {item.name for item in items if _is_known(contents[item.name], item.known_sha256)}
+    given = answers([(name, content) for name, content in contents.items() if name not in unchanged], request)
+    parts = _parts(given)
+    worked = {answer.name: _outcome(answer, parts[answer.name]) for answer in given}
+    return [
+        Outcome(item.name, "unchanged", sha256=item.known_sha256 or "")
+        if item.name in unchanged
+        else worked[item.name]
+        for item in items
+    ]
+
+
+def _is_known(content: bytes | ReadingError, sha256: str | None) -> bool:
+    return sha256 is not None and isinstance(content, bytes) and hashlib.sha256(content).hexdigest() == sha256
+
+
+def _parts(given: Sequence[Answer]) -> dict[str, dict[str, str]]:
+    """Return per file its CSV lines for each table."""
+    parts: dict[str, dict[str, str]] = {answer.name: {} for answer in given}
+    analysed = [answer for answer in given if answer.cell is not None]
+    tables: dict[str, list[tuple[Answer, pd.DataFrame | None]]] = {
+        "cells": [(answer, pd.DataFrame([answer.cell])) for answer in analysed],
+        "branches": [(answer, answer.branches) for answer in analysed],
+        "samples": [(answer, answer.by_sample) for answer in analysed],
+        "findings": [(answer, answer.findings) for answer in given],
+    }
+    for table, pairs in tables.items():
+        frames = [(answer.name, frame) for answer, frame in pairs if frame is not None and len(frame)]
+        texts = csv_texts([frame for _, frame in frames], [[name, cell_name(name)] for name, _ in frames])
+        for (name, _), text in zip(frames, texts, strict=True):
+            parts[name][table] = text
+    return parts
+
+
+def _outcome(answer: Answer, parts: dict[str, str]) -> Outcome:
+    status: Status = "turned away" if answer.reason else "analysed"
+    return Outcome(answer.name, status, answer.sha256, answer.samples, parts, answer.reason, answer.sentence)
+
+
+def _fingerprint(request: Request) -> dict[str, Any]:
+    """Return all that the tables depend on besides the files."""
+    return {
+        "morphotone": version("morphotone"),
+        "keep_unfit": request.keep_unfit,
+        "samples": request.samples,
+        "assumptions": request.assumptions.to_dict(),
+    }
+
+
+def read_survey(folder: Path, tally: Tally) -> Survey:
+    """Read back the tables that a survey wrote."""
+    tables = {path.stem: _read_csv(path) for path in folder.glob("*.csv")}
+    samples = {}
+    for path in sorted((folder / "samples").rglob("*.csv")):
+        table = _read_csv(path)
+        samples[str(table["file"].iloc[0])] = table
+    return Survey(**tables, samples=samples, tally=tally)
+
+
+def _read_csv(path: Path) -> pd.DataFrame:
+    """Read a table back with equal numbers, and with names that look like missing values left alone."""
+    return pd.read_csv(path, float_precision="round_trip", keep_default_na=False, na_values=[""], dtype=_TEXT)
+
+
+def add_arguments(parser: argparse.ArgumentParser) -> None:
+    """Add the command's arguments to its parser."""
+    parser.formatter_class = argparse.RawDescriptionHelpFormatter
+    parser.epilog = _EPILOG
+    parser.add_argument("folder", metavar="FOLDER", type=Path, help="searched at any depth")
+    parser.add_argument("--into", metavar="RESULTS", type=Path, required=True, help="results folder")
+    add_assumption_options(parser)
+    parser.add_argument(
+        "--hz",
+        metavar="HZ",
+        type=float,
+        nargs="+",
+        help="frequencies besides 0 Hz, in Hz; overrides the assumptions file",
+    )
+    parser.add_argument("--samples", action="store_true", help="write one CSV per cell with a row per sample")
+    parser.add_argument("--keep-unfit", action="store_true", help="analyse files of grade unfit too, flagged")
+    parser.add_argument(
+        "--pattern",
+        metavar="GLOB",
+        nargs="+",
+        default=list(PATTERNS),
+        help="names of the files to take (default: %(default)s; upper and lower case alike)",
+    )
+    parser.add_argument(
+        "--workers", metavar="N", type=int, default=0, help="processes (default: one per processor)"
+    )
+    parser.add_argument("--strict", action="store_true", help="stop at the first file turned away")
+
+
+def run(args: argparse.Namespace) -> int:
+    """Run the survey, say how it went, and return the exit code."""
+    tally = write_survey(
+        args.folder,
+        args.into,
+        Request(assumptions_of(args), args.keep_unfit, args.samples),
+        patterns=args.pattern,
+        workers=args.workers if args.workers > 0 else joblib.cpu_count(),
+        strict=args.strict,
+        progress=progress_on(sys.stderr),
+    )
+    again = f" ({tally.unchanged} of them unchanged since an earlier run)" if tally.unchanged else ""
+    print(
+        f"{tally.found} files found = {tally.analysed} analysed + {tally.turned_away} turned away{again}\n"
+        f"results: {args.into}"
+    )
+    if tally.turned_away:
+        print(f"why files were turned away: {args.into / 'turned_away.csv'}")
+    return 1 if tally.turned_away else 0

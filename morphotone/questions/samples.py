@@ -1,0 +1,65 @@
+"""One row per sample of a cell: where it is, and how it is coupled to the soma."""
+
+from typing import Any
+
+import numpy as np
+import pandas as pd
+
+from morphotone.cable.electrotonus import Electrotonus
+from morphotone.questions.branches import Branches
+from morphotone.questions.suffix import case_suffixes
+from morphotone.reading.reconstruction import Reconstruction, domain_name
+
+
+def sample_table(rec: Reconstruction, electrotonus: Electrotonus, branches: Branches) -> pd.DataFrame:
+    """Return one row per sample in file order; columns as in README's table of ``samples/``.
+
+    Samples that are not analysed have empty cells after their diameter.
+
+    Parameters
+    ----------
+    rec : Reconstruction
+        As analysed.
+    electrotonus : Electrotonus
+        By node, its first case at 0 Hz.
+    branches : Branches
+        Of the same nodes.
+    """
+    cable, by_sample = electrotonus.cable, electrotonus.by_sample()
+    traced, node = cable.traced, cable.node
+    left_out = node < 0
+    straight = cable.straight[node]
+    straight[left_out] = np.nan
+    names = {kind: domain_name(kind) for kind in np.unique(rec.kind).tolist()}
+    number = pd.array(branches.of_node[node] + 1, dtype="Int64")
+    number[left_out | (branches.of_node[node] < 0)] = pd.NA
+    order = pd.array(np.append(branches.order, 0)[branches.of_node[node]], dtype="Int64")
+    order[left_out] = pd.NA
+    columns: dict[str, Any] = {
+        "sample": rec.number,
+        "domain": [names[kind] for kind in rec.kind.tolist()],
+        "diameter_um": 2.0 * traced.radius,
+        "branch": number,
+        "order": order,
+        "path_um": by_sample.path_um[:, 0],
+        "straight_um": straight,
+        "lambda_um": by_sample.lambda_um[:, 0],
+        "X": by_sample.X[:, 0],
+    }
+    for case, suffix in enumerate(case_suffixes(electrotonus)):
+        to_soma, from_soma = (
+            by_sample.log_attenuation_to_soma[:, case],
+            by_sample.log_attenuation_from_soma[:, case],
+        )
+        columns |= {
+            f"R_in_MOhm{suffix}": by_sample.R_in_MOhm[:, case],
+            f"R_transfer_MOhm{suffix}": by_sample.R_transfer_MOhm[:, case],
+            f"attenuation_to_soma{suffix}": np.exp(to_soma),
+            f"attenuation_from_soma{suffix}": np.exp(from_soma),
+            f"log_attenuation_to_soma{suffix}": to_soma,
+            f"log_attenuation_from_soma{suffix}": from_soma,
+        }
+        if not suffix:
+            columns["charge_to_soma"] = np.exp(-from_soma)
+    table = pd.DataFrame(columns)
+    return table.iloc[np.argsort(rec.line, kind="stable")]

@@ -1,0 +1,13 @@
+"""How a frequency is written in a column's name."""
+
+from morphotone.cable.electrotonus import Electrotonus
+
+
+def hz_suffix(hz: float) -> str:
+    """Return "" at 0 Hz, else such as "_100Hz"."""
+    return f"_{hz:.12g}Hz" if hz else ""
+
+
+def case_suffixes(electrotonus: Electrotonus) -> list[str]:
+    """Return the suffix of each case."""
+    return [hz_suffix(case.hz) for case in electrotonus.cases]

@@ -1,0 +1,173 @@
+"""A batch of files to the tables they give: read, vet, build, solve as one forest, tabulate."""
+
+import hashlib
+import re
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pandas as pd
+
+from morphotone.cable.assumptions import Assumptions
+from morphotone.cable.electrotonus import Electrotonus, build_cases, cases_of, solve_cables
+from morphotone.cable.tree import Cable
+from morphotone.errors import ReadingError
+from morphotone.questions.branches import branch_table, branches_of
+from morphotone.questions.cells import cell_row
+from morphotone.questions.samples import sample_table
+from morphotone.questions.trust import findings_table, unfit_sentence
+from morphotone.reading.reconstruction import Reconstruction, reconstruct
+from morphotone.reading.repair import mend_radii
+from morphotone.reading.swc import read_bytes
+from morphotone.reading.vetting import Vetting, grade_of, vet_reconstruction
+
+_ENDING = re.compile(r"\.swc(\.gz)?\Z", re.IGNORECASE)
+# The least that has every column: from it the headers of tables without rows are known.
+_SPECIMEN = b"1 1 0 0 0 5 -1\n2 3 50 0 0 1 1\n"
+
+
+@dataclass(frozen=True)
+class Request:
+    """What is asked of every file.
+
+    Attributes
+    ----------
+    assumptions : Assumptions
+        One choice; its frequencies are cases besides 0 Hz.
+    keep_unfit : bool
+        Analyse files of grade unfit too, flagged, instead of turning them away.
+    samples : bool
+        Give the table by sample too.
+    """
+
+    assumptions: Assumptions
+    keep_unfit: bool = False
+    samples: bool = False
+
+
+@dataclass(frozen=True, eq=False)
+class Answer:
+    """What one file gave.
+
+    Attributes
+    ----------
+    name : str
+        The file's, as asked.
+    sha256 : str
+        Of its bytes; empty if they could not be read.
+    samples : int
+        How many samples it holds; 0 if it is no reconstruction.
+    findings : DataFrame
+        One row per finding.
+    cell : dict or None
+        The row of the cells table; None if the file was turned away.
+    branches, by_sample : DataFrame or None
+        The cell's own tables; the second only on request.
+    reason, sentence : str
+        Why it was turned away; empty if it was not.
+    """
+
+    name: str
+    sha256: str
+    samples: int
+    findings: pd.DataFrame
+    cell: dict[str, Any] | None = None
+    branches: pd.DataFrame | None = None
+    by_sample: pd.DataFrame | None = None
+    reason: str = ""
+    sentence: str = ""
+
+
+@dataclass(frozen=True, eq=False)
+class _Read:
+    """A file that will be solved."""
+
+    name: str
+    rec: Reconstruction
+    vetting: Vetting
+    cables: tuple[Cable, ...]
+
+
+def cell_name(name: str) -> str:
+    """Return the cell's name: the file's path below the folder without its ending."""
+    return _ENDING.sub("", name)
+
+
+def answers(files: Sequence[tuple[str, bytes | ReadingError]], request: Request) -> list[Answer]:
+    """Analyse files together; one that fails costs nobody else anything.
+
+    Parameters
+    ----------
+    files : sequence of (str, bytes or ReadingError)
+        Name and content of each, or why it could not be opened.
+    request : Request
+        What is asked.
+
+    Returns
+    -------
+    list of Answer
+        One per file, in the same order; each is the same whatever files it is in company with.
+    """
+    prepared = [_prepare(name, content, request) for name, content in files]
+    ready = [each for each in prepared if isinstance(each, _Read)]
+    # Absurd files (kept although unfit) may overflow; their infinities stand in the table for what they are.
+    with np.errstate(over="ignore", under="ignore", divide="ignore", invalid="ignore"):
+        solved = iter(solve_cables([each.cables for each in ready], cases_of([request.assumptions])))
+        return [
+            _tabulated(each, next(solved), request) if isinstance(each, _Read) else each for each in prepared
+        ]
+
+
+def content_of(path: Path, name: str) -> bytes | ReadingError:
+    """Return a file's bytes, or the error that says why they cannot be had."""
+    try:
+        return read_bytes(path, name=name)
+    except ReadingError as error:
+        return error
+
+
+def headers(request: Request) -> dict[str, list[str]]:
+    """Return the columns of the tables that `answers` gives to a request, without the leading names."""
+    (answer,) = answers([("specimen", _SPECIMEN)], replace(request, keep_unfit=True))
+    tables = {"branches": answer.branches, "samples": answer.by_sample, "findings": answer.findings}
+    columns = {name: list(table.columns) for name, table in tables.items() if table is not None}
+    return {"cells": list(answer.cell or {}), **columns}
+
+
+def _prepare(name: str, content: bytes | ReadingError, request: Request) -> _Read | Answer:
+    """Read, vet, mend and build; an Answer means that the file is turned away."""
+    assumptions = request.assumptions
+    nothing = findings_table((), "")
+    if isinstance(content, ReadingError):
+        return Answer(name, "", 0, nothing, reason=content.reason, sentence=str(content))
+    sha256 = hashlib.sha256(content).hexdigest()
+    try:
+        rec = reconstruct(content, file=name, cell=cell_name(name), unit_um=assumptions.unit_um)
+    except ReadingError as error:
+        return Answer(name, sha256, 0, nothing, reason=error.reason, sentence=str(error))
+    vetting = vet_reconstruction(rec, assumptions.thresholds)
+    try:
+        if vetting.grade == "unfit" and not request.keep_unfit:
+            raise ReadingError(unfit_sentence(name, vetting), "unfit")
+        mended = mend_radii(rec, assumptions.thresholds)
+        findings = vetting.findings + mended.findings[len(rec.findings) :]
+        vetting = Vetting(findings, grade_of(findings))
+        return _Read(name, mended, vetting, build_cases(mended, [assumptions]))
+    except ReadingError as error:
+        table = findings_table(vetting.findings, vetting.grade)
+        return Answer(name, sha256, len(rec.number), table, reason=error.reason, sentence=str(error))
+
+
+def _tabulated(read: _Read, electrotonus: Electrotonus, request: Request) -> Answer:
+    branches = branches_of(electrotonus.cable.parent)
+    return Answer(
+        name=read.name,
+        sha256=read.rec.sha256,
+        samples=len(read.rec.number),
+        findings=findings_table(read.vetting.findings, read.vetting.grade),
+        cell=cell_row(read.rec, read.vetting, electrotonus, branches),
+        branches=branch_table(read.rec, electrotonus, branches),
+        by_sample=sample_table(read.rec, electrotonus, branches) if request.samples else None,
+    )
