@@ -137,6 +137,20 @@ def lateral_area(r1, r2, h):
     return mp.pi * (r1 + r2) * mp.sqrt(h**2 + (r1 - r2) ** 2)
 
 
+def soma_group(samples):
+    """Return the type-1 samples connected to the first of them, in file order."""
+    somatic = [s for s in samples if s.kind == SOMA]
+    group = {somatic[0].number}
+    grown = True
+    while grown:
+        joined = {s.number for s in somatic if s.parent in group} | {
+            s.parent for s in somatic if s.number in group and any(p.number == s.parent for p in somatic)
+        }
+        grown = not joined <= group
+        group |= joined
+    return [s for s in somatic if s.number in group]
+
+
 def soma_of(samples, rule):
     """Return (members, area, centre, surface radius or None) of the soma lump by the rule named.
 
@@ -144,7 +158,7 @@ def soma_of(samples, rule):
     of length 2r has the same lateral area). Chain: the summed mantles of its frusta. Outline: the sphere of
     the mean distance from the centroid. THEORY section 2.
     """
-    members = [s for s in samples if s.kind == SOMA]
+    members = soma_group(samples)
     if rule in ("sphere", "three-point"):
         return members, 4 * mp.pi * members[0].r ** 2, members[0].at, None
     if rule == "chain":
@@ -195,7 +209,7 @@ def cable_of(swc, choices=Choices()):
         members, cable.soma_area, centre, surface = soma_of(samples, choices.soma_rule)
         lump = {s.number for s in members}
     by_number = {s.number: s for s in order}
-    children = Counter(s.parent for s in order)
+    children = Counter(s.parent for s in samples)  # a branch point of the file, whatever is left out
     along_axon = {}
     last = 0
     for s in order:
