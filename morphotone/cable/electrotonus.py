@@ -2,12 +2,13 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass, fields, replace
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions, Membrane
-from morphotone.cable.forest import Case, Forest, Solved
+from morphotone.cable.forest import Column, Forest, Solved
 from morphotone.cable.frustum import Values
 from morphotone.cable.tree import Cable, build
 from morphotone.errors import AssumptionError
@@ -17,6 +18,13 @@ Real = NDArray[np.float64]
 
 
 DEFAULTS = Assumptions()
+
+
+class Case(NamedTuple):
+    """One choice of assumptions and frequency (Hz)."""
+
+    assumptions: Assumptions
+    hz: float
 
 
 @dataclass(frozen=True, eq=False)
@@ -155,16 +163,29 @@ def solve_cables(cells: Sequence[Sequence[Cable]], cases: Sequence[Case]) -> lis
     """
     if not cells:
         return []
-    forest = Forest(cells, cases)
-    at_rest = [column for column, case in enumerate(cases) if case.hz == 0.0]
-    moving = [column for column, case in enumerate(cases) if case.hz != 0.0]
-    solved = forest.solved(at_rest)
-    if moving:
-        others = forest.solved(moving)
+    many, which = _distinct(cases)
+    forest = Forest(cells, many)
+    columns = [Column(one, 2j * np.pi * case.hz) for one, case in zip(which, cases, strict=True)]
+    at_rest = [i for i, case in enumerate(cases) if case.hz == 0.0]
+    moving = [i for i, case in enumerate(cases) if case.hz != 0.0]
+    solved = forest.solved([columns[i] for i in at_rest])
+    if moving:  # apart from those at rest, which need real arithmetic only
+        others = forest.solved([columns[i] for i in moving])
         back = np.argsort(at_rest + moving)
         solved = Solved(*(np.concatenate(pair, axis=1)[:, back] for pair in zip(solved, others, strict=True)))
-    columns = (*solved, *forest.distances())
-    per_cell = zip(*(forest.by_cell(values) for values in columns), strict=True)
+    values_of_all = (*solved, *(values[:, which] for values in forest.distances()))
+    per_cell = zip(*(forest.by_cell(values) for values in values_of_all), strict=True)
     return [
         Electrotonus(cables[0], tuple(cases), *values) for cables, values in zip(cells, per_cell, strict=True)
     ]
+
+
+def _distinct(cases: Sequence[Case]) -> tuple[list[Assumptions], list[int]]:
+    """Return the assumptions in order of appearance, and for each case which of them it has."""
+    many: list[Assumptions] = []
+    which = []
+    for case in cases:
+        if not many or case.assumptions is not many[-1]:
+            many.append(case.assumptions)
+        which.append(len(many) - 1)
+    return many, which

@@ -22,15 +22,15 @@ Index = NDArray[np.int64]
 Real = NDArray[np.float64]
 
 
-class Case(NamedTuple):
-    """One choice of assumptions and frequency (Hz)."""
+class Column(NamedTuple):
+    """One case as the engine has it: which assumptions, and the complex frequency s (1/s)."""
 
-    assumptions: Assumptions
-    hz: float
+    which: int
+    s: complex
 
 
 class Solved(NamedTuple):
-    """By place, one column per case: impedances in MΩ, natural logarithms of the attenuations."""
+    """By place, one column per case asked: impedances in MΩ, natural logarithms of the attenuations."""
 
     Z_in: Values
     Z_transfer: Values
@@ -60,18 +60,18 @@ def membrane_of(kind: Index, assumptions: Assumptions) -> Membrane:
 
 
 class Forest:
-    """Cells and cases, ready to be solved; arrays are by place in the order of elimination.
+    """Many cells under several assumptions, ready to be solved; arrays are by place in order of elimination.
 
     Parameters
     ----------
     cells : sequence of sequence of Cable
         Per cell one cable per assumptions object, all with the same nodes.
-    cases : sequence of Case
-        The columns; all cases of one assumptions object stand together.
+    many : sequence of Assumptions
+        The assumptions; their frequencies are not used here.
     """
 
-    def __init__(self, cells: Sequence[Sequence[Cable]], cases: Sequence[Case]) -> None:
-        self.cells, self.cases = cells, tuple(cases)
+    def __init__(self, cells: Sequence[Sequence[Cable]], many: Sequence[Assumptions]) -> None:
+        self.cells, self.many = cells, tuple(many)
         sizes = [len(cables[0].parent) for cables in cells]
         self.offsets = np.concatenate(([0], np.cumsum(sizes)))
         parent = np.concatenate(
@@ -87,7 +87,6 @@ class Forest:
         # One column of geometry where all assumptions agree on it, else one per assumptions object.
         alike = all(cable is cables[0] for cables in cells for cable in cables)
         columns = 1 if alike else len(cells[0])
-        self.assumptions_of = _assumptions_of_cases(self.cases)
         self.r_start, self.r_end, self.length = (
             np.concatenate(
                 [np.stack([getattr(cable, name) for cable in cables[:columns]], axis=1) for cables in cells]
@@ -99,28 +98,29 @@ class Forest:
         )
         self.has_soma = np.array([len(cables[0].traced.soma.members) > 0 for cables in cells])
 
-    def constants(self, columns: Sequence[int], code: Index | None = None) -> tuple[Values, Values]:
+    def constants(self, columns: Sequence[Column], code: Index | None = None) -> tuple[Values, Values]:
         """Return R_i (ohm cm) and g(s) = F·(1/R_m + s·C_m) (S/cm2), shape (1 or n, columns).
 
-        By place, or for the type codes given.
+        By place, or for the type codes given; real where no s has an imaginary part.
         """
         kind = self.kind if code is None else code
-        per_case = [membrane_of(kind, self.cases[column].assumptions) for column in columns]
+        per_column = [membrane_of(kind, self.many[column.which]) for column in columns]
         R_i, leak, capacity = (
-            np.stack(np.broadcast_arrays(*values), axis=1) for values in zip(*per_case, strict=True)
+            np.stack(np.broadcast_arrays(*values), axis=1) for values in zip(*per_column, strict=True)
         )
-        omega = 2.0 * np.pi * np.array([self.cases[column].hz for column in columns])
-        return R_i, leak + 1j * omega * capacity if omega.any() else leak
+        s = np.array([column.s for column in columns])
+        s = s if np.iscomplex(s).any() else s.real
+        return R_i, leak + s * capacity if s.any() else leak
 
-    def geometry(self, columns: Sequence[int]) -> tuple[Real, Real, Real]:
+    def geometry(self, columns: Sequence[Column]) -> tuple[Real, Real, Real]:
         """Return r_start, r_end, length, each (n, 1) or (n, columns)."""
         if self.r_start.shape[1] == 1:
             return self.r_start, self.r_end, self.length
-        which = [self.assumptions_of[column] for column in columns]
+        which = [column.which for column in columns]
         return self.r_start[:, which], self.r_end[:, which], self.length[:, which]
 
-    def solved(self, columns: Sequence[int]) -> Solved:
-        """Return impedances and log-attenuations of some cases, all at 0 Hz or none.
+    def solved(self, columns: Sequence[Column]) -> Solved:
+        """Return impedances and log-attenuations, in real arithmetic if every s is real.
 
         Z_in = 1/(admittance away + admittance toward the soma).  Over one frustum V_parent/V =
         1 + (shunt + away)/axial for current at the soma, and V/V_parent = 1 + (shunt + beyond)/axial
@@ -142,15 +142,12 @@ class Forest:
         at_soma = z_in[self._root_of_place()]
         return Solved(z_in, at_soma * np.exp(-log_from), log_to, log_from.real)
 
-    def load(self, columns: Sequence[int], dtype: np.dtype[np.generic]) -> Values:
+    def load(self, columns: Sequence[Column], dtype: np.dtype[np.generic]) -> Values:
         """Return the soma's membrane and shunt at the roots, µS, by place; 0 elsewhere."""
         _, g = self.constants(columns, np.full(1, SOMA))
-        area = (
-            self.soma_area
-            if self.soma_area.shape[1] == 1
-            else self.soma_area[:, [self.assumptions_of[c] for c in columns]]
-        )
-        shunt = np.array([self.cases[column].assumptions.soma_shunt_nS for column in columns])
+        which = [column.which for column in columns]
+        area = self.soma_area if self.soma_area.shape[1] == 1 else self.soma_area[:, which]
+        shunt = np.array([self.many[column.which].soma_shunt_nS for column in columns])
         load = np.zeros((len(self.kind), len(columns)), dtype)
         load[self.at_root] = MICROSIEMENS_PER_S_CM2_UM2 * area * g + np.where(
             self.has_soma[:, None], MICROSIEMENS_PER_NANOSIEMENS * shunt, 0.0
@@ -158,22 +155,21 @@ class Forest:
         return load
 
     def distances(self) -> tuple[Real, Real, Real]:
-        """Return path distance (µm), X and λ (µm; NaN at a soma), by place and case.
+        """Return path distance (µm), X and λ (µm; NaN at a soma), by place and assumptions.
 
         λ = sqrt((R_m/R_i)(d/4)) with the local diameter d.
         """
-        first = [self.assumptions_of.index(which) for which in range(self.assumptions_of[-1] + 1)]
-        r_start, r_end, length = self.geometry(first)
-        R_i, leak = self.constants(first)
+        columns = [Column(which, 0.0) for which in range(len(self.many))]
+        r_start, r_end, length = self.geometry(columns)
+        R_i, leak = self.constants(columns)
         x = electrotonic_lengths(r_start, r_end, length, R_i, leak)
         sums = path_sums(self.plan, np.concatenate((length + np.zeros_like(x), x), axis=1))
-        lambdas = np.sqrt(UM_PER_CM * self._local_radius(first) / (2.0 * R_i * leak))
-        path, x = sums[:, : len(first)], sums[:, len(first) :]
-        return path[:, self.assumptions_of], x[:, self.assumptions_of], lambdas[:, self.assumptions_of]
+        lambdas = np.sqrt(UM_PER_CM * self._local_radius() / (2.0 * R_i * leak))
+        return sums[:, : len(columns)], sums[:, len(columns) :], lambdas
 
-    def _local_radius(self, columns: Sequence[int]) -> Real:
+    def _local_radius(self) -> Real:
         """Return the radius at the end of each frustum, at root samples their own, at somata NaN, µm."""
-        radius = self.geometry(columns)[1].copy()
+        radius = self.r_end.copy()
         roots = [[cable.traced.radius[cable.traced.root] for cable in cables] for cables in self.cells]
         radius[self.at_root] = np.where(self.has_soma[:, None], np.nan, np.array(roots)[:, : radius.shape[1]])
         return radius
@@ -186,17 +182,6 @@ class Forest:
         """Cut an array by place into one by node per cell."""
         by_node = values[self.plan.place]
         return [by_node[first:last] for first, last in zip(self.offsets[:-1], self.offsets[1:], strict=True)]
-
-
-def _assumptions_of_cases(cases: Sequence[Case]) -> list[int]:
-    """Return which assumptions object, in order of appearance, each case has."""
-    seen: list[Assumptions] = []
-    which = []
-    for case in cases:
-        if not seen or case.assumptions is not seen[-1]:
-            seen.append(case.assumptions)
-        which.append(len(seen) - 1)
-    return which
 
 
 def _frusta_only(first_root: int, geometry: tuple[Real, Real, Real], R_i: Values, g: Values) -> Pi:
