@@ -81,7 +81,7 @@ class Assumptions:
     soma_rule : str
         One of ``SOMA_RULES``.
     soma_shunt_nS : float
-        Leak at the soma beside its membrane's, nS, 0 or more.
+        Leak at the soma, or without one at the root sample, beside the membrane's, nS, 0 or more.
     axon : str
         ``"kept"``, ``"left out"`` or ``"cut"``.
     axon_cut_um : float or None

@@ -22,6 +22,12 @@ Index = NDArray[np.int64]
 Real = NDArray[np.float64]
 
 
+# A frustum longer than this many λ is cut before it is solved: at 10 kHz λ is some 35 times shorter, and
+# across 700 λ the axial admittance, and with it every trace of the far end, is too small for a double.
+_LONGEST = 8.0
+_MOST_PIECES = 100_000  # the double of a length without meaning still gets an end
+
+
 class Column(NamedTuple):
     """One case as the engine has it: which assumptions, and the complex frequency s (1/s)."""
 
@@ -72,31 +78,17 @@ class Forest:
 
     def __init__(self, cells: Sequence[Sequence[Cable]], many: Sequence[Assumptions]) -> None:
         self.cells, self.many = cells, tuple(many)
-        sizes = [len(cables[0].parent) for cables in cells]
-        self.offsets = np.concatenate(([0], np.cumsum(sizes)))
-        parent = np.concatenate(
-            [
-                np.where(cables[0].parent < 0, -1, cables[0].parent + offset)
-                for cables, offset in zip(cells, self.offsets, strict=False)
-            ]
-        )
-        self.plan = schedule(parent)
-        self.at_root = self.plan.place[self.offsets[:-1]]
+        frusta = _frusta_of(cells, self.many)
+        self.plan = schedule(frusta.parent)
         order = self.plan.order
-        self.kind = np.concatenate([cables[0].kind for cables in cells])[order]
-        # One column of geometry where all assumptions agree on it, else one per assumptions object.
-        alike = all(cable is cables[0] for cables in cells for cable in cables)
-        columns = 1 if alike else len(cells[0])
+        self.kind = frusta.kind[order]
         self.r_start, self.r_end, self.length = (
-            np.concatenate(
-                [np.stack([getattr(cable, name) for cable in cables[:columns]], axis=1) for cables in cells]
-            )[order]
-            for name in ("r_start", "r_end", "length")
+            values[order] for values in (frusta.r_start, frusta.r_end, frusta.length)
         )
-        self.soma_area = np.array(
-            [[cable.traced.soma.area for cable in cables[:columns]] for cables in cells]
-        )
-        self.has_soma = np.array([len(cables[0].traced.soma.members) > 0 for cables in cells])
+        sizes = [len(cables[0].parent) for cables in cells]
+        self.nodes = np.split(self.plan.place[frusta.ends], np.cumsum(sizes)[:-1])  # places, by cell
+        self.at_root = np.array([places[0] for places in self.nodes])
+        self.soma_area = np.array([[cable.traced.soma.area for cable in cables] for cables in cells])
 
     def constants(self, columns: Sequence[Column], code: Index | None = None) -> tuple[Values, Values]:
         """Return R_i (ohm cm) and g(s) = F·(1/R_m + s·C_m) (S/cm2), shape (1 or n, columns).
@@ -143,15 +135,13 @@ class Forest:
         return Solved(z_in, at_soma * np.exp(-log_from), log_to, log_from.real)
 
     def load(self, columns: Sequence[Column], dtype: np.dtype[np.generic]) -> Values:
-        """Return the soma's membrane and shunt at the roots, µS, by place; 0 elsewhere."""
+        """Return the soma's membrane and the shunt at the roots, µS, by place; 0 elsewhere."""
         _, g = self.constants(columns, np.full(1, SOMA))
         which = [column.which for column in columns]
-        area = self.soma_area if self.soma_area.shape[1] == 1 else self.soma_area[:, which]
         shunt = np.array([self.many[column.which].soma_shunt_nS for column in columns])
         load = np.zeros((len(self.kind), len(columns)), dtype)
-        load[self.at_root] = MICROSIEMENS_PER_S_CM2_UM2 * area * g + np.where(
-            self.has_soma[:, None], MICROSIEMENS_PER_NANOSIEMENS * shunt, 0.0
-        )
+        membrane = MICROSIEMENS_PER_S_CM2_UM2 * self.soma_area[:, which] * g
+        load[self.at_root] = membrane + MICROSIEMENS_PER_NANOSIEMENS * shunt
         return load
 
     def distances(self) -> tuple[Real, Real, Real]:
@@ -170,18 +160,84 @@ class Forest:
     def _local_radius(self) -> Real:
         """Return the radius at the end of each frustum, at root samples their own, at somata NaN, µm."""
         radius = self.r_end.copy()
-        roots = [[cable.traced.radius[cable.traced.root] for cable in cables] for cables in self.cells]
-        radius[self.at_root] = np.where(self.has_soma[:, None], np.nan, np.array(roots)[:, : radius.shape[1]])
+        for place, cables in zip(self.at_root, self.cells, strict=True):
+            traced = cables[0].traced
+            radius[place] = np.nan if len(traced.soma.members) else traced.radius[traced.root]
         return radius
 
     def _root_of_place(self) -> Index:
-        cell = np.repeat(self.at_root, np.diff(self.offsets))
-        return cell[self.plan.order]
+        """Return for each place the place of its root."""
+        root = np.arange(len(self.kind))
+        for step in reversed(self.plan.steps):
+            root[step.first : step.last] = root[step.parent]
+        return root
 
     def by_cell(self, values: NDArray[Any]) -> list[NDArray[Any]]:
         """Cut an array by place into one by node per cell."""
-        by_node = values[self.plan.place]
-        return [by_node[first:last] for first, last in zip(self.offsets[:-1], self.offsets[1:], strict=True)]
+        return [values[places] for places in self.nodes]
+
+
+class _Frusta(NamedTuple):
+    """The frusta of a forest in the order of the cells' nodes.
+
+    Geometry has shape (n, 1), or (n, assumptions) where it differs between assumptions.
+    """
+
+    parent: Index
+    kind: Index
+    r_start: Real
+    r_end: Real
+    length: Real
+    ends: Index  # where each node of the cells stands, one cell after the other
+
+
+def _frusta_of(cells: Sequence[Sequence[Cable]], many: Sequence[Assumptions]) -> _Frusta:
+    """Return the frusta of many cells one after the other, those too long for double precision cut."""
+    first = [cables[0] for cables in cells]
+    offsets = np.cumsum([0, *(len(cable.parent) for cable in first)])
+    parent = np.concatenate(
+        [np.where(c.parent < 0, -1, c.parent + offset) for c, offset in zip(first, offsets, strict=False)]
+    )
+    alike = all(cable is cables[0] for cables in cells for cable in cables)
+    columns = 1 if alike else len(many)
+    r_start, r_end, length = (
+        np.concatenate([np.stack([getattr(c, name) for c in cables[:columns]], axis=1) for cables in cells])
+        for name in ("r_start", "r_end", "length")
+    )
+    kind = np.concatenate([cable.kind for cable in first])
+    whole = _Frusta(parent, kind, r_start, r_end, length, np.arange(len(parent)))
+    R_i, leak = (
+        np.stack(np.broadcast_arrays(*values), axis=1)
+        for values in list(zip(*(membrane_of(kind, one) for one in many), strict=True))[:2]
+    )
+    pieces = np.ceil(electrotonic_lengths(r_start, r_end, length, R_i, leak).max(axis=1) / _LONGEST)
+    return _cut(whole, np.clip(pieces, 1, _MOST_PIECES).astype(np.int64)) if (pieces > 1).any() else whole
+
+
+def _cut(frusta: _Frusta, pieces: Index) -> _Frusta:
+    """Cut each frustum into pieces of equal L, which changes nothing else.
+
+    Along a linear taper L grows with the square root of the radius.
+    """
+    ends = np.cumsum(pieces) - 1
+    of = np.repeat(np.arange(len(pieces)), pieces)
+    begin, finish = (
+        ((np.arange(len(of)) - (ends - pieces + 1)[of] + step) / pieces[of])[:, None] for step in (0, 1)
+    )
+    root_start, root_end = np.sqrt(frusta.r_start)[of], np.sqrt(frusta.r_end)[of]
+    root_begin, root_finish = ((1.0 - part) * root_start + part * root_end for part in (begin, finish))
+    share = (finish - begin) * (root_begin + root_finish) / (root_start + root_end)
+    parent = np.arange(-1, len(of) - 1)
+    heads = ends - pieces + 1
+    parent[heads] = np.where(frusta.parent < 0, -1, ends[frusta.parent])
+    return _Frusta(
+        parent,
+        frusta.kind[of],
+        np.where(begin == 0.0, frusta.r_start[of], root_begin**2),
+        np.where(finish == 1.0, frusta.r_end[of], root_finish**2),
+        frusta.length[of] * share,
+        ends,
+    )
 
 
 def _frusta_only(first_root: int, geometry: tuple[Real, Real, Real], R_i: Values, g: Values) -> Pi:

@@ -138,7 +138,7 @@ LAYOUT = (
         "shunt_nS",
         "soma_shunt_nS",
         Number("nS", least=0.0, example=5.0),
-        "leak at the soma beside its membrane's, such as an electrode's, nS",
+        "leak at the soma (or root sample) beside its membrane's, such as an electrode's, nS",
         "an undamaged soma",
     ),
     Setting(

@@ -189,8 +189,8 @@ CATALOGUE: dict[str, Kind] = {
         title="no soma",
         effect="Attenuation and X count from the root sample, and R_in lacks the soma's membrane.",
         explanation=(
-            "No sample has type 1. The first root stands for the soma as the reference site and no "
-            "membrane is added. If the soma was drawn but typed otherwise, set its type to 1."
+            "No sample has type 1. The root of the longest piece stands for the soma as the reference site, "
+            "and no membrane is added. If the soma was drawn but typed otherwise, set its type to 1."
         ),
     ),
     "soma_not_root": Kind(
