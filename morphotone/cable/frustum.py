@@ -67,12 +67,15 @@ class Shape(NamedTuple):
         return -np.where(self.ratio < 0.5, np.log(self.ratio), np.log1p(-self.taper))
 
 
-# How many coefficients reach 1e-17 of the sum while taper and |Θ²| stay below the two bounds.
-# A row's class depends on that row alone, so its result does not depend on its company.
-_CLASSES = ((0.02, 1e-3, 12), (0.1, 0.03, 20), (0.25, 0.3, 34), (0.5, 1.0, 66))
-_WIDEST_TAPER, _LARGEST_THETA = 0.5, 1.0  # of a piece, the bounds of the last class
-# exp(-750) is zero in double precision: the two ends of a longer piece do not see each other.
-_MOST_PIECES = 4096
+# A row's series has as many terms as the corner of its class needs for 1e-17 of the sums (a test finds the
+# numbers again): the class is the first bound of taper and the first bound of |Θ²| that the row stays below.
+# It depends on that row alone, and so does the result.
+_TAPERS = (0.01, 0.04, 0.1, 0.2, 0.35, 0.5)
+_THETAS2 = (1e-4, 1e-2, 1.0)
+_TERMS = (8, 10, 18, 10, 12, 19, 13, 15, 21, 18, 20, 25, 25, 29, 35, 37, 43, 50)  # taper by taper
+_WIDEST_TAPER, _LARGEST_THETA = _TAPERS[-1], _THETAS2[-1] ** 0.5
+_ROWS_AT_ONCE = 2048  # as many as stay in the processor's nearest cache
+_MOST_PIECES = 4096  # beyond, exp(-X) is zero in double precision and the two ends do not see each other
 
 
 def pi_of_frusta(r_start: Values, r_end: Values, length: Values, R_i: Values, g: Values) -> Pi:
@@ -110,7 +113,7 @@ def pi_of_frusta(r_start: Values, r_end: Values, length: Values, R_i: Values, g:
 
     out = Pi(*(np.empty(theta2.shape, theta2.dtype) for _ in range(3)))
     kind = _kind_of_rows(shape, theta2)
-    for which in np.unique(kind):
+    for which in np.flatnonzero(np.bincount(kind)):
         rows = _rows(kind == which)
         _put(out, rows, _pi_of_kind(int(which), conductance[rows], shape.rows(rows), theta2[rows]))
     backwards = r_end > r_start
@@ -153,16 +156,21 @@ def join(first: Pi, second: Pi) -> Pi:
     )
 
 
-_CYLINDER, _CUT, _ENDLESS = -1, -2, -3
+_CYLINDER, _CUT, _ENDLESS, _FIRST_CLASS = 0, 1, 2, 3
 
 
 def _kind_of_rows(shape: Shape, theta2: Values) -> NDArray[np.int64]:
     """Return for each row the class of its series, or that it is a cylinder, to be cut, or endless."""
-    size, taper = np.abs(theta2), shape.taper
-    kind = np.full(len(taper), _CUT)
-    for index, (widest, largest, _) in reversed(list(enumerate(_CLASSES))):
-        kind[((taper <= widest) & (size <= largest)).all(axis=1)] = index
-    kind[(taper == 0.0).all(axis=1)] = _CYLINDER
+    size, taper = np.abs(theta2).max(axis=1), shape.taper.max(axis=1)
+    classes = np.searchsorted(_TAPERS, taper) * len(_THETAS2) + np.searchsorted(_THETAS2, size)
+    kind: NDArray[np.int64] = _FIRST_CLASS + classes
+    kind[(size > _THETAS2[-1]) | (taper > _WIDEST_TAPER)] = _CUT
+    straight = taper == 0.0
+    if not np.iscomplexobj(
+        theta2
+    ):  # on the negative axis of s V oscillates, which the series can, and Θ is not real
+        straight &= theta2.min(axis=1) > 0.0
+    kind[straight] = _CYLINDER
     cut = np.flatnonzero(kind == _CUT)
     kind[cut[_pieces(shape.rows(cut), theta2[cut]) > _MOST_PIECES]] = _ENDLESS
     return kind
@@ -176,7 +184,7 @@ def _pi_of_kind(kind: int, conductance: Values, shape: Shape, theta2: Values) ->
         return _cut_and_joined(conductance, shape, theta2)
     if kind == _ENDLESS:
         return _endless(conductance, shape, np.sqrt(theta2))
-    return _series(conductance, shape.taper, theta2, _CLASSES[kind][2])
+    return _series(conductance, shape.taper, theta2, _TERMS[kind - _FIRST_CLASS])
 
 
 def _cylinder(conductance: Values, theta: Values) -> Pi:
@@ -189,28 +197,38 @@ def _cylinder(conductance: Values, theta: Values) -> Pi:
 def _series(conductance: Values, taper: Values, theta2: Values, terms: int) -> Pi:
     """Return the π, thick end first, from the power series of W (module docstring).
 
-    With P, S the solutions that start as (W, W') = (1, 0) and (0, 1), seen at the thin end u = 1,
+    With C, S the solutions that start as (V, V') = (1, 0) and (0, 1), at the thin end u = 1
 
-        axial = A(1 − δ)/S,   thick shunt = axial·[(P − 1) − δ(S − 1)]/(1 − δ),
-        thin shunt = axial·[(1 − δ)(S' − 1) + δ(S − 1)].
+        axial = A/S,   thick shunt = axial·(C − 1),   thin shunt = axial·(ρ²S' − 1),
 
-    P − 1, S − 1 and S' − 1 are summed as such, of positive terms; δ(S − 1) stays below a third of
-    P − 1, so that the one difference loses nothing.
+    where ρ²S' = (1 + ρ²C'S)/C, since ρ²(CS' − C'S) keeps its value along the cable.  C starts with
+    W = 1 − δu + Θ²u²/2 + 0·u³, S with W = u + 0·u² + Θ²u³/6; what follows is summed, of positive terms.
     """
-    before, last = np.zeros((2, *theta2.shape), theta2.dtype), np.zeros((2, *theta2.shape), theta2.dtype)
-    before[0], last[1] = 1.0, 1.0
-    excess = np.zeros_like(last)  # P - 1 and S - 1
-    slope = np.zeros_like(theta2)  # S' - 1
-    for k in range(terms):
-        new = (theta2 / ((k + 1) * (k + 2))) * before
-        new += (taper * (k / (k + 2))) * last
-        excess += new
-        slope += (k + 2) * new[1]
-        before, last = last, new
-    axial = conductance * (1.0 - taper) / (1.0 + excess[1])
-    thick = axial * (excess[0] - taper * excess[1]) / (1.0 - taper)
-    thin = axial * ((1.0 - taper) * slope + taper * excess[1])
-    return Pi(axial, thick, thin)
+    pi = Pi(*(np.empty(theta2.shape, theta2.dtype) for _ in range(3)))
+    for first in range(0, len(theta2), _ROWS_AT_ONCE):
+        rows = slice(first, first + _ROWS_AT_ONCE)
+        rise, slope, delay = _sums(taper[rows], theta2[rows], terms)
+        rho = 1.0 - taper[rows]
+        axial = conductance[rows] * rho / (1.0 + delay)
+        thick = rise / rho  # C - 1
+        thin = ((slope + taper[rows] * thick) * (1.0 + delay) - thick) / (1.0 + thick)
+        _put(pi, rows, Pi(axial, axial * thick, axial * thin))
+    return pi
+
+
+def _sums(taper: Values, theta2: Values, terms: int) -> tuple[Values, Values, Values]:
+    """Return the sums of w_k and of k·w_k, k ≥ 2, for C, and of w_k, k ≥ 3, for S."""
+    before = np.stack((theta2 / 2.0, np.zeros_like(theta2)))
+    last = np.stack((np.zeros_like(theta2), theta2 / 6.0))
+    total, slope = before + last, theta2.copy()
+    for k in range(2, terms):
+        before *= theta2
+        before *= 1.0 / ((k + 1) * (k + 2))
+        before += (k / (k + 2) * taper) * last
+        total += before
+        slope += (k + 2) * before[0]
+        before, last = last, before
+    return total[0], slope, total[1]
 
 
 def _pieces(shape: Shape, theta2: Values) -> Real:
@@ -244,7 +262,7 @@ def _cut_and_joined(conductance: Values, shape: Shape, theta2: Values) -> Pi:
             conductance[here] * scale / share[here],
             small[here],
             theta2[here] * scale * share[here] ** 2,
-            _CLASSES[-1][2],
+            _TERMS[-1],
         )
         _put(whole, here, piece if j == 0 else join(Pi(*(part[here] for part in whole)), piece))
     back = np.argsort(order, kind="stable")

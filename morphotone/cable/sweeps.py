@@ -71,6 +71,7 @@ class Runs(NamedTuple):
 
 
 _HANG = 63  # stands behind every possible number of foldings in the sorting key of a stream's nodes
+_LAST = 64 * (_HANG + 1)  # stands behind every order: a root's; keys leave 51 bits for two node numbers
 
 
 def schedule(parent: Index) -> Schedule:
@@ -103,8 +104,10 @@ def schedule(parent: Index) -> Schedule:
     up = np.where(inside, member[np.where(inside, start[stream_of] + above_rank, 0)], hangs_on[stream_of])
     key = order[runs.of_node] * (_HANG + 1) + level
     is_root = parent < 0
-    key[is_root] = np.iinfo(np.int64).max
-    sequence = np.lexsort((np.where(level == _HANG, up, 0), key))
+    key[is_root] = _LAST
+    # By step, then (for hanging) by parent, then by node: one sort of whole numbers that are all different.
+    together = (key * len(nodes) + np.where(level == _HANG, up, 0)) * len(nodes) + nodes
+    sequence = np.argsort(together)
     place = np.empty_like(sequence)
     place[sequence] = nodes
     down = member[start[stream_of] + rank - lowest]
@@ -166,7 +169,7 @@ def _steps(key: Index, sequence: Index, place: Index, up: Index, down: Index) ->
     edges = np.flatnonzero(np.diff(keys)) + 1
     steps = []
     for first, last in zip([0, *edges.tolist()], [*edges.tolist(), len(keys)], strict=True):
-        if keys[first] == np.iinfo(np.int64).max:
+        if keys[first] == _LAST:
             break
         nodes = sequence[first:last]
         parent = place[up[nodes]]

@@ -28,6 +28,7 @@ from morphotone.night.record import run_record, write_record
 from morphotone.night.results import atomic, export, export_each
 from morphotone.night.runner import Tally
 from morphotone.night.runner import run as run_night
+from morphotone.questions.columns import Columns
 from morphotone.questions.survey import Answer, Request, answers, cell_name, content_of, headers
 from morphotone.showing.tables import csv_texts
 
@@ -189,19 +190,22 @@ def _is_known(content: bytes | ReadingError, sha256: str | None) -> bool:
 def _parts(given: Sequence[Answer]) -> dict[str, dict[str, str]]:
     """Return per file its CSV lines for each table."""
     parts: dict[str, dict[str, str]] = {answer.name: {} for answer in given}
-    analysed = [answer for answer in given if answer.cell is not None]
-    tables: dict[str, list[tuple[Answer, pd.DataFrame | None]]] = {
-        "cells": [(answer, pd.DataFrame([answer.cell])) for answer in analysed],
-        "branches": [(answer, answer.branches) for answer in analysed],
-        "samples": [(answer, answer.by_sample) for answer in analysed],
+    tables: dict[str, list[tuple[Answer, Columns | None]]] = {
+        "cells": [(answer, _one_row(answer.cell)) for answer in given],
+        "branches": [(answer, answer.branches) for answer in given],
+        "samples": [(answer, answer.by_sample) for answer in given],
         "findings": [(answer, answer.findings) for answer in given],
     }
     for table, pairs in tables.items():
-        frames = [(answer.name, frame) for answer, frame in pairs if frame is not None and len(frame)]
-        texts = csv_texts([frame for _, frame in frames], [[name, cell_name(name)] for name, _ in frames])
-        for (name, _), text in zip(frames, texts, strict=True):
+        filled = [(answer.name, columns) for answer, columns in pairs if columns is not None]
+        texts = csv_texts([columns for _, columns in filled], [[name, cell_name(name)] for name, _ in filled])
+        for (name, _), text in zip(filled, texts, strict=True):
             parts[name][table] = text
     return parts
+
+
+def _one_row(row: dict[str, Any] | None) -> Columns | None:
+    return None if row is None else {name: [value] for name, value in row.items()}
 
 
 def _outcome(answer: Answer, parts: dict[str, str]) -> Outcome:

@@ -6,6 +6,7 @@ import sys
 import textwrap
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from itertools import chain
 from pathlib import Path
 from typing import Any
 
@@ -17,6 +18,7 @@ from morphotone.errors import MorphotoneError, ReadingError
 from morphotone.night.folder import Found, find_files
 from morphotone.night.progress import Progress, Silent, Step, progress_on
 from morphotone.night.results import atomic
+from morphotone.questions.columns import Columns
 from morphotone.questions.survey import cell_name, content_of
 from morphotone.questions.trust import findings_table
 from morphotone.reading.findings import CATALOGUE
@@ -95,7 +97,9 @@ def vet(
             progress.advance(Step(1, file.size, int(str(row["samples"])), int(bad)))
     finally:
         progress.end()
-    return Trust(pd.DataFrame(rows), pd.concat(tables, ignore_index=True))
+    findings = {name: list(chain.from_iterable(table[name] for table in tables)) for name in tables[0]}
+    whole = dict.fromkeys(("line", "sample", "count"), "Int64")
+    return Trust(pd.DataFrame(rows), pd.DataFrame(findings).astype(whole))
 
 
 def _found(paths: Sequence[str | os.PathLike[str]]) -> Iterator[Found]:
@@ -108,7 +112,7 @@ def _found(paths: Sequence[str | os.PathLike[str]]) -> Iterator[Found]:
             raise MorphotoneError(f"{path}: there is no such file or folder; check the spelling")
 
 
-def _vetted(file: Found, assumptions: Assumptions) -> tuple[dict[str, object], pd.DataFrame]:
+def _vetted(file: Found, assumptions: Assumptions) -> tuple[dict[str, object], Columns]:
     """Return a file's row and its findings."""
     names = {"file": file.name, "cell": cell_name(file.name)}
     try:
@@ -129,10 +133,10 @@ def _vetted(file: Found, assumptions: Assumptions) -> tuple[dict[str, object], p
     return {**row, "reason": "", "sentence": ""}, _led(table, names)
 
 
-def _led(table: pd.DataFrame, names: dict[str, str]) -> pd.DataFrame:
-    for column, name in reversed(names.items()):
-        table.insert(0, column, name)
-    return table
+def _led(table: Columns, names: dict[str, str]) -> Columns:
+    """Put the names of the file before its findings."""
+    rows = len(table["code"])
+    return {**{column: [name] * rows for column, name in names.items()}, **table}
 
 
 def add_arguments(parser: argparse.ArgumentParser) -> None:

@@ -3,13 +3,12 @@
 from dataclasses import dataclass
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 
 from morphotone.cable.electrotonus import Electrotonus
 from morphotone.cable.forest import membrane_of
 from morphotone.cable.frustum import electrotonic_lengths
-from morphotone.questions.suffix import case_suffixes
+from morphotone.questions.columns import Columns, case_suffixes
 from morphotone.reading.reconstruction import Reconstruction, domain_name
 from morphotone.units import NANOSIEMENS_PER_MICROSIEMENS, UM_PER_CM
 
@@ -92,8 +91,8 @@ def branches_of(parent: Index) -> Branches:
     return Branches(of_node, head, end, above, np.array(order, np.int64), daughters[end])
 
 
-def branch_table(rec: Reconstruction, electrotonus: Electrotonus, branches: Branches) -> pd.DataFrame:
-    """Return one row per branch; the columns are those of README's table of ``branches.csv``.
+def branch_table(rec: Reconstruction, electrotonus: Electrotonus, branches: Branches) -> Columns:
+    """Return the columns of ``branches.csv``, one row per branch; README explains them.
 
     Parameters
     ----------
@@ -121,7 +120,7 @@ def branch_table(rec: Reconstruction, electrotonus: Electrotonus, branches: Bran
         np.sqrt(UM_PER_CM * radius / (2.0 * R_i * leak)) for radius in (cable.r_start, cable.r_end)
     )
     head, end = branches.head, branches.end
-    columns = {
+    columns: Columns = {
         "branch": np.arange(1, len(head) + 1),
         "parent_branch": branches.parent + 1,
         "order": branches.order,
@@ -150,7 +149,7 @@ def branch_table(rec: Reconstruction, electrotonus: Electrotonus, branches: Bran
         columns[f"attenuation_from_soma_end{suffix}"] = np.exp(
             electrotonus.log_attenuation_from_soma[end, case]
         )
-    return pd.DataFrame(columns)
+    return columns
 
 
 def endless_conductance(diameter: Real, R_i: Real, leak: Real) -> Real:

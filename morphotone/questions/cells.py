@@ -12,7 +12,7 @@ from morphotone.cable.forest import membrane_of
 from morphotone.cable.frustum import electrotonic_lengths
 from morphotone.cable.traced import AXON
 from morphotone.questions.branches import Branches, endless_conductance, rall_ratios
-from morphotone.questions.suffix import case_suffixes
+from morphotone.questions.columns import case_suffixes
 from morphotone.reading.reconstruction import Reconstruction, domain_name
 from morphotone.reading.soma import SOMA
 from morphotone.reading.vetting import SEVERITIES, Vetting

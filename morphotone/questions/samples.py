@@ -3,16 +3,16 @@
 from typing import Any
 
 import numpy as np
-import pandas as pd
+from numpy.typing import NDArray
 
 from morphotone.cable.electrotonus import Electrotonus
 from morphotone.questions.branches import Branches
-from morphotone.questions.suffix import case_suffixes
+from morphotone.questions.columns import Columns, case_suffixes
 from morphotone.reading.reconstruction import Reconstruction, domain_name
 
 
-def sample_table(rec: Reconstruction, electrotonus: Electrotonus, branches: Branches) -> pd.DataFrame:
-    """Return one row per sample in file order; columns as in README's table of ``samples/``.
+def sample_table(rec: Reconstruction, electrotonus: Electrotonus, branches: Branches) -> Columns:
+    """Return the columns of a file of ``samples/``, one row per sample in file order; README explains them.
 
     Samples that are not analysed have empty cells after their diameter.
 
@@ -31,11 +31,9 @@ def sample_table(rec: Reconstruction, electrotonus: Electrotonus, branches: Bran
     straight = cable.straight[node]
     straight[left_out] = np.nan
     names = {kind: domain_name(kind) for kind in np.unique(rec.kind).tolist()}
-    number = pd.array(branches.of_node[node] + 1, dtype="Int64")
-    number[left_out | (branches.of_node[node] < 0)] = pd.NA
-    order = pd.array(np.append(branches.order, 0)[branches.of_node[node]], dtype="Int64")
-    order[left_out] = pd.NA
-    columns: dict[str, Any] = {
+    number = _blank(branches.of_node[node] + 1, left_out)
+    order = _blank(np.append(branches.order, 0)[branches.of_node[node]], left_out)
+    columns: Columns = {
         "sample": rec.number,
         "domain": [names[kind] for kind in rec.kind.tolist()],
         "diameter_um": 2.0 * traced.radius,
@@ -61,5 +59,14 @@ def sample_table(rec: Reconstruction, electrotonus: Electrotonus, branches: Bran
         }
         if not suffix:
             columns["charge_to_soma"] = np.exp(-from_soma)
-    table = pd.DataFrame(columns)
-    return table.iloc[np.argsort(rec.line, kind="stable")]
+    in_file = np.argsort(rec.line, kind="stable")
+    return {name: np.asarray(values)[in_file] for name, values in columns.items()}
+
+
+def _blank(whole: NDArray[np.int64], where: NDArray[np.bool_]) -> NDArray[Any]:
+    """Return whole numbers with None at some places."""
+    if not where.any():
+        return whole
+    blanked = whole.astype(object)
+    blanked[where] = None
+    return blanked

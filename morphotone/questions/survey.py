@@ -8,7 +8,6 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
-import pandas as pd
 
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.electrotonus import Electrotonus, build_cases, cases_of, solve_cables
@@ -16,6 +15,7 @@ from morphotone.cable.tree import Cable
 from morphotone.errors import ReadingError
 from morphotone.questions.branches import branch_table, branches_of
 from morphotone.questions.cells import cell_row
+from morphotone.questions.columns import Columns
 from morphotone.questions.samples import sample_table
 from morphotone.questions.trust import findings_table, unfit_sentence
 from morphotone.reading.reconstruction import Reconstruction, reconstruct
@@ -59,11 +59,11 @@ class Answer:
         Of its bytes; empty if they could not be read.
     samples : int
         How many samples it holds; 0 if it is no reconstruction.
-    findings : DataFrame
-        One row per finding.
+    findings : dict of str to sequence
+        Column by column, one row per finding.
     cell : dict or None
         The row of the cells table; None if the file was turned away.
-    branches, by_sample : DataFrame or None
+    branches, by_sample : dict of str to sequence, or None
         The cell's own tables; the second only on request.
     reason, sentence : str
         Why it was turned away; empty if it was not.
@@ -72,10 +72,10 @@ class Answer:
     name: str
     sha256: str
     samples: int
-    findings: pd.DataFrame
+    findings: Columns
     cell: dict[str, Any] | None = None
-    branches: pd.DataFrame | None = None
-    by_sample: pd.DataFrame | None = None
+    branches: Columns | None = None
+    by_sample: Columns | None = None
     reason: str = ""
     sentence: str = ""
 
@@ -132,7 +132,7 @@ def headers(request: Request) -> dict[str, list[str]]:
     """Return the columns of the tables that `answers` gives to a request, without the leading names."""
     (answer,) = answers([("specimen", _SPECIMEN)], replace(request, keep_unfit=True))
     tables = {"branches": answer.branches, "samples": answer.by_sample, "findings": answer.findings}
-    columns = {name: list(table.columns) for name, table in tables.items() if table is not None}
+    columns = {name: list(table) for name, table in tables.items() if table is not None}
     return {"cells": list(answer.cell or {}), **columns}
 
 

@@ -2,16 +2,15 @@
 
 from collections.abc import Sequence
 
-import pandas as pd
-
+from morphotone.questions.columns import Columns
 from morphotone.reading.findings import CATALOGUE, Finding
 from morphotone.reading.vetting import Vetting
 
 FINDINGS_COLUMNS = ("grade", "code", "severity", "line", "sample", "count", "sentence", "effect")
 
 
-def findings_table(findings: Sequence[Finding], grade: str) -> pd.DataFrame:
-    """Return one row per finding of a file.
+def findings_table(findings: Sequence[Finding], grade: str) -> Columns:
+    """Return the columns of ``findings.csv``, one row per finding of a file.
 
     Columns: the file's grade, the finding's code and severity, the line and sample number of its first
     place (empty where it has none), the number of places, what was seen, and what that does to electrotonus.
@@ -20,8 +19,8 @@ def findings_table(findings: Sequence[Finding], grade: str) -> pd.DataFrame:
         (grade, f.code, f.severity, f.line, f.sample, f.count, f.sentence, CATALOGUE[f.code].effect)
         for f in findings
     ]
-    table = pd.DataFrame(rows, columns=list(FINDINGS_COLUMNS))
-    return table.astype({"line": "Int64", "sample": "Int64", "count": "Int64"})
+    columns = zip(*rows, strict=True) if rows else [()] * len(FINDINGS_COLUMNS)
+    return {name: list(values) for name, values in zip(FINDINGS_COLUMNS, columns, strict=True)}
 
 
 def unfit_sentence(file: str, vetting: Vetting) -> str:

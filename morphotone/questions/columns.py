@@ -1,6 +1,11 @@
-"""How a frequency is written in a column's name."""
+"""What a table is before it is text, and how a frequency is written in a column's name."""
+
+from typing import Any
 
 from morphotone.cable.electrotonus import Electrotonus
+
+#: Column name to its values, arrays or lists of one length: cheap to make for thousands of small tables.
+Columns = dict[str, Any]
 
 
 def hz_suffix(hz: float) -> str:
