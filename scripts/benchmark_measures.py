@@ -1,0 +1,361 @@
+"""What the benchmark times: the commands, their stages, workers, growth, start and memory.
+
+Everything that is timed is what the commands call. Every repetition goes through all runs of a part in turn
+and a ratio is taken within one repetition, so that what slows the machine for a while slows both sides.
+"""
+
+from __future__ import annotations
+
+import subprocess
+import sys
+import time
+from collections import defaultdict
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from contextlib import ExitStack, contextmanager
+from dataclasses import dataclass
+from functools import partial
+from pathlib import Path
+from pkgutil import resolve_name
+from tempfile import TemporaryDirectory
+from typing import Any, TypeVar
+from unittest import mock
+
+import numpy as np
+import pandas as pd
+from benchmark_cells import draw_folder
+
+from morphotone.cable.assumptions import Assumptions, Membrane
+from morphotone.cable.electrotonus import build_cases, cases_of, solve_cables
+from morphotone.commands.survey import outcomes, write_survey
+from morphotone.commands.vet import vet
+from morphotone.night.folder import PATTERNS, find_files
+from morphotone.night.outcome import Item
+from morphotone.night.runner import Tally
+from morphotone.questions.survey import Request
+from morphotone.reading.reconstruction import Reconstruction, read
+
+Key = TypeVar("Key")
+Timer = Callable[[], float]
+
+MEMORY_SCRIPT = Path(__file__).resolve().with_name("benchmark_memory.py")
+COLUMNS = ["number", "type", "x", "y", "z", "radius", "parent"]
+AT_REST = Request(Assumptions())
+TWO_FREQUENCIES = Request(Assumptions(hz=(10.0, 100.0)))
+BY_SAMPLE = Request(Assumptions(), samples=True)
+SMALL_CELL = 500  # samples; of the cells whose number grows
+CELLS_OF_CASES = 8  # solved together where the number of cases grows
+
+#: Stage, and a function whose time it takes, less the time of other functions of this list within it.
+STAGES = (
+    ("read", "morphotone.commands.survey.content_of"),
+    ("read", "morphotone.questions.survey.reconstruct"),
+    ("vet", "morphotone.questions.survey.vet_reconstruction"),
+    ("build", "morphotone.questions.survey.mend_radii"),
+    ("build", "morphotone.questions.survey.build_cases"),
+    ("forest", "morphotone.questions.survey.solve_cables"),
+    ("elements", "morphotone.cable.forest.pi_of_frusta"),
+    ("sweeps", "morphotone.cable.forest.sweep"),
+    ("sweeps", "morphotone.cable.forest.path_sums"),
+    ("tables", "morphotone.questions.survey.branches_of"),
+    ("tables", "morphotone.questions.survey.findings_table"),
+    ("tables", "morphotone.questions.survey.cell_row"),
+    ("tables", "morphotone.questions.survey.branch_table"),
+    ("tables", "morphotone.questions.survey.sample_table"),
+    ("tables", "morphotone.commands.survey.csv_texts"),
+    ("write", "morphotone.night.ledger.Ledger.record"),
+    ("write", "morphotone.commands.survey.export"),
+    ("write", "morphotone.commands.survey.export_each"),
+    ("write", "morphotone.commands.survey.write_record"),
+)
+REST = "rest"
+
+
+@dataclass(frozen=True)
+class Row:
+    """One line of the table: the median of the repetitions, with the least and the greatest."""
+
+    part: str
+    name: str
+    unit: str
+    median: float
+    least: float
+    greatest: float
+
+
+@dataclass(frozen=True)
+class Sizes:
+    """How much is measured, and how often."""
+
+    repeats: int
+    workers: tuple[int, ...]
+    cells: int  #: drawn unless a folder is given
+    samples: int  #: of each of them
+    most_samples: int
+    most_cells: int
+    most_cases: int
+
+
+@dataclass(frozen=True)
+class Bench:
+    """What is measured on: a folder of reconstructions, and room for cells drawn besides."""
+
+    folder: Path
+    scratch: Path
+    sizes: Sizes
+
+    @property
+    def paths(self) -> list[Path]:
+        """The reconstructions in the folder."""
+        return [file.path for file in find_files(self.folder)]
+
+    def drawn(self, cells: int, samples: int) -> Path:
+        """Return a folder of drawn cells, drawn when first asked for."""
+        folder = self.scratch / f"{cells}_of_{samples}"
+        return folder if folder.exists() else draw_folder(folder, cells, samples)
+
+    def repeated(self, timers: Mapping[Key, Timer]) -> dict[Key, list[float]]:
+        """Go through all timers in turn, as often as asked; return what each gave."""
+        rounds = [[timer() for timer in timers.values()] for _ in range(self.sizes.repeats)]
+        return {name: list(given) for name, given in zip(timers, zip(*rounds, strict=True), strict=True)}
+
+
+def row(part: str, name: str, unit: str, values: Sequence[float]) -> Row:
+    """Summarise repetitions."""
+    return Row(part, name, unit, float(np.median(values)), min(values), max(values))
+
+
+def ratios(values: Sequence[float], to: Sequence[float]) -> list[float]:
+    """Return the ratio within each repetition."""
+    return [value / reference for value, reference in zip(values, to, strict=True)]
+
+
+def seconds_of(work: Callable[..., object], *args: object) -> float:
+    """Return how long a call takes."""
+    start = time.perf_counter()
+    work(*args)
+    return time.perf_counter() - start
+
+
+def read_barely(paths: Sequence[Path]) -> None:
+    """Read the numbers in files as pandas does it, and do nothing with them."""
+    for path in paths:
+        try:
+            pd.read_csv(
+                path,
+                sep=r"\s+",
+                comment="#",
+                header=None,
+                names=COLUMNS,
+                dtype="float64",
+                engine="c",
+                encoding_errors="replace",
+            )
+        except ValueError:
+            continue  # a file with a fault, in a folder that was given: read as far as the fault
+
+
+def surveyed(folder: Path, results: Path, request: Request = AT_REST, workers: int = 1) -> Tally:
+    """Survey as the command does, with nobody looking on."""
+    return write_survey(
+        folder, results, request, patterns=PATTERNS, workers=workers, strict=False, progress=None
+    )
+
+
+def survey_seconds(folder: Path, request: Request = AT_REST, workers: int = 1) -> float:
+    """Return how long a survey into a new results folder takes."""
+    with TemporaryDirectory() as results:
+        return seconds_of(surveyed, folder, Path(results), request, workers)
+
+
+def measure_runs(bench: Bench) -> Iterator[Row]:
+    """Measure the commands on the folder."""
+    bare, folder = "bare reading", bench.folder
+    seconds = bench.repeated(
+        {
+            bare: partial(seconds_of, read_barely, bench.paths),
+            "vet": partial(seconds_of, vet, folder),
+            "survey at 0 Hz": partial(survey_seconds, folder),
+            "survey at 0 Hz and two frequencies": partial(survey_seconds, folder, TWO_FREQUENCIES),
+            "survey at 0 Hz with tables by sample": partial(survey_seconds, folder, BY_SAMPLE),
+        }
+    )
+    reference = seconds.pop(bare)
+    yield row("runs", bare, "s", reference)
+    for name, values in seconds.items():
+        yield row("runs", name, "x bare", ratios(values, reference))
+
+
+def measure_stages(bench: Bench) -> Iterator[Row]:
+    """Measure where the time of a survey goes, with tables by branch and by cell only."""
+    by_stage: dict[str, list[float]] = {name: [] for name in [*dict(STAGES), REST]}
+    for _ in range(bench.sizes.repeats):
+        bare = seconds_of(read_barely, bench.paths)
+        with stages_timed() as seconds:
+            whole = survey_seconds(bench.folder)
+        seconds[REST] = whole - sum(seconds.values())
+        for stage, values in by_stage.items():
+            values.append(seconds[stage] / bare)
+    yield from (row("stages", stage, "x bare", values) for stage, values in by_stage.items())
+
+
+@contextmanager
+def stages_timed() -> Iterator[dict[str, float]]:
+    """Time the functions of `STAGES` while this process calls them; seconds by stage."""
+    seconds: dict[str, float] = defaultdict(float)
+    within = [0.0]  # for each listed function that is running, the time of listed functions inside it
+
+    def timed(stage: str, function: Callable[..., Any]) -> Callable[..., Any]:
+        def call(*args: Any, **kwargs: Any) -> Any:
+            within.append(0.0)
+            start = time.perf_counter()
+            try:
+                return function(*args, **kwargs)
+            finally:
+                whole = time.perf_counter() - start
+                seconds[stage] += whole - within.pop()
+                within[-1] += whole
+
+        return call
+
+    with ExitStack() as stack:
+        for stage, place in STAGES:
+            home, _, name = place.rpartition(".")
+            owner = resolve_name(home)
+            stack.enter_context(mock.patch.object(owner, name, timed(stage, getattr(owner, name))))
+        yield seconds
+
+
+def measure_workers(bench: Bench) -> Iterator[Row]:
+    """Measure a survey by several processes against the same by one."""
+    for workers in bench.sizes.workers:
+        first = survey_seconds(bench.folder, workers=workers)
+        seconds = bench.repeated(
+            {count: partial(survey_seconds, bench.folder, workers=count) for count in (1, workers)}
+        )
+        yield row("workers", f"survey at 0 Hz, {workers} workers", "s", seconds[workers])
+        yield row("workers", f"the first by {workers}, with their start", "s", [first])
+        yield row("workers", f"1 worker's time over {workers}'", "x", ratios(seconds[1], seconds[workers]))
+
+
+def measure_growth(bench: Bench) -> Iterator[Row]:
+    """Measure how time grows with samples, cells and cases."""
+    yield from _growth_with_samples(bench)
+    most = bench.sizes.most_cells
+    folders = {count: bench.drawn(count, SMALL_CELL) for count in steps(most // 10, most, 3)}
+    timers = {count: partial(survey_seconds, folder) for count, folder in folders.items()}
+    yield from grown(f"surveyed cells of {SMALL_CELL} samples", bench.repeated(timers))
+    yield from _growth_with_cases(bench)
+
+
+def steps(least: int, most: int, count: int) -> list[int]:
+    """Return up to `count` whole numbers, evenly spaced in their logarithm."""
+    return sorted({round(value) for value in np.geomspace(max(least, 1), most, count).tolist()})
+
+
+def _growth_with_samples(bench: Bench) -> Iterator[Row]:
+    most = bench.sizes.most_samples
+    cells = {count: next(bench.drawn(1, count).iterdir()) for count in steps(max(most // 100, 2), most, 5)}
+    seconds = bench.repeated({count: partial(_cell_seconds, path) for count, path in cells.items()})
+    yield from grown("samples in one cell", seconds)
+    bare = bench.repeated({most: partial(seconds_of, read_barely, [cells[most]])})
+    yield row("growth", f"samples in one cell: {most:,}", "x bare", ratios(seconds[most], bare[most]))
+
+
+def _cell_seconds(path: Path) -> float:
+    """Return how long one cell takes without ledger and tables' files, which have a price of their own."""
+    return seconds_of(outcomes, [Item(path.name, path, None)], AT_REST)
+
+
+def _growth_with_cases(bench: Bench) -> Iterator[Row]:
+    """Measure solving alone: by assumptions in real arithmetic, by frequency in complex."""
+    folder = bench.drawn(CELLS_OF_CASES, bench.sizes.samples)
+    recs = [read(path) for path in sorted(folder.iterdir())]
+    counts = steps(1, bench.sizes.most_cases, 5)
+    timers = {count: partial(_solving_seconds, recs, _membranes(count), []) for count in counts}
+    yield from grown("solving at 0 Hz, assumptions", bench.repeated(timers))
+    timers = {count: partial(_solving_seconds, recs, _membranes(1), _frequencies(count)) for count in counts}
+    yield from grown("solving, frequencies besides 0 Hz", bench.repeated(timers))
+
+
+def _membranes(count: int) -> list[Assumptions]:
+    R_m = np.geomspace(1e4, 4e4, count).tolist()
+    return [Assumptions(membrane=Membrane(R_m_ohm_cm2=each)) for each in R_m]
+
+
+def _frequencies(count: int) -> list[float]:
+    hz: list[float] = np.geomspace(1.0, 1000.0, count).tolist()
+    return hz
+
+
+def _solving_seconds(
+    recs: Sequence[Reconstruction], many: Sequence[Assumptions], hz: Sequence[float]
+) -> float:
+    cells = [build_cases(rec, many) for rec in recs]
+    return seconds_of(solve_cables, cells, cases_of(many, hz))
+
+
+def grown(what: str, seconds: Mapping[int, Sequence[float]]) -> Iterator[Row]:
+    """Give the seconds for each size, and the exponent by least squares of the logarithms."""
+    for size, values in seconds.items():
+        yield row("growth", f"{what}: {size:,}", "s", values)
+    sizes = np.log(list(seconds))
+    slopes = [np.polyfit(sizes, np.log(each), 1)[0] for each in zip(*seconds.values(), strict=True)]
+    yield row("growth", f"{what}: exponent", "", slopes)
+
+
+def measure_start(bench: Bench) -> Iterator[Row]:
+    """Measure what a person waits for before anything happens."""
+    small = bench.drawn(1, SMALL_CELL)
+    timers: dict[str, Timer] = {
+        "morphotone --help": _help_seconds,
+        "survey of one small cell": partial(_shell_seconds, small),
+    }
+    for name, values in bench.repeated(timers).items():
+        yield row("start", name, "s", values)
+
+
+def _help_seconds() -> float:
+    return seconds_of(_said_by, [sys.executable, "-m", "morphotone", "--help"])
+
+
+def _shell_seconds(folder: Path) -> float:
+    survey = [sys.executable, "-m", "morphotone", "survey", str(folder), "--workers", "1", "--into"]
+    with TemporaryDirectory() as results:
+        return seconds_of(_said_by, [*survey, results])
+
+
+def measure_memory(bench: Bench) -> Iterator[Row]:
+    """Measure the most memory of a survey's own process, a new one each time."""
+    sizes = bench.sizes
+    workers = max(sizes.workers)
+    timers: dict[str, Timer] = {
+        "one small cell": partial(_peak_mb, bench.drawn(1, SMALL_CELL), 1),
+        f"one cell of {sizes.most_samples:,} samples": partial(
+            _peak_mb, bench.drawn(1, sizes.most_samples), 1
+        ),
+    }
+    for count in steps(sizes.most_cells // 10, sizes.most_cells, 2):
+        folder = bench.drawn(count, SMALL_CELL)
+        timers[f"main process of {workers} workers, {count:,} cells"] = partial(_peak_mb, folder, workers)
+    for name, values in bench.repeated(timers).items():
+        yield row("memory", name, "MB", values)
+
+
+def _peak_mb(folder: Path, workers: int) -> float:
+    survey = [sys.executable, str(MEMORY_SCRIPT), "survey", str(folder), "--workers", str(workers), "--into"]
+    with TemporaryDirectory() as results:
+        return float(_said_by([*survey, results]).splitlines()[-1])
+
+
+def _said_by(command: Sequence[str]) -> str:
+    return subprocess.run(command, check=True, capture_output=True, text=True).stdout
+
+
+PARTS: dict[str, Callable[[Bench], Iterator[Row]]] = {
+    "runs": measure_runs,
+    "stages": measure_stages,
+    "workers": measure_workers,
+    "growth": measure_growth,
+    "start": measure_start,
+    "memory": measure_memory,
+}
