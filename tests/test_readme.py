@@ -1,0 +1,52 @@
+"""README says what is true now: every column, every command, an example that works."""
+
+import re
+from pathlib import Path
+
+import pytest
+
+from morphotone.cable.assumptions import Assumptions
+from morphotone.commands import COMMANDS
+from morphotone.questions.survey import Request, headers
+
+README = (Path(__file__).parents[1] / "README.md").read_text(encoding="utf-8")
+DOMAINS = ("basal", "apical", "other")
+
+
+def section(title: str) -> str:
+    """Return the text under one heading."""
+    match = re.search(rf"^### {re.escape(title)}$(.*?)(?=^##)", README, re.MULTILINE | re.DOTALL)
+    assert match, f"no section {title}"
+    return match.group(1)
+
+
+@pytest.mark.parametrize(
+    ("table", "title"),
+    [
+        ("cells", "`cells.csv`"),
+        ("branches", "`branches.csv`"),
+        ("samples", "`samples/`"),
+        ("findings", "`findings.csv`"),
+    ],
+)
+def test_every_column_is_explained(table: str, title: str) -> None:
+    explained = set(re.findall(r"`([^`]+)`", section(title)))
+    columns = headers(Request(Assumptions(), samples=True))[table]
+    and_so_on = {f"lambda_{domain}{end}" for domain in DOMAINS for end in ("_um", "_least_um", "_greatest_um")}
+    assert set(columns) - explained <= and_so_on
+
+
+@pytest.mark.parametrize(
+    ("table", "title"),
+    [("branches", "`branches.csv`"), ("samples", "`samples/`"), ("cells", "`cells.csv`")],
+)
+def test_no_column_is_explained_that_is_not_there(table: str, title: str) -> None:
+    rows = re.findall(r"^\| ((?:`[^`]+`(?:, | and so on)?)+)", section(title), re.MULTILINE)
+    explained = {name for row in rows for name in re.findall(r"`([^`]+)`", row)}
+    assert explained <= set(headers(Request(Assumptions(), samples=True))[table])
+    assert explained
+
+
+def test_every_command_is_named() -> None:
+    for command in COMMANDS:
+        assert f"`morphotone {command}" in README
