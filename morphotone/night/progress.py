@@ -109,19 +109,19 @@ class Bar:
         self._bar = tqdm(
             total=max(size, 1),
             file=self._stream,
-            bar_format="{percentage:3.0f}%|{bar}|{postfix}",
+            bar_format="{percentage:3.0f}%|{bar}| {desc}",
             dynamic_ncols=True,
         )
 
     def advance(self, step: Step) -> None:
         """Move the bar."""
         self._done += step
-        self._bar.set_postfix_str(self._line(), refresh=False)
+        self._bar.set_description_str(self._line(), refresh=False)
         self._bar.update(step.size)
 
     def end(self) -> None:
         """Leave the bar as it stands, and the terminal on a new line."""
-        self._bar.set_postfix_str(self._line(), refresh=True)
+        self._bar.set_description_str(self._line(), refresh=True)
         self._bar.close()
 
     def _line(self) -> str:

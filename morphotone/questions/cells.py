@@ -128,8 +128,9 @@ def _rall_conditions(
     cable = electrotonus.cable
     stems = branches.parent < 0
     d_first, d_end = 2.0 * cable.r_end[branches.head], 2.0 * cable.r_end[branches.end]
-    membrane = membrane_of(cable.kind[branches.head], assumptions)
-    G_inf = endless_conductance(d_first, membrane.R_i, membrane.leak)
+    membrane = membrane_of(cable.kind, assumptions)
+    R_i, leak = (np.broadcast_to(values, cable.kind.shape)[branches.head] for values in membrane[:2])
+    G_inf = endless_conductance(d_first, R_i, leak)
     ratios = rall_ratios(branches, d_first, d_end)
     ratios = ratios[~np.isnan(ratios)]
     tips = _dendritic(cable.kind[branches.end]) & (branches.children == 0)
