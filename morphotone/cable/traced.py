@@ -86,9 +86,10 @@ def trace(rec: Reconstruction, assumptions: Assumptions) -> Traced:
     """
     position = rec.position * np.asarray(assumptions.shrinkage)
     radius = _corrected_radius(rec, assumptions)
-    # The rule is chosen on the coordinates as traced: a correction must not make a chain of three points.
-    rule = find_soma(rec.kind, rec.parent, rec.position, rec.radius, assumptions.soma_rule).rule
-    soma = find_soma(rec.kind, rec.parent, position, radius, rule)
+    soma = find_soma(rec.kind, rec.parent, rec.position, rec.radius, assumptions.soma_rule)
+    if not (np.array_equal(position, rec.position) and np.array_equal(radius, rec.radius)):
+        # By the rule that fits the coordinates as traced: a correction must not make a chain of three points.
+        soma = find_soma(rec.kind, rec.parent, position, radius, soma.rule)
     main = rec.tree[soma.members[0]] if len(soma.members) else _longest_tree(position, rec)
     root = int(soma.members[0]) if len(soma.members) else int(np.argmax(rec.tree == main))
     re_hung = bool(rec.parent[root] >= 0)
