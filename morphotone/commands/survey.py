@@ -29,7 +29,8 @@ from morphotone.night.results import atomic, export, export_each
 from morphotone.night.runner import Tally
 from morphotone.night.runner import run as run_night
 from morphotone.questions.columns import Columns
-from morphotone.questions.survey import Answer, Request, answers, cell_name, content_of, headers
+from morphotone.questions.survey import Answer, Request, answers, cell_name, headers
+from morphotone.reading.swc import read_bytes
 from morphotone.showing.tables import csv_texts
 
 NAME = "survey"
@@ -170,7 +171,7 @@ def write_survey(
 
 def outcomes(items: list[Item], request: Request) -> list[Outcome]:
     """Work on a batch of the night's items; a file whose bytes are known is left as it is."""
-    contents = {item.name: content_of(item.path, item.name) for item in items}
+    contents = {item.name: _content(item) for item in items}
     unchanged = {item.name for item in items if _is_known(contents[item.name], item.known_sha256)}
     given = answers([(name, content) for name, content in contents.items() if name not in unchanged], request)
     parts = _parts(given)
@@ -181,6 +182,14 @@ def outcomes(items: list[Item], request: Request) -> list[Outcome]:
         else worked[item.name]
         for item in items
     ]
+
+
+def _content(item: Item) -> bytes | ReadingError:
+    """Return a file's bytes, or the error that says why they cannot be had."""
+    try:
+        return read_bytes(item.path, name=item.name)
+    except ReadingError as error:
+        return error
 
 
 def _is_known(content: bytes | ReadingError, sha256: str | None) -> bool:

@@ -19,10 +19,11 @@ from morphotone.night.folder import Found, find_files
 from morphotone.night.progress import Progress, Silent, Step, progress_on
 from morphotone.night.results import atomic
 from morphotone.questions.columns import Columns
-from morphotone.questions.survey import cell_name, content_of
+from morphotone.questions.survey import cell_name
 from morphotone.questions.trust import findings_table
 from morphotone.reading.findings import CATALOGUE
 from morphotone.reading.reconstruction import reconstruct
+from morphotone.reading.swc import read_bytes
 from morphotone.reading.vetting import vet_reconstruction
 
 NAME = "vet"
@@ -118,9 +119,7 @@ def _vetted(file: Found, assumptions: Assumptions) -> tuple[dict[str, object], C
     try:
         if file.problem:
             raise ReadingError(f"{file.name}: {file.problem}", "unreadable")
-        content = content_of(file.path, file.name)
-        if isinstance(content, ReadingError):
-            raise content
+        content = read_bytes(file.path, name=file.name)
         rec = reconstruct(content, file=file.name, cell=names["cell"], unit_um=assumptions.unit_um)
     except ReadingError as error:
         row = {**names, "grade": NOT_READ, "samples": 0, "findings": ""}

@@ -4,7 +4,6 @@ import hashlib
 import re
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -20,7 +19,6 @@ from morphotone.questions.samples import sample_table
 from morphotone.questions.trust import findings_table, unfit_sentence
 from morphotone.reading.reconstruction import Reconstruction, reconstruct
 from morphotone.reading.repair import mend_radii
-from morphotone.reading.swc import read_bytes
 from morphotone.reading.vetting import Vetting, grade_of, vet_reconstruction
 
 _ENDING = re.compile(r"\.swc(\.gz)?\Z", re.IGNORECASE)
@@ -118,14 +116,6 @@ def answers(files: Sequence[tuple[str, bytes | ReadingError]], request: Request)
         return [
             _tabulated(each, next(solved), request) if isinstance(each, _Read) else each for each in prepared
         ]
-
-
-def content_of(path: Path, name: str) -> bytes | ReadingError:
-    """Return a file's bytes, or the error that says why they cannot be had."""
-    try:
-        return read_bytes(path, name=name)
-    except ReadingError as error:
-        return error
 
 
 def headers(request: Request) -> dict[str, list[str]]:

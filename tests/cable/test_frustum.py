@@ -5,6 +5,7 @@ import pytest
 
 from morphotone.cable import frustum
 from morphotone.cable.frustum import Pi, electrotonic_lengths, join, pi_of_frusta
+from morphotone.units import MICROSIEMENS_PER_S_CM2_UM2
 from tests.definitions import two_port
 
 R_I = np.array([[150.0]])
@@ -70,7 +71,9 @@ def test_ends_too_far_apart_to_see_each_other(r_start: float, r_end: float) -> N
     assert axial == 0.0
     for radius, shunt, slope in ((r_start, start, r_end - r_start), (r_end, end, r_start - r_end)):
         # Forty λ of the same taper look endless from the end.
-        seen, _, _ = two_port(radius, radius + slope / 300.0, length / 300.0, 150.0, g)
+        seen, _, _ = two_port(
+            radius, radius + slope / 300.0, length / 300.0, 150.0, g * MICROSIEMENS_PER_S_CM2_UM2
+        )
         assert shunt == pytest.approx(float(seen), rel=1e-12)
 
 
