@@ -176,7 +176,7 @@ def screen(trust: Trust) -> str:
         lines.append(f"{name:<{width}}  {row['grade']:<8}  {row['samples']:>9,}  {seen}".rstrip())
     counts = trust.files["grade"].value_counts()
     told = ", ".join(f"{counts.get(grade, 0)} {grade}" for grade in ("sound", "doubtful", "unfit", NOT_READ))
-    lines += ["", f"{len(trust.files)} files: {told}"]
+    lines += ["", f"{len(trust.files)} {'file' if len(trust.files) == 1 else 'files'}: {told}"]
     if len(trust.findings):
         lines.append(f"morphotone vet --explain {trust.findings['code'].iloc[0]}: what such a finding means")
     return "\n".join(lines)
