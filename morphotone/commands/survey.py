@@ -35,7 +35,10 @@ from morphotone.showing.tables import csv_texts
 
 NAME = "survey"
 _LEADING = ["file", "cell"]  # columns that say whose row it is
-_TEXT = dict.fromkeys(("file", "cell", "domain", "reason", "sentence"), str)
+_TEXT = dict.fromkeys(("file", "cell", "domain", "domains_differ", "reason", "sentence"), str)
+# From 3.1 on pandas reads every number back equal, and warns who asks for it.
+_PANDAS = tuple(int(part) for part in pd.__version__.split(".")[:2])
+_EXACT: dict[str, Any] = {"float_precision": "round_trip"} if _PANDAS < (3, 1) else {}
 
 _EPILOG = """\
 what is written into RESULTS:
@@ -234,7 +237,8 @@ def _fingerprint(request: Request) -> dict[str, Any]:
 
 def read_survey(folder: Path, tally: Tally) -> Survey:
     """Read back the tables that a survey wrote."""
-    tables = {path.stem: _read_csv(path) for path in folder.glob("*.csv")}
+    names = ("cells", "branches", "findings", "turned_away")  # the folder may hold other tables beside
+    tables = {name: _read_csv(folder / f"{name}.csv") for name in names}
     samples = {}
     for path in sorted((folder / "samples").rglob("*.csv")):
         table = _read_csv(path)
@@ -244,7 +248,8 @@ def read_survey(folder: Path, tally: Tally) -> Survey:
 
 def _read_csv(path: Path) -> pd.DataFrame:
     """Read a table back with equal numbers, and with names that look like missing values left alone."""
-    return pd.read_csv(path, float_precision="round_trip", keep_default_na=False, na_values=[""], dtype=_TEXT)
+    table: pd.DataFrame = pd.read_csv(path, keep_default_na=False, na_values=[""], dtype=_TEXT, **_EXACT)
+    return table
 
 
 def add_arguments(parser: argparse.ArgumentParser) -> None:
