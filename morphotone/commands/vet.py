@@ -82,10 +82,12 @@ def vet(
     Raises
     ------
     MorphotoneError
-        A path is not there, or a folder holds no such file.
+        No path is given, one is not there, or a folder holds no such file.
     """
     chosen = assumptions or Assumptions()
     found = list(_found([paths] if isinstance(paths, str | os.PathLike) else paths))
+    if not found:
+        raise MorphotoneError("nothing to vet: read no path, expected files or folders")
     progress = progress or Silent()
     progress.begin(len(found), sum(file.size for file in found))
     rows, tables = [], []
@@ -138,23 +140,37 @@ def _led(table: Columns, names: dict[str, str]) -> Columns:
     return {**{column: [name] * rows for column, name in names.items()}, **table}
 
 
+class _Explain(argparse.Action):
+    """Explain a finding and stop, whatever else is asked, as --help does."""
+
+    def __call__(
+        self,
+        parser: argparse.ArgumentParser,
+        namespace: argparse.Namespace,
+        values: str | Sequence[Any] | None,
+        option_string: str | None = None,
+    ) -> None:
+        try:
+            print(explanation(str(values)))
+        except MorphotoneError as error:
+            parser.error(str(error))
+        parser.exit(0)
+
+
 def add_arguments(parser: argparse.ArgumentParser) -> None:
     """Add the command's arguments to its parser."""
     parser.formatter_class = argparse.RawDescriptionHelpFormatter
     parser.epilog = _EPILOG
-    parser.add_argument("paths", metavar="FILE_OR_FOLDER", type=Path, nargs="*", help="what to vet")
+    parser.add_argument("paths", metavar="FILE_OR_FOLDER", type=Path, nargs="+", help="what to vet")
     parser.add_argument("--into", metavar="DIR", type=Path, help="write findings.csv and grades.csv there")
-    parser.add_argument("--explain", metavar="CODE", help="say what a finding is and does, and stop")
+    parser.add_argument(
+        "--explain", metavar="CODE", action=_Explain, help="say what a finding is and does, and stop"
+    )
     add_assumption_options(parser)
 
 
 def run(args: argparse.Namespace) -> int:
     """Vet, print the table, and return the exit code."""
-    if args.explain:
-        print(explanation(args.explain))
-        return 0
-    if not args.paths:
-        raise MorphotoneError("nothing to vet; give files or folders, or a finding's code after --explain")
     progress = progress_on(sys.stderr) if sys.stderr.isatty() else Silent()
     trust = vet(args.paths, assumptions_of(args), progress)
     print(screen(trust))
