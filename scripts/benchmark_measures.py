@@ -47,7 +47,7 @@ CELLS_OF_CASES = 8  # solved together where the number of cases grows
 
 #: Stage, and a function whose time it takes, less the time of other functions of this list within it.
 STAGES = (
-    ("read", "morphotone.commands.survey.content_of"),
+    ("read", "morphotone.commands.survey.read_bytes"),
     ("read", "morphotone.questions.survey.reconstruct"),
     ("vet", "morphotone.questions.survey.vet_reconstruction"),
     ("build", "morphotone.questions.survey.mend_radii"),
