@@ -293,8 +293,9 @@ def run(args: argparse.Namespace) -> int:
         progress=progress_on(sys.stderr),
     )
     again = f" ({tally.unchanged} of them unchanged since an earlier run)" if tally.unchanged else ""
+    files = "file" if tally.found == 1 else "files"
     print(
-        f"{tally.found} files found = {tally.analysed} analysed + {tally.turned_away} turned away{again}\n"
+        f"{tally.found} {files} found = {tally.analysed} analysed + {tally.turned_away} turned away{again}\n"
         f"results: {args.into}"
     )
     if tally.turned_away:

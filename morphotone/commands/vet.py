@@ -210,4 +210,5 @@ def explanation(code: str) -> str:
         kind.explanation,
         f"Effect: {kind.effect}",
     ]
-    return "\n\n".join(textwrap.fill(paragraph, 96) for paragraph in paragraphs)
+    # Not at hyphens: an option such as --unit-um is copied whole.
+    return "\n\n".join(textwrap.fill(paragraph, 96, break_on_hyphens=False) for paragraph in paragraphs)
