@@ -1,0 +1,109 @@
+"""The program as a whole: help, version, commands there are and are not, exit codes, what is loaded when."""
+
+import re
+import subprocess
+import sys
+from importlib.metadata import version
+
+import pytest
+
+from morphotone.commands import COMMANDS, survey
+from morphotone.errors import AssumptionError, MorphotoneError, ReadingError, ResultsError
+from tests.commands.folders import SOUND, called, examples, fill, run
+
+
+@pytest.mark.parametrize("words", [["--help"], []])
+def test_help_names_every_command_and_an_example(words, capsys):
+    assert run(*words) == (0 if words else 2)
+    text = " ".join(capsys.readouterr().out.split())
+    for name, question in COMMANDS.items():
+        assert f"{name} {question}" in text
+    assert "not for clinical or device decisions" in text
+
+
+@pytest.mark.parametrize("name", COMMANDS)
+def test_help_of_a_command_has_its_question_an_example_and_its_exit_codes(name, capsys):
+    assert run(name, "--help") == 0
+    text = capsys.readouterr().out
+    assert text.startswith(f"usage: morphotone {name} ")
+    assert COMMANDS[name][1:] in " ".join(text.split())
+    assert f"  morphotone {name} " in text.partition("example:")[2]
+    assert re.search(r"exit code: 0 .* 2 ", text.replace("\n", " "))
+
+
+@pytest.mark.parametrize(("name", "codes"), [("", [1]), ("vet", [1, 1, 0]), ("assumptions", [0, 0])])
+def test_the_examples_of_help_work(beside_the_samples, capsys, name, codes):
+    """Those of survey have a test of their own, which looks at the results."""
+    assert [called(line, capsys) for line in examples(capsys, name)] == codes
+    assert "Traceback" not in capsys.readouterr().err
+
+
+def test_every_command_has_its_example_tried():
+    assert set(COMMANDS) == {"vet", "survey", "assumptions"}
+
+
+def test_version(capsys):
+    assert run("--version") == 0
+    assert capsys.readouterr().out == f"morphotone {version('morphotone')}\n"
+
+
+@pytest.mark.parametrize("words", [["analyse"], ["--loud"], ["analyse", "survey"], ["vet", "--loud", "x"]])
+def test_unknown_words_are_exit_code_2(words, capsys):
+    assert run(*words) == 2
+    printed = capsys.readouterr()
+    assert printed.out == ""
+    assert printed.err.startswith("usage: morphotone")
+    assert "error: " in printed.err.splitlines()[-1]
+
+
+def test_a_file_may_have_a_commands_name(tmp_path, monkeypatch, capsys):
+    fill(tmp_path, {"survey": SOUND, "vet/x.swc": SOUND})
+    monkeypatch.chdir(tmp_path)
+    assert run("vet", "survey") == 0
+    assert capsys.readouterr().out.startswith("file    grade")
+    assert run("survey", "vet", "--into", "assumptions", "--workers", "1") == 0
+
+
+@pytest.mark.parametrize(
+    ("error", "code"),
+    [
+        (MorphotoneError("it went wrong"), 1),
+        (ReadingError("it went wrong", "why"), 1),
+        (AssumptionError("it went wrong"), 2),
+        (ResultsError("it went wrong"), 2),
+    ],
+)
+def test_each_error_of_ours_is_one_line_and_an_exit_code(monkeypatch, capsys, error, code):
+    def fails(args):
+        raise error
+
+    monkeypatch.setattr(survey, "run", fails)
+    assert run("survey", "x", "--into", "y") == code
+    assert capsys.readouterr().err == "morphotone survey: it went wrong\n"
+
+
+def test_an_interrupt_is_exit_code_130(monkeypatch, capsys):
+    def interrupted(args):
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(survey, "run", interrupted)
+    assert run("survey", "x", "--into", "y") == 130
+    assert capsys.readouterr().err == "interrupted; the same command goes on from here\n"
+
+
+def test_a_fault_of_the_program_shows_itself(monkeypatch):
+    def faulty(args):
+        raise ZeroDivisionError("on purpose")
+
+    monkeypatch.setattr(survey, "run", faulty)
+    with pytest.raises(ZeroDivisionError, match="on purpose"):
+        run("survey", "x", "--into", "y")
+
+
+def test_as_a_process_it_leaves_with_its_code_and_prints_utf_8(tmp_path):
+    fill(tmp_path, {"µ.swc": SOUND, "no.swc": ""})
+    command = [sys.executable, "-X", "utf8=0", "-m", "morphotone", "vet", str(tmp_path)]
+    done = subprocess.run(command, capture_output=True, check=False, env={"LC_ALL": "C", "PATH": ""})
+    assert done.returncode == 1
+    assert done.stderr == b""
+    assert "µ.swc" in done.stdout.decode("utf-8")
