@@ -166,13 +166,15 @@ def solve_cables(cells: Sequence[Sequence[Cable]], cases: Sequence[Case]) -> lis
     many, which = _distinct(cases)
     forest = Forest(cells, many)
     columns = [Column(one, 2j * np.pi * case.hz) for one, case in zip(which, cases, strict=True)]
-    at_rest = [i for i, case in enumerate(cases) if case.hz == 0.0]
-    moving = [i for i, case in enumerate(cases) if case.hz != 0.0]
-    solved = forest.solved([columns[i] for i in at_rest])
-    if moving:  # apart from those at rest, which need real arithmetic only
-        others = forest.solved([columns[i] for i in moving])
-        back = np.argsort(at_rest + moving)
-        solved = Solved(*(np.concatenate(pair, axis=1)[:, back] for pair in zip(solved, others, strict=True)))
+    # Cases at rest apart from the others, since they need real arithmetic only.
+    groups = [
+        group
+        for at_rest in (True, False)
+        if (group := [i for i, case in enumerate(cases) if (case.hz == 0.0) is at_rest])
+    ]
+    parts = [forest.solved([columns[i] for i in group]) for group in groups]
+    back = np.argsort(np.concatenate(groups))
+    solved = Solved(*(np.concatenate(values, axis=1)[:, back] for values in zip(*parts, strict=True)))
     values_of_all = (*solved, *(values[:, which] for values in forest.distances()))
     per_cell = zip(*(forest.by_cell(values) for values in values_of_all), strict=True)
     return [

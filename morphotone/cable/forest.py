@@ -45,7 +45,7 @@ class Solved(NamedTuple):
 
 
 class Membrane(NamedTuple):
-    """Passive constants with the spine factor F in them, shape (1,) where all rows agree, else (rows,)."""
+    """Passive constants with the spine factor F in them; shape (1,) where all rows agree, else (rows,)."""
 
     R_i: Real  # ohm cm
     leak: Real  # F/R_m, S/cm2
@@ -54,13 +54,13 @@ class Membrane(NamedTuple):
 
 def membrane_of(kind: Index, assumptions: Assumptions) -> Membrane:
     """Return the constants of each type code under given assumptions."""
-    codes, which = np.unique(kind, return_inverse=True)
-    domains = [assumptions.of(int(code)) for code in codes]
-    if all(domain == domains[0] for domain in domains):
-        domains, which = domains[:1], np.zeros(1, np.int64)
+    domains = [code for code in assumptions.domains if (kind == code).any()]
+    which = np.zeros(len(kind) if domains else 1, np.int64)
+    for index, code in enumerate(domains, start=1):
+        which[kind == code] = index
     constants = [
-        (d.R_i_ohm_cm, d.spine_factor / d.R_m_ohm_cm2, d.spine_factor * d.C_m_uF_cm2 * FARAD_PER_MICROFARAD)
-        for d in domains
+        (m.R_i_ohm_cm, m.spine_factor / m.R_m_ohm_cm2, m.spine_factor * m.C_m_uF_cm2 * FARAD_PER_MICROFARAD)
+        for m in (assumptions.membrane, *(assumptions.of(code) for code in domains))
     ]
     return Membrane(*np.array(constants)[which].T)
 
