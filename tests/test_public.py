@@ -42,12 +42,18 @@ def test_importing_morphotone_loads_nothing_heavy():
     assert loaded_after("import morphotone") == set()
 
 
-@pytest.mark.parametrize("words", [["--help"], ["--version"], ["survey", "--help"], ["vet", "--help"]])
-def test_help_does_not_wait_for_what_it_does_not_need(words):
-    code = f"from morphotone.commands import main\ntry:\n    main({words!r})\nexcept SystemExit:\n    pass"
-    light = len(words) == 1
-    assert not light or loaded_after(code) == set()
-    assert subprocess.run([sys.executable, "-m", "morphotone", *words], capture_output=True).returncode == 0
+@pytest.mark.parametrize("word", ["--help", "--version"])
+def test_help_does_not_wait_for_what_it_does_not_need(word):
+    """As `python -m morphotone` runs it, but in a process that then tells what it has loaded."""
+    code = f"""
+import runpy, sys
+sys.argv = ["morphotone", {word!r}]
+try:
+    runpy.run_module("morphotone", run_name="__main__")
+except SystemExit as left:
+    assert left.code == 0
+"""
+    assert loaded_after(code) == set()
 
 
 def test_star_import_brings_the_public_names():
