@@ -166,9 +166,7 @@ def _kind_of_rows(shape: Shape, theta2: Values) -> NDArray[np.int64]:
     kind: NDArray[np.int64] = _FIRST_CLASS + classes
     kind[(size > _THETAS2[-1]) | (taper > _WIDEST_TAPER)] = _CUT
     straight = taper == 0.0
-    if not np.iscomplexobj(
-        theta2
-    ):  # on the negative axis of s V oscillates, which the series can, and Θ is not real
+    if not np.iscomplexobj(theta2):  # with g < 0 V oscillates: Θ is not real, and the series takes Θ²
         straight &= theta2.min(axis=1) > 0.0
     kind[straight] = _CYLINDER
     cut = np.flatnonzero(kind == _CUT)
