@@ -23,7 +23,7 @@ Complex = NDArray[np.complex128]
 HIGHEST_HZ = RANGES["hz"].high
 """Up to here a membrane of R_m and C_m alone is a model of a neuron's (from memory)."""
 
-_PER_DECADE = 16
+_PER_DECADE = 20
 _LOWEST = 0.1  # 2πfτ from where on √2 is looked for: a site 250 λ away is there already
 
 
@@ -147,9 +147,9 @@ def half_power_hz(
 
     Notes
     -----
-    All sites share one logarithmic grid of 16 frequencies per decade, solved once; between its points the
+    All sites share one logarithmic grid of 20 frequencies per decade, solved once; between its points the
     logarithm of the attenuation is a polynomial through eight neighbours, which places the frequency to
-    better than 1e-8 (tests/cable/test_response.py).
+    better than 1e-7 (tests/cable/test_response.py).
     """
     if not cells:
         return []

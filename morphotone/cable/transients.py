@@ -206,7 +206,7 @@ def transients(
     """
     if not cells:
         return []
-    window = _Window.of(current, slowest_ms(assumptions))
+    window = Window.of(current, slowest_ms(assumptions))
     solved = _solved(cells, assumptions, window.line, nodes)
     return [_transients(cable, window, along) for cable, along in zip(cells, solved, strict=True)]
 
@@ -248,7 +248,7 @@ def potentials(
 
 
 @dataclass(frozen=True, eq=False)
-class _Window:
+class Window:
     """All that the responses to one current share, whatever the cell.
 
     ``times`` are even in ln t; ``kernel`` turns impedances (MΩ) into responses to 1 fC (µV) at them,
@@ -265,7 +265,7 @@ class _Window:
 
     @staticmethod
     @lru_cache(maxsize=16)
-    def of(current: SynapticCurrent, slowest: float) -> "_Window":
+    def of(current: SynapticCurrent, slowest: float) -> "Window":
         """Return the window for a current and the slowest membrane time constant (ms)."""
         first = FIRST_TIME * current.rise_ms
         last = _LAST_TIME * (current.rise_ms + current.decay_ms + slowest)
@@ -277,7 +277,7 @@ class _Window:
             for each in (line, contour(first, last, _REFERENCE))
         )
         transform = current.transform(line.s)
-        return _Window(
+        return Window(
             current,
             line,
             times,
@@ -344,7 +344,7 @@ def _solved(
         yield _Along(chosen, R_in[:, 0], R_transfer[:, 0], *impedances)
 
 
-def _transients(cable: Cable, window: _Window, along: _Along) -> Transients:
+def _transients(cable: Cable, window: Window, along: _Along) -> Transients:
     """Read off one cell's responses."""
     at_peak = (_pairs(along.Z_in) @ window.at_peak)[:, 0]
     local, between = at_peak[1:], np.sqrt(at_peak[1:] * at_peak[0])
@@ -357,7 +357,7 @@ def _transients(cable: Cable, window: _Window, along: _Along) -> Transients:
     )
 
 
-def _responses(window: _Window, Z: Complex, R: Real, scale: Real) -> Responses:
+def _responses(window: Window, Z: Complex, R: Real, scale: Real) -> Responses:
     """Read off responses block by block; ``scale`` is what ρ is multiplied with."""
     starts = range(0, max(len(Z), 1), _ROWS)
     shapes = np.concatenate(
@@ -368,7 +368,7 @@ def _responses(window: _Window, Z: Complex, R: Real, scale: Real) -> Responses:
     return Responses(per_pA * peak, peak, to_peak, rise, width, per_pA * R, shapes[4], error_ms)
 
 
-def _shapes(window: _Window, Z: Complex, scale: Real) -> Real:
+def _shapes(window: Window, Z: Complex, scale: Real) -> Real:
     """Return peak (per unit charge), time to peak, rise, half-width, error and error_ms, one row each."""
     curves = _pairs(Z) @ window.kernel
     highest = np.clip(curves.argmax(axis=1), neighbours.LEFT, curves.shape[1] - 1 - neighbours.RIGHT)
@@ -388,7 +388,7 @@ def _shapes(window: _Window, Z: Complex, scale: Real) -> Real:
     return np.stack((peak, to_peak, rise, width, bound / peak, error_ms))
 
 
-def _crossing(window: _Window, curves: Real, highest: Index, level: Real, way: int) -> tuple[Real, Real]:
+def _crossing(window: Window, curves: Real, highest: Index, level: Real, way: int) -> tuple[Real, Real]:
     """Return when each curve passes a level on one side of its highest point, ms, and there |dV/d ln t|.
 
     ``way`` is −1 before, 1 after the highest point.  The two grid points on either side of the crossing are

@@ -1,7 +1,5 @@
 """Delays against derivatives at 50 digits, and the laws they obey."""
 
-from dataclasses import dataclass
-
 import numpy as np
 import pytest
 from hypothesis import given, settings
@@ -14,8 +12,9 @@ from morphotone.cable.electrotonus import solve
 from morphotone.cable.tree import build
 from morphotone.reading.reconstruction import reconstruct
 from tests import definitions, trees
+from tests.cable.at_rate import AtRate
 from tests.cable.test_laws import with_gauss_points, with_short_pieces
-from tests.definitions import Choices, Constants, cable_of
+from tests.definitions import Choices, cable_of
 
 modest = settings(deadline=None, max_examples=15, derandomize=True)
 keys = st.integers(0, 10_000)
@@ -38,16 +37,6 @@ def solved(swc, assumptions=DEFAULTS):
 
 
 # ---------------------------------------------------------------- against the definitions
-
-
-@dataclass(frozen=True)
-class AtRate(Constants):
-    """Constants whose admittance is asked for at a real rate s (1/s) instead of a frequency."""
-
-    def g(self, s):
-        return (
-            mpf(self.F) * (1 / mpf(self.R_m) + s * mpf(self.C_m) * mpf("1e-6")) * definitions.US_UM2_PER_S_CM2
-        )
 
 
 STEP = mpf("1e-14")  # 1/s: the difference quotient is off by (STEP τ)², and keeps 30 of 50 digits
