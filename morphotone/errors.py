@@ -31,6 +31,10 @@ class MorphotoneError(Exception):
     """Base of every error that is the input's or the call's, not the program's."""
 
 
+class TurnedAwayError(MorphotoneError):
+    """A file was turned away, and the run was told to stop at the first."""
+
+
 class ReadingError(MorphotoneError):
     """A file that cannot be read as a reconstruction.
 

@@ -56,7 +56,7 @@ STAGES = (
     ("elements", "morphotone.cable.forest.pi_of_frusta"),
     ("sweeps", "morphotone.cable.forest.sweep"),
     ("sweeps", "morphotone.cable.forest.path_sums"),
-    ("tables", "morphotone.questions.survey.branches_of"),
+    ("tables", "morphotone.questions.cell.branches_of"),
     ("tables", "morphotone.questions.survey.findings_table"),
     ("tables", "morphotone.questions.survey.cell_row"),
     ("tables", "morphotone.questions.survey.branch_table"),

@@ -22,7 +22,8 @@ from scipy.optimize import brentq
 Index = NDArray[np.int64]
 Real = NDArray[np.float64]
 
-_FIRST = (0.03, 300.0)  # dendrites of L from 0.2 to 20 have their first modes there
+_REACH = 300.0  # of the first points, where the modes of dendrites of L from 0.2 on start
+_SPAN = 1e4  # highest over lowest of the first points
 _FARTHER = 100.0  # how far a search goes on when it has not found enough
 _FARTHEST = 1e14  # a lone soma with a shunt has one mode only, however far one looks
 _CLOSED = 1e-10  # relative width in 1 + w of a bracket that is closed
@@ -55,11 +56,14 @@ class Search:
         How many distinct poles.
     known : int
         How many poles are known to be at w = 0: 1 for a uniform cell, 0 for any other, which has none there.
+    enough : float
+        Below which w there are about as many modes as poles are wanted, or more; infinite if unknown.
     """
 
-    def __init__(self, wanted: int, known: int) -> None:
+    def __init__(self, wanted: int, known: int, enough: float = np.inf) -> None:
         self._wanted = wanted
         self._known = known
+        self._reach = min(_REACH, enough)
         self._w: Real = np.zeros(1)
         self._count: Index = np.full(1, known)
         self._log: Real = np.full(1, np.nan)  # not evaluated: a pole may be there
@@ -135,8 +139,9 @@ class Search:
     def _points_in(self, place: _Bracket, n: int) -> Real:
         if place.high == len(self._w):
             last = float(self._w[place.low])
-            first, end = (last * _FARTHER ** (1 / n), last * _FARTHER) if last else _FIRST
-            return np.geomspace(first, end, n)
+            if last == 0.0:
+                return np.geomspace(self._reach / _SPAN, self._reach, n)
+            return np.geomspace(last * _FARTHER ** (1 / n), last * _FARTHER, n)
         low, high = self._w[place.low], self._w[place.high]
         spaced: Real = (np.sqrt(low) + (np.sqrt(high) - np.sqrt(low)) * np.arange(1, n + 1) / (n + 1)) ** 2
         model = self._model(place)

@@ -40,7 +40,8 @@ from morphotone.units import MICROSIEMENS_PER_NANOSIEMENS, MICROSIEMENS_PER_S_CM
 Index = NDArray[np.int64]
 Real = NDArray[np.float64]
 
-_LONGEST = 1.0  # of a piece, |Θ| at the fastest rate; the first resonance is at π
+# Of a piece: |Θ| at the fastest rate, as the first resonance is at π; and L, so short that a forest cuts none.
+_LONGEST, _LONGEST_AT_REST = 1.0, 4.0
 _LARGE = 1e100
 
 
@@ -155,9 +156,10 @@ def _cut(cable: Cable, assumptions: Assumptions, rate: float) -> tuple[Cable, In
     Along a linear taper L grows with the square root of the radius.
     """
     R_i, leak, capacity = membrane_of(cable.kind, assumptions)
-    density = np.maximum(leak, np.abs(capacity * rate - leak))
-    theta = electrotonic_lengths(cable.r_start, cable.r_end, cable.length, R_i, density)
-    pieces = np.maximum(np.ceil(theta / _LONGEST), 1.0).astype(np.int64)
+    geometry = cable.r_start, cable.r_end, cable.length
+    theta = electrotonic_lengths(*geometry, R_i, np.maximum(capacity * rate - leak, 0.0)) / _LONGEST
+    at_rest = electrotonic_lengths(*geometry, R_i, leak) / _LONGEST_AT_REST
+    pieces = np.ceil(np.maximum(np.maximum(theta, at_rest), 1.0)).astype(np.int64)
     ends = np.cumsum(pieces) - 1
     of = np.repeat(np.arange(len(pieces)), pieces)
     first = (ends - pieces + 1)[of]
@@ -175,7 +177,6 @@ def _cut(cable: Cable, assumptions: Assumptions, rate: float) -> tuple[Cable, In
         length=cable.length[of] * (begin + finish) / ((here + there) * pieces[of]),
         sample=cable.sample[of],
         node=np.where(cable.node < 0, -1, ends[cable.node]),
-        straight=cable.straight[of],
     )
     return finer, ends
 
@@ -212,7 +213,7 @@ def fold(plan: Schedule, chain: Chain, load: Values) -> Folded:
             continue
         lower = Chain(*(part[child] for part in chain))
         joined, log_size = _moderate(_joined(upper, load[at], lower))
-        negative[at] = _opposite(joined.B, upper.B) ^ (lower.B.real < 0.0)
+        negative[at] = _opposite(joined.B, upper.B)
         log_factor[at] += log_size
         for part, new in zip(chain, joined, strict=True):
             part[child] = new

@@ -26,7 +26,8 @@ from numpy.typing import NDArray
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.bracketing import Pole, Search
 from morphotone.cable.counting import line_up
-from morphotone.cable.forest import Column
+from morphotone.cable.forest import Column, membrane_of
+from morphotone.cable.frustum import electrotonic_lengths
 from morphotone.cable.peeling import Peeled, peel
 from morphotone.cable.tree import Cable
 from morphotone.errors import AssumptionError
@@ -131,7 +132,11 @@ def time_constants(cells: Sequence[Cable], assumptions: Assumptions, count: int 
         int(_alike(taus) and assumptions.soma_shunt_nS == 0.0 and _has_membrane(cable))
         for cable, taus in zip(cells, membranes, strict=True)
     ]
-    poles = _poles(cells, assumptions, slowest, [Search(count, at_zero) for at_zero in known])
+    searches = [
+        Search(count, at_zero, _enough(cable, assumptions, tau, count))
+        for cable, at_zero, tau in zip(cells, known, slowest.tolist(), strict=True)
+    ]
+    poles = _poles(cells, assumptions, slowest, searches)
     amplitudes = _amplitudes_at_soma(cells, assumptions, slowest, poles)
     return [
         _modes_of(*each, assumptions) for each in zip(cells, slowest.tolist(), poles, amplitudes, strict=True)
@@ -167,6 +172,20 @@ def _membrane_taus(cable: Cable, assumptions: Assumptions) -> Real:
     soma = [SOMA] if cable.traced.soma.area > 0.0 or not _has_membrane(cable) else []
     membranes = [assumptions.of(code) for code in (*codes, *soma)]
     return np.array([membrane.R_m_ohm_cm2 * membrane.C_m_uF_cm2 / _MS_PER_S for membrane in membranes])
+
+
+def _enough(cable: Cable, assumptions: Assumptions, slowest_ms: float, count: int) -> float:
+    """Return below which w there are at least so many modes, for a taper about: those of one held frustum.
+
+    The k-th mode of a cell is slower than the k-th of any part of it whose ends are held at rest (Courant &
+    Hilbert 1953, vol. 1, ch. VI: attribution from memory), q·R_m·C_m = 1 + (kπ/L)² in a cylinder. This keeps
+    the first points near the modes of cells that are very many λ long.
+    """
+    R_i, leak, capacity = membrane_of(cable.kind, assumptions)
+    L = electrotonic_lengths(cable.r_start, cable.r_end, cable.length, R_i, leak)
+    with np.errstate(divide="ignore"):
+        held = (1.0 + (count * np.pi / L) ** 2) * leak / capacity
+    return float(held.min() * slowest_ms / _MS_PER_S - 1.0)
 
 
 def _has_membrane(cable: Cable) -> bool:

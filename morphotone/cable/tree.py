@@ -29,8 +29,6 @@ class Cable:
         The sample at the node; the head of the soma, or the root sample, at node 0.
     node : ndarray of int64, shape (samples,)
         The node of each sample; -1 for samples that are not analysed.
-    straight : ndarray, shape (nodes,)
-        Straight distance from the soma's centre, µm.
     traced : Traced
         What the cable was built from.
     """
@@ -42,7 +40,6 @@ class Cable:
     length: Real
     sample: Index
     node: Index
-    straight: Real
     traced: Traced
 
     def areas(self) -> tuple[Real, Real]:
@@ -86,7 +83,6 @@ def build(rec: Reconstruction, assumptions: Assumptions) -> Cable:
     cut = (traced.share > 0) & (traced.share < 1)
     node[cut] = -1  # the cable ends before these samples
     grown = traced.share[ends] * (traced.radius[ends] - r_start[ends])
-    centre = traced.soma.centre if len(traced.soma.members) else traced.position[traced.root]
     return Cable(
         parent=np.append(-1, parent),
         kind=traced.kind[sample],
@@ -95,7 +91,6 @@ def build(rec: Reconstruction, assumptions: Assumptions) -> Cable:
         length=np.append(0.0, length[ends]),
         sample=sample,
         node=node,
-        straight=np.append(0.0, np.linalg.norm(traced.position[ends] - centre, axis=1)),
         traced=traced,
     )
 

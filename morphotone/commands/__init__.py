@@ -10,7 +10,7 @@ import traceback
 from collections.abc import Sequence
 from importlib import import_module
 
-from morphotone.errors import AssumptionError, MorphotoneError, ResultsError
+from morphotone.errors import MorphotoneError, ReadingError, TurnedAwayError
 
 COMMANDS = {
     "vet": "which reconstructions can be trusted for cable work, and what is wrong with the others",
@@ -58,7 +58,7 @@ def main(argv: Sequence[str] | None = None) -> int:
         if args.debug:
             traceback.print_exc()
         print(f"morphotone {chosen}: {error}", file=sys.stderr)
-        return WRONG_USAGE if isinstance(error, AssumptionError | ResultsError) else TURNED_AWAY
+        return TURNED_AWAY if isinstance(error, ReadingError | TurnedAwayError) else WRONG_USAGE
 
 
 def _parser(arguments: Sequence[str]) -> tuple[argparse.ArgumentParser, str | None]:

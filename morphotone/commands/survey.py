@@ -35,7 +35,9 @@ from morphotone.showing.tables import csv_texts
 
 NAME = "survey"
 _LEADING = ["file", "cell"]  # columns that say whose row it is
-_TEXT = dict.fromkeys(("file", "cell", "domain", "domains_differ", "reason", "sentence"), str)
+_TYPES = dict.fromkeys(
+    ("file", "cell", "domain", "domains_differ", "reason", "sentence"), "str"
+) | dict.fromkeys(("line", "sample", "count"), "Int64")
 # From 3.1 on pandas reads every number back equal, and warns who asks for it.
 _PANDAS = tuple(int(part) for part in pd.__version__.split(".")[:2])
 _EXACT: dict[str, Any] = {"float_precision": "round_trip"} if _PANDAS < (3, 1) else {}
@@ -111,14 +113,16 @@ def survey(
     patterns : sequence of str
         Which file names count.
     workers : int
-        Number of processes.
+        Number of processes; 0 for one per processor.
     strict : bool
         Stop at the first file turned away.
 
     Raises
     ------
     MorphotoneError
-        The folder holds no such file; or in strict mode, the first file turned away.
+        The folder is missing or holds no such file.
+    TurnedAwayError
+        In strict mode, the first file turned away.
     ResultsError
         The results folder belongs to another run or cannot be written to.
     """
@@ -153,7 +157,7 @@ def write_survey(
             partial(outcomes, request=request),
             ledger=ledger,
             progress=progress,
-            workers=workers,
+            workers=workers if workers > 0 else joblib.cpu_count(),
             strict=strict,
         )
         export(ledger, names, {**columns, TURNED_AWAY: TURNED_AWAY_HEADER})
@@ -248,7 +252,7 @@ def read_survey(folder: Path, tally: Tally) -> Survey:
 
 def _read_csv(path: Path) -> pd.DataFrame:
     """Read a table back with equal numbers, and with names that look like missing values left alone."""
-    table: pd.DataFrame = pd.read_csv(path, keep_default_na=False, na_values=[""], dtype=_TEXT, **_EXACT)
+    table: pd.DataFrame = pd.read_csv(path, keep_default_na=False, na_values=[""], dtype=_TYPES, **_EXACT)
     return table
 
 
@@ -288,7 +292,7 @@ def run(args: argparse.Namespace) -> int:
         args.into,
         Request(assumptions_of(args), args.keep_unfit, args.samples),
         patterns=args.pattern,
-        workers=args.workers if args.workers > 0 else joblib.cpu_count(),
+        workers=args.workers,
         strict=args.strict,
         progress=progress_on(sys.stderr),
     )

@@ -5,7 +5,7 @@ import os
 import sys
 import textwrap
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import chain
 from pathlib import Path
 from typing import Any
@@ -14,8 +14,9 @@ import pandas as pd
 
 from morphotone.cable.assumptions import Assumptions
 from morphotone.commands.options import add_assumption_options, assumptions_of
-from morphotone.errors import MorphotoneError, ReadingError
+from morphotone.errors import MorphotoneError, ReadingError, ResultsError
 from morphotone.night.folder import Found, find_files
+from morphotone.night.ledger import FILE as LEDGER
 from morphotone.night.progress import Progress, Silent, Step, progress_on
 from morphotone.night.results import atomic
 from morphotone.questions.columns import Columns
@@ -106,9 +107,11 @@ def vet(
 
 
 def _found(paths: Sequence[str | os.PathLike[str]]) -> Iterator[Found]:
+    """Yield all files; those of one folder among several names are led by the folder's."""
     for path in map(Path, paths):
         if path.is_dir():
-            yield from find_files(path)
+            for file in find_files(path):
+                yield file if len(paths) == 1 else replace(file, name=f"{path.as_posix()}/{file.name}")
         elif path.exists():
             yield Found(path, str(path), path.stat().st_size)
         else:
@@ -175,6 +178,10 @@ def run(args: argparse.Namespace) -> int:
     trust = vet(args.paths, assumptions_of(args), progress)
     print(screen(trust))
     if args.into:
+        if (args.into / LEDGER).exists():
+            raise ResultsError(
+                f"{args.into} holds a survey, whose findings.csv would be lost; choose another --into"
+            )
         for name, table in (("findings", trust.findings), ("grades", trust.files)):
             with atomic(args.into / f"{name}.csv") as stream:
                 table.to_csv(stream, index=False, lineterminator="\r\n")

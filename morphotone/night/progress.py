@@ -142,7 +142,7 @@ def describe(done: Step, whole: Step, seconds: float) -> str:
     rate = done.files / seconds if seconds > 0 else 0.0
     parts = [
         f"{done.files}/{whole.files} files",
-        f"{tqdm.format_sizeof(done.samples)} samples",
+        f"{_short(done.samples)} samples",
         f"{tqdm.format_sizeof(rate)} files/s",
         f"{done.turned_away} turned away",
         f"{tqdm.format_interval(seconds)} passed",
@@ -150,3 +150,8 @@ def describe(done: Step, whole: Step, seconds: float) -> str:
     if done.size and done.files < whole.files:
         parts.append(f"about {tqdm.format_interval(seconds * (whole.size / done.size - 1))} left")
     return ", ".join(parts)
+
+
+def _short(count: int) -> str:
+    """Return a count in at most five characters: 88, 40.9k, 3.12M."""
+    return str(count) if count < 1000 else str(tqdm.format_sizeof(count))

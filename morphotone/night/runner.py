@@ -18,7 +18,7 @@ from pathlib import Path
 from joblib.externals.loky import FIRST_COMPLETED, Future, get_reusable_executor, wait
 from joblib.externals.loky.process_executor import TerminatedWorkerError
 
-from morphotone.errors import MorphotoneError
+from morphotone.errors import TurnedAwayError
 from morphotone.night.folder import Found
 from morphotone.night.ledger import Entry, Ledger
 from morphotone.night.outcome import TURNED_AWAY, BatchFunction, Item, Outcome
@@ -88,7 +88,7 @@ def run(
 
     Raises
     ------
-    MorphotoneError
+    TurnedAwayError
         In strict mode, with the file and its sentence. Batches finished until then are in the ledger.
     KeyboardInterrupt
         As it comes; batches finished until then are in the ledger.
@@ -271,7 +271,7 @@ def _refuse(entries: Mapping[str, Entry], ledger: Ledger) -> None:
     """Raise for the first file that was turned away, now or in an earlier run."""
     names = [name for name, entry in entries.items() if entry.status == "turned away"]
     for _, row in ledger.rows(TURNED_AWAY, names):
-        raise MorphotoneError(
+        raise TurnedAwayError(
             f"stopped at the first file turned away (file, reason, sentence): {row.strip()}"
         )
 

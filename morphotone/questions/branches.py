@@ -5,11 +5,6 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from morphotone.cable.electrotonus import Electrotonus
-from morphotone.cable.forest import membrane_of
-from morphotone.cable.frustum import electrotonic_lengths
-from morphotone.questions.columns import Columns, case_suffixes
-from morphotone.reading.reconstruction import Reconstruction, domain_name
 from morphotone.units import NANOSIEMENS_PER_MICROSIEMENS, UM_PER_CM
 
 Index = NDArray[np.int64]
@@ -89,67 +84,6 @@ def branches_of(parent: Index) -> Branches:
         if up >= 0:
             order[branch] = order[up] + 1
     return Branches(of_node, head, end, above, np.array(order, np.int64), daughters[end])
-
-
-def branch_table(rec: Reconstruction, electrotonus: Electrotonus, branches: Branches) -> Columns:
-    """Return the columns of ``branches.csv``, one row per branch; README explains them.
-
-    Parameters
-    ----------
-    rec : Reconstruction
-        For sample numbers and domains.
-    electrotonus : Electrotonus
-        By node, its first case at 0 Hz.
-    branches : Branches
-        Of the same nodes.
-
-    Notes
-    -----
-    G∞ = (π/2)·d^(3/2)/sqrt(R_m·R_i), the input conductance of an endless cylinder, and the 3/2 power
-    ratio at branch points: Rall 1959, Exp Neurol 1:491–527.
-    """
-    cable = electrotonus.cable
-    membrane = membrane_of(cable.kind, electrotonus.cases[0].assumptions)
-    R_i, leak = (np.broadcast_to(values, cable.length.shape) for values in membrane[:2])
-    L = electrotonic_lengths(cable.r_start, cable.r_end, cable.length, R_i, leak)
-    length = branches.total(cable.length)
-    d_first, d_end = 2.0 * cable.r_end[branches.head], 2.0 * cable.r_end[branches.end]
-    mean = branches.total(cable.length * (cable.r_start + cable.r_end)) / length
-    total_L = branches.total(L)
-    lambda_start, lambda_end = (
-        np.sqrt(UM_PER_CM * radius / (2.0 * R_i * leak)) for radius in (cable.r_start, cable.r_end)
-    )
-    head, end = branches.head, branches.end
-    columns: Columns = {
-        "branch": np.arange(1, len(head) + 1),
-        "parent_branch": branches.parent + 1,
-        "order": branches.order,
-        "domain": [domain_name(kind) for kind in cable.kind[end].tolist()],
-        "sample_start": rec.number[cable.sample[cable.parent[head]]],
-        "sample_end": rec.number[cable.sample[end]],
-        "children": branches.children,
-        "length_um": length,
-        "diameter_first_um": d_first,
-        "diameter_mean_um": mean,
-        "diameter_end_um": d_end,
-        "area_um2": branches.total(sum(cable.areas(), start=np.zeros(1))),
-        "L": total_L,
-        "lambda_um": length / total_L,
-        "lambda_least_um": branches.least(np.minimum(lambda_start, lambda_end)),
-        "lambda_greatest_um": -branches.least(-np.maximum(lambda_start, lambda_end)),
-        "G_inf_start_nS": endless_conductance(d_first, R_i[head], leak[head]),
-        "G_inf_end_nS": endless_conductance(d_end, R_i[end], leak[end]),
-        "rall_ratio_end": rall_ratios(branches, d_first, d_end),
-        "path_end_um": electrotonus.path_um[end, 0],
-        "X_end": electrotonus.X[end, 0],
-    }
-    for case, suffix in enumerate(case_suffixes(electrotonus)):
-        columns[f"R_in_end_MOhm{suffix}"] = np.abs(electrotonus.Z_in[end, case])
-        columns[f"attenuation_to_soma_end{suffix}"] = np.exp(electrotonus.log_attenuation_to_soma[end, case])
-        columns[f"attenuation_from_soma_end{suffix}"] = np.exp(
-            electrotonus.log_attenuation_from_soma[end, case]
-        )
-    return columns
 
 
 def endless_conductance(diameter: Real, R_i: Real, leak: Real) -> Real:

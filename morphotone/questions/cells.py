@@ -7,16 +7,15 @@ import numpy as np
 from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.electrotonus import Electrotonus
 from morphotone.cable.forest import membrane_of
-from morphotone.cable.frustum import electrotonic_lengths
 from morphotone.cable.traced import AXON
-from morphotone.questions.branches import Branches, endless_conductance, rall_ratios
+from morphotone.questions.branches import endless_conductance, rall_ratios
+from morphotone.questions.cell import Cell
 from morphotone.questions.columns import case_suffixes
-from morphotone.reading.reconstruction import Reconstruction, domain_name
+from morphotone.reading.reconstruction import domain_name
 from morphotone.reading.soma import SOMA
-from morphotone.reading.vetting import SEVERITIES, Vetting
-from morphotone.units import PICOFARAD_PER_UF_CM2_UM2, UM_PER_CM
+from morphotone.reading.vetting import SEVERITIES
+from morphotone.units import PICOFARAD_PER_F_CM2_UM2
 
 Index = NDArray[np.int64]
 Real = NDArray[np.float64]
@@ -27,49 +26,30 @@ _DOMAINS = {AXON: "axon", 3: "basal", 4: "apical"}
 _FAR = (0.5, 1.0)  # X beyond which the share of dendritic membrane is told
 
 
-def cell_row(
-    rec: Reconstruction, vetting: Vetting, electrotonus: Electrotonus, branches: Branches
-) -> dict[str, Any]:
-    """Return the row of ``cells.csv`` that one cell gives, without its name; columns as in README.
+def cell_row(cell: Cell) -> dict[str, Any]:
+    """Return the row of ``cells.csv`` that one cell gives, without its name; README explains the columns.
 
-    Parameters
-    ----------
-    rec : Reconstruction
-        As analysed.
-    vetting : Vetting
-        Its grade and findings.
-    electrotonus : Electrotonus
-        By node, the cases of one assumptions object, the first at 0 Hz.
-    branches : Branches
-        Of the same nodes.
-
-    Notes
-    -----
     Dendritic membrane and dendritic tips are those outside soma and axon.
     """
-    assumptions = electrotonus.cases[0].assumptions
-    row: dict[str, Any] = {"sha256": rec.sha256, "grade": vetting.grade}
+    row: dict[str, Any] = {"sha256": cell.rec.sha256, "grade": cell.vetting.grade}
     for severity in SEVERITIES:
-        row[f"findings_{severity}"] = sum(f.severity == severity for f in vetting.findings)
-    row |= _counts(rec, electrotonus, branches)
-    row |= _sizes(electrotonus, branches, assumptions)
-    row |= _space_constants(electrotonus, assumptions)
-    row |= _rall_conditions(electrotonus, branches, assumptions)
-    row |= _distances(rec, electrotonus, branches)
-    for case, suffix in enumerate(case_suffixes(electrotonus)):
-        row |= {name + suffix: value for name, value in _attenuation(electrotonus, branches, case)}
-    return row | _assumed(assumptions)
+        row[f"findings_{severity}"] = sum(f.severity == severity for f in cell.vetting.findings)
+    row |= _counts(cell) | _sizes(cell) | _space_constants(cell) | _rall_conditions(cell) | _distances(cell)
+    for case, suffix in enumerate(case_suffixes(cell.electrotonus)):
+        row |= {name + suffix: value for name, value in _attenuation(cell, case)}
+    return row | _assumed(cell.assumptions)
 
 
-def _counts(rec: Reconstruction, electrotonus: Electrotonus, branches: Branches) -> dict[str, Any]:
-    cable = electrotonus.cable
-    traced = cable.traced
+def _counts(cell: Cell) -> dict[str, Any]:
+    branches, traced = cell.branches, cell.cable.traced
+    stems = int((branches.parent < 0).sum())
+    root_branches = not len(traced.soma.members) and stems > 1
     return {
-        "samples": len(rec.number),
-        "samples_analysed": int((cable.node >= 0).sum()),
+        "samples": len(cell.rec.number),
+        "samples_analysed": int((cell.cable.node >= 0).sum()),
         "branches": len(branches.head),
-        "stems": int((branches.parent < 0).sum()),
-        "branch_points": int((branches.children > 1).sum()),
+        "stems": stems,
+        "branch_points": int((branches.children > 1).sum()) + int(root_branches),
         "tips": len(branches.tips),
         "order_greatest": int(branches.order.max(initial=0)),
         "soma_rule": traced.soma.rule,
@@ -81,60 +61,58 @@ def _counts(rec: Reconstruction, electrotonus: Electrotonus, branches: Branches)
     }
 
 
-def _sizes(electrotonus: Electrotonus, branches: Branches, assumptions: Assumptions) -> dict[str, float]:
+def _sizes(cell: Cell) -> dict[str, float]:
     """Return cable length (µm) and membrane area (µm2) by domain, and the membrane's capacitance (pF)."""
-    cable = electrotonus.cable
-    area = sum(cable.areas(), start=np.zeros(1))
-    soma_area = cable.traced.soma.area
-    capacity = membrane_of(np.append(cable.kind, SOMA), assumptions).capacity
-    farads = float((np.append(area, soma_area) * capacity).sum()) * 1e6 * PICOFARAD_PER_UF_CM2_UM2
-    sizes = {"soma_area_um2": soma_area, "length_um": float(cable.length.sum())}
-    sizes["area_um2"] = float(area.sum()) + soma_area
-    for name, here in _domains(cable.kind):
-        sizes[f"length_{name}_um"] = float(cable.length[here].sum())
-        sizes[f"area_{name}_um2"] = float(area[here].sum())
-    return sizes | {"capacitance_pF": farads}
+    soma_area = cell.cable.traced.soma.area
+    soma_capacity = float(membrane_of(np.array([SOMA]), cell.assumptions).capacity[0])
+    farads = float((cell.area * cell.membrane.capacity).sum()) + soma_area * soma_capacity
+    sizes = {
+        "soma_area_um2": soma_area,
+        "length_um": float(cell.cable.length.sum()),
+        "area_um2": float(cell.area.sum()) + soma_area,
+    }
+    for name, here in _domains(cell.cable.kind):
+        sizes[f"length_{name}_um"] = float(cell.cable.length[here].sum())
+        sizes[f"area_{name}_um2"] = float(cell.area[here].sum())
+    return sizes | {"capacitance_pF": farads * PICOFARAD_PER_F_CM2_UM2}
 
 
 def _domains(kind: Index) -> Iterator[tuple[str, Mask]]:
     """Yield name and nodes of every domain that has columns; node 0 belongs to none."""
-    frustum = np.arange(len(kind)) > 0
+    other = np.arange(len(kind)) > 0
     for code, name in _DOMAINS.items():
-        yield name, frustum & (kind == code)
-    yield "other", frustum & ~np.isin(kind, list(_DOMAINS))
+        here = kind == code
+        here[0] = False
+        other &= ~here
+        yield name, here
+    yield "other", other
 
 
-def _space_constants(electrotonus: Electrotonus, assumptions: Assumptions) -> dict[str, float]:
+def _space_constants(cell: Cell) -> dict[str, float]:
     """Return λ (µm): cable length over L, and the least and greatest local value, in all and by domain."""
-    cable = electrotonus.cable
-    R_i, leak, _ = membrane_of(cable.kind, assumptions)
-    L = electrotonic_lengths(cable.r_start, cable.r_end, cable.length, R_i, leak)
-    ends = [np.sqrt(UM_PER_CM * radius / (2.0 * R_i * leak)) for radius in (cable.r_start, cable.r_end)]
-    least, greatest = np.minimum(*ends), np.maximum(*ends)
+    least, greatest = cell.lambdas
     columns = {}
-    everywhere = np.arange(len(L)) > 0
-    for name, here in [("", everywhere), *((f"_{name}", here) for name, here in _domains(cable.kind))]:
+    everywhere = np.arange(len(least)) > 0
+    for name, here in [("", everywhere), *((f"_{name}", here) for name, here in _domains(cell.cable.kind))]:
         found = bool(here.any())
-        columns[f"lambda{name}_um"] = float(cable.length[here].sum() / L[here].sum()) if found else np.nan
+        length = cell.cable.length[here].sum()
+        columns[f"lambda{name}_um"] = float(length / cell.L[here].sum()) if found else np.nan
         columns[f"lambda{name}_least_um"] = float(least[here].min()) if found else np.nan
         columns[f"lambda{name}_greatest_um"] = float(greatest[here].max()) if found else np.nan
     return columns
 
 
-def _rall_conditions(
-    electrotonus: Electrotonus, branches: Branches, assumptions: Assumptions
-) -> dict[str, float]:
+def _rall_conditions(cell: Cell) -> dict[str, float]:
     """Return how far the tree is from one equivalent cylinder (Rall 1962, Ann N Y Acad Sci 96:1071–1092)."""
-    cable = electrotonus.cable
+    cable, branches = cell.cable, cell.branches
     stems = branches.parent < 0
     d_first, d_end = 2.0 * cable.r_end[branches.head], 2.0 * cable.r_end[branches.end]
-    membrane = membrane_of(cable.kind, assumptions)
-    R_i, leak = (np.broadcast_to(values, cable.kind.shape)[branches.head] for values in membrane[:2])
-    G_inf = endless_conductance(d_first, R_i, leak)
+    heads = branches.head
+    G_inf = endless_conductance(d_first, cell.membrane.R_i[heads], cell.membrane.leak[heads])
     ratios = rall_ratios(branches, d_first, d_end)
     ratios = ratios[~np.isnan(ratios)]
-    tips = _dendritic(cable.kind[branches.end]) & (branches.children == 0)
-    X = electrotonus.X[branches.end[tips], 0]
+    tips = branches.end[branches.tips]
+    X = cell.electrotonus.X[tips[cell.dendritic[tips]], 0]
     return {
         "G_inf_stems_nS": float(G_inf[stems].sum()),
         "trunk_diameter_um": float((d_first[stems] ** 1.5).sum() ** (2.0 / 3.0)),
@@ -147,57 +125,62 @@ def _rall_conditions(
     }
 
 
-def _distances(rec: Reconstruction, electrotonus: Electrotonus, branches: Branches) -> dict[str, float]:
+def _distances(cell: Cell) -> dict[str, float]:
     """Return the greatest path, the farthest dendritic tip, and how much dendritic membrane lies far out."""
-    cable, path = electrotonus.cable, electrotonus.path_um[:, 0]
-    farthest = _farthest_tip(electrotonus, branches)
-    shares = {
-        f"share_beyond_X{limit:g}": share_beyond(electrotonus, limit, _dendritic(cable.kind))
-        for limit in _FAR
-    }
+    path, farthest = cell.electrotonus.path_um[:, 0], cell.farthest_tip
     return {
         "path_greatest_um": float(path.max()),
-        "farthest_tip_sample": int(rec.number[cable.sample[farthest]]),
+        "farthest_tip_sample": int(cell.rec.number[cell.cable.sample[farthest]]),
         "farthest_tip_path_um": float(path[farthest]),
-        "farthest_tip_X": float(electrotonus.X[farthest, 0]),
-        **shares,
+        "farthest_tip_X": float(cell.electrotonus.X[farthest, 0]),
+        **{f"share_beyond_X{limit:g}": share_beyond(cell, limit, cell.dendritic) for limit in _FAR},
     }
 
 
-def share_beyond(electrotonus: Electrotonus, limit: float, chosen: Mask) -> float:
-    """Return the share of the membrane of chosen frusta that lies beyond an X; NaN without membrane.
+def share_beyond(cell: Cell, limit: float, chosen: Mask) -> float:
+    """Return the share of the membrane of chosen frusta (by node) beyond an X; NaN without membrane.
 
     Exact: along a linear taper X grows with the square root of the radius, and membrane with its square.
     """
-    cable = electrotonus.cable
-    area = np.where(chosen, sum(cable.areas(), start=np.zeros(1)), 0.0)
+    cable = cell.cable
+    area = np.where(chosen, cell.area, 0.0)
     if not area.any():
         return float("nan")
-    far, near = electrotonus.X[:, 0], electrotonus.X[np.maximum(cable.parent, 0), 0]
-    span = far - near
-    reached = np.clip(np.divide(limit - near, span, out=(near < limit) * 1.0, where=span > 0), 0.0, 1.0)
-    root_start, root_end = np.sqrt(cable.r_start), np.sqrt(cable.r_end)
-    root = root_start + reached * (root_end - root_start)
-    along = reached * (root + root_start) / (root_end + root_start)  # share of the axis up to the limit
-    within = np.where(reached < 1.0, along * (root**2 + cable.r_start) / (cable.r_end + cable.r_start), 1.0)
+    X = cell.electrotonus.X[:, 0]
+    beyond = limit < X
+    within = (~beyond).astype(np.float64)
+    crossing = np.flatnonzero(beyond & (X[cable.parent] < limit))
+    within[crossing] = _share_within(cell, limit, crossing)
     return float((area * (1.0 - within)).sum() / area.sum())
 
 
-def _attenuation(electrotonus: Electrotonus, branches: Branches, case: int) -> Iterator[tuple[str, float]]:
+def _share_within(cell: Cell, limit: float, which: Index) -> Real:
+    """Return the share of the membrane of some frusta on the soma's side of an X that they cross."""
+    cable, X = cell.cable, cell.electrotonus.X[:, 0]
+    near, far = X[cable.parent[which]], X[which]
+    start, end = cable.r_start[which], cable.r_end[which]
+    reached = (limit - near) / (far - near)
+    root = np.sqrt(start) + reached * (np.sqrt(end) - np.sqrt(start))
+    along = reached * (root + np.sqrt(start)) / (np.sqrt(end) + np.sqrt(start))  # share of the axis
+    share: Real = along * (root**2 + start) / (end + start)
+    return share
+
+
+def _attenuation(cell: Cell, case: int) -> Iterator[tuple[str, float]]:
     """Yield what is told of every case: R_in at the soma, attenuation at the farthest tip and on average."""
-    cable = electrotonus.cable
-    farthest = _farthest_tip(electrotonus, branches)
-    to_soma = np.exp(electrotonus.log_attenuation_to_soma[:, case])
-    from_soma = np.exp(electrotonus.log_attenuation_from_soma[:, case])
+    electrotonus, farthest = cell.electrotonus, cell.farthest_tip
+    attenuation = {
+        "to": np.exp(electrotonus.log_attenuation_to_soma[:, case]),
+        "from": np.exp(electrotonus.log_attenuation_from_soma[:, case]),
+    }
     yield "R_in_MOhm", float(np.abs(electrotonus.Z_in[0, case]))
-    yield "attenuation_to_soma_farthest", float(to_soma[farthest])
-    yield "attenuation_from_soma_farthest", float(from_soma[farthest])
-    at_start, at_end = (np.where(_dendritic(cable.kind), part, 0.0) for part in cable.areas())
-    area = at_end.copy()
-    np.add.at(area, cable.parent[1:], at_start[1:])
-    total = area.sum()
-    for name, values in (("to", to_soma), ("from", from_soma)):
-        yield f"attenuation_{name}_soma_mean", float((area * values).sum() / total) if total else np.nan
+    for direction, values in attenuation.items():
+        yield f"attenuation_{direction}_soma_farthest", float(values[farthest])
+    at_start, at_end = (np.where(cell.dendritic, part, 0.0) for part in cell.areas)
+    total = (at_start + at_end).sum()
+    for direction, values in attenuation.items():
+        whole = (at_end * values).sum() + (at_start * values[cell.cable.parent]).sum()
+        yield f"attenuation_{direction}_soma_mean", float(whole / total) if total else np.nan
 
 
 def _assumed(assumptions: Assumptions) -> dict[str, Any]:
@@ -212,20 +195,6 @@ def _assumed(assumptions: Assumptions) -> dict[str, Any]:
         "axon": assumptions.axon,
         "orphans": assumptions.orphans,
     }
-
-
-def _dendritic(kind: Index) -> Mask:
-    return np.asarray((kind != SOMA) & (kind != AXON))
-
-
-def _farthest_tip(electrotonus: Electrotonus, branches: Branches) -> int:
-    """Return the node of the dendritic tip with the longest path; of all tips where no dendrite is."""
-    tips = branches.end[branches.tips]
-    if not len(tips):
-        return 0
-    dendritic = tips[_dendritic(electrotonus.cable.kind[tips])]
-    tips = dendritic if len(dendritic) else tips
-    return int(tips[np.argmax(electrotonus.path_um[tips, 0])])
 
 
 def _mean(values: Real) -> float:

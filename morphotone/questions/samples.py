@@ -5,30 +5,21 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from morphotone.cable.electrotonus import Electrotonus
-from morphotone.questions.branches import Branches
+from morphotone.questions.cell import Cell
 from morphotone.questions.columns import Columns, case_suffixes
-from morphotone.reading.reconstruction import Reconstruction, domain_name
+from morphotone.reading.reconstruction import domain_name
 
 
-def sample_table(rec: Reconstruction, electrotonus: Electrotonus, branches: Branches) -> Columns:
+def sample_table(cell: Cell) -> Columns:
     """Return the columns of a file of ``samples/``, one row per sample in file order; README explains them.
 
     Samples that are not analysed have empty cells after their diameter.
-
-    Parameters
-    ----------
-    rec : Reconstruction
-        As analysed.
-    electrotonus : Electrotonus
-        By node, its first case at 0 Hz.
-    branches : Branches
-        Of the same nodes.
     """
-    cable, by_sample = electrotonus.cable, electrotonus.by_sample()
-    traced, node = cable.traced, cable.node
+    rec, branches, by_sample = cell.rec, cell.branches, cell.electrotonus.by_sample()
+    traced, node = cell.cable.traced, cell.cable.node
     left_out = node < 0
-    straight = cable.straight[node]
+    centre = traced.soma.centre if len(traced.soma.members) else traced.position[traced.root]
+    straight = np.linalg.norm(traced.position - centre, axis=1)
     straight[left_out] = np.nan
     names = {kind: domain_name(kind) for kind in np.unique(rec.kind).tolist()}
     number = _blank(branches.of_node[node] + 1, left_out)
@@ -44,7 +35,7 @@ def sample_table(rec: Reconstruction, electrotonus: Electrotonus, branches: Bran
         "lambda_um": by_sample.lambda_um[:, 0],
         "X": by_sample.X[:, 0],
     }
-    for case, suffix in enumerate(case_suffixes(electrotonus)):
+    for case, suffix in enumerate(case_suffixes(by_sample)):
         to_soma, from_soma = (
             by_sample.log_attenuation_to_soma[:, case],
             by_sample.log_attenuation_from_soma[:, case],

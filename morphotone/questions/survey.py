@@ -12,7 +12,8 @@ from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.electrotonus import Electrotonus, build_cases, cases_of, solve_cables
 from morphotone.cable.tree import Cable
 from morphotone.errors import ReadingError
-from morphotone.questions.branches import branch_table, branches_of
+from morphotone.questions.branch_table import branch_table
+from morphotone.questions.cell import Cell
 from morphotone.questions.cells import cell_row
 from morphotone.questions.columns import Columns
 from morphotone.questions.samples import sample_table
@@ -137,7 +138,7 @@ def _prepare(name: str, content: bytes | ReadingError, request: Request) -> _Rea
         rec = reconstruct(content, file=name, cell=cell_name(name), unit_um=assumptions.unit_um)
     except ReadingError as error:
         return Answer(name, sha256, 0, nothing, reason=error.reason, sentence=str(error))
-    vetting = vet_reconstruction(rec, assumptions.thresholds)
+    vetting = _in_view_of(assumptions, vet_reconstruction(rec, assumptions.thresholds))
     try:
         if vetting.grade == "unfit" and not request.keep_unfit:
             raise ReadingError(unfit_sentence(name, vetting), "unfit")
@@ -150,14 +151,27 @@ def _prepare(name: str, content: bytes | ReadingError, request: Request) -> _Rea
         return Answer(name, sha256, len(rec.number), table, reason=error.reason, sentence=str(error))
 
 
+def _in_view_of(assumptions: Assumptions, vetting: Vetting) -> Vetting:
+    """Weigh what the assumptions settle no more than doubtful: pieces apart, when they are joined."""
+    if assumptions.orphans != "joined":
+        return vetting
+    findings = tuple(
+        replace(finding, severity="doubtful")
+        if finding.code == "piece_apart" and finding.severity == "unfit"
+        else finding
+        for finding in vetting.findings
+    )
+    return Vetting(findings, grade_of(findings))
+
+
 def _tabulated(read: _Read, electrotonus: Electrotonus, request: Request) -> Answer:
-    branches = branches_of(electrotonus.cable.parent)
+    cell = Cell(read.rec, read.vetting, electrotonus)
     return Answer(
         name=read.name,
         sha256=read.rec.sha256,
         samples=len(read.rec.number),
         findings=findings_table(read.vetting.findings, read.vetting.grade),
-        cell=cell_row(read.rec, read.vetting, electrotonus, branches),
-        branches=branch_table(read.rec, electrotonus, branches),
-        by_sample=sample_table(read.rec, electrotonus, branches) if request.samples else None,
+        cell=cell_row(cell),
+        branches=branch_table(cell),
+        by_sample=sample_table(cell) if request.samples else None,
     )

@@ -8,7 +8,7 @@ from importlib.metadata import version
 import pytest
 
 from morphotone.commands import COMMANDS, survey
-from morphotone.errors import AssumptionError, MorphotoneError, ReadingError, ResultsError
+from morphotone.errors import AssumptionError, MorphotoneError, ReadingError, ResultsError, TurnedAwayError
 from tests.commands.folders import SOUND, called, examples, fill, run
 
 
@@ -67,7 +67,8 @@ def test_a_file_may_have_a_commands_name(tmp_path, monkeypatch, capsys):
 @pytest.mark.parametrize(
     ("error", "code"),
     [
-        (MorphotoneError("it went wrong"), 1),
+        (MorphotoneError("it went wrong"), 2),
+        (TurnedAwayError("it went wrong"), 1),
         (ReadingError("it went wrong", "why"), 1),
         (AssumptionError("it went wrong"), 2),
         (ResultsError("it went wrong"), 2),

@@ -417,10 +417,10 @@ def test_any_number_of_workers_writes_the_same_bytes(tmp_path, monkeypatch):
         ({"note.txt": "x"}, r"no file named \*\.swc or \*\.swc\.gz at any depth \(1 other files seen\)"),
     ],
 )
-def test_a_folder_without_files_is_exit_code_1(tmp_path, results, capsys, files, sentence):
+def test_a_folder_without_files_is_exit_code_2(tmp_path, results, capsys, files, sentence):
     if files is not None:
         fill(tmp_path / "cells", files)
-    assert surveyed(tmp_path / "cells", results) == 1
+    assert surveyed(tmp_path / "cells", results) == 2
     printed = capsys.readouterr()
     assert printed.out == ""
     assert re.search(sentence, printed.err)
@@ -430,7 +430,7 @@ def test_a_folder_without_files_is_exit_code_1(tmp_path, results, capsys, files,
 
 
 def test_a_file_in_the_place_of_the_folder(small, results, capsys):
-    assert surveyed(small / "a.swc", results) == 1
+    assert surveyed(small / "a.swc", results) == 2
     assert "is a file; give the folder that holds it" in capsys.readouterr().err
 
 
@@ -479,7 +479,7 @@ def test_a_folder_of_somebody_elses_tables_is_refused(small, results, capsys):
 
 
 def test_debug_shows_where_an_error_came_from(tmp_path, results, capsys):
-    assert surveyed(tmp_path / "nowhere", results, "--debug") == 1
+    assert surveyed(tmp_path / "nowhere", results, "--debug") == 2
     error = capsys.readouterr().err
     assert error.startswith("Traceback")
     assert error.splitlines()[-1].startswith("morphotone survey: ")
@@ -506,10 +506,11 @@ def test_a_fault_of_the_program_costs_one_file_and_is_called_so(small, results, 
 def test_dataframes_are_the_csv_files(small, results):
     survey = command.survey(small, results, assumptions=Assumptions(hz=(100.0,)), samples=True)
     for name in ("cells", "branches", "findings", "turned_away"):
-        written = pd.read_csv(results / f"{name}.csv", dtype={"domains_differ": str})
+        whole = dict.fromkeys(("line", "sample", "count"), "Int64")
+        written = pd.read_csv(results / f"{name}.csv", dtype={"domains_differ": str, **whole})
         pd.testing.assert_frame_equal(getattr(survey, name), written, check_exact=True)
     assert list(survey.samples) == ["a.swc", "b.swc", "deep/er/c.SWC"]
-    written = pd.read_csv(results / "samples" / "a.swc.csv")
+    written = pd.read_csv(results / "samples" / "a.swc.csv", dtype={"sample": "Int64"})
     pd.testing.assert_frame_equal(survey.samples["a.swc"], written, check_exact=True)
     assert (survey.tally.found, survey.tally.analysed, survey.tally.turned_away) == (5, 3, 2)
     assert len(survey.cells) == 3

@@ -56,7 +56,7 @@ def test_files_are_vetted_whatever_their_names_and_folders_searched(folder):
     fill(folder, {"plain.txt": SOUND})
     trust = vet([folder / "plain.txt", str(folder / "deep"), folder / "a.swc"])
     assert trust.files["file"].tolist() == [
-        *(str(folder / "plain.txt"), "c.swc", "d.swc", str(folder / "a.swc"))
+        *(str(folder / name) for name in ("plain.txt", "deep/c.swc", "deep/d.swc", "a.swc"))
     ]
     assert vet(str(folder / "a.swc")).files["grade"].tolist() == ["sound"]
 
@@ -161,6 +161,13 @@ def test_exit_code_1_where_something_cannot_be_used(folder, capsys, names, code)
     assert printed.err == ""
 
 
+def test_into_refuses_the_folder_of_a_survey(folder, tmp_path, capsys):
+    (tmp_path / "ledger.sqlite").touch()
+    assert run("vet", folder, "--into", tmp_path) == 2
+    assert "holds a survey, whose findings.csv would be lost" in capsys.readouterr().err
+    assert [path.name for path in tmp_path.glob("*.csv")] == []
+
+
 def test_into_writes_what_python_returns(folder, tmp_path):
     assert run("vet", folder, "--into", tmp_path / "new" / "vetted") == 1
     trust = vet(folder)
@@ -186,8 +193,8 @@ def test_an_unusable_assumptions_file_is_exit_code_2(folder, tmp_path, capsys):
     assert capsys.readouterr().err.startswith(f"morphotone vet: {path}: [vetting] flatness")
 
 
-def test_a_missing_path_is_exit_code_1_and_one_sentence(tmp_path, capsys):
-    assert run("vet", tmp_path / "nowhere") == 1
+def test_a_missing_path_is_exit_code_2_and_one_sentence(tmp_path, capsys):
+    assert run("vet", tmp_path / "nowhere") == 2
     assert capsys.readouterr().err == (
         f"morphotone vet: {tmp_path / 'nowhere'}: there is no such file or folder; check the spelling\n"
     )

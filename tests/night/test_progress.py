@@ -40,7 +40,7 @@ def test_a_line_only_after_the_interval_and_one_at_the_end() -> None:
 
 def test_a_run_that_is_through_has_no_time_left() -> None:
     line = describe(Step(2, 200, 10, 0), Step(2, 200), seconds=4.0)
-    assert line == "2/2 files, 10.0 samples, 0.50 files/s, 0 turned away, 00:04 passed"
+    assert line == "2/2 files, 10 samples, 0.50 files/s, 0 turned away, 00:04 passed"
 
 
 def test_nothing_done_and_no_time_passed() -> None:

@@ -52,26 +52,26 @@ def test_every_column_against_its_definition(family, assumed):
 )
 def test_share_beyond_X_against_thin_slices(family, limit):
     build, rule = trees.FAMILIES[family]
-    electrotonus = tables_of(build()).electrotonus
-    dendritic = ~np.isin(electrotonus.cable.kind, (1, 2))
+    cell = tables_of(build()).cell
+    dendritic = ~np.isin(cell.cable.kind, (1, 2))
     expected = share_beyond_by_integration(walk(build(), Assumptions(), rule), limit)
-    assert share_beyond(electrotonus, limit, dendritic) == pytest.approx(expected, abs=3e-4)
+    assert share_beyond(cell, limit, dendritic) == pytest.approx(expected, abs=3e-4)
 
 
 def test_share_beyond_X_is_exact_where_the_limit_meets_a_cylinder_or_the_end_of_a_piece():
     lam = lambda_um(20000, 150, 4.0)
-    electrotonus = tables_of(trees.cylinder(2 * lam, 4.0, 4)).electrotonus
+    cell = tables_of(trees.cylinder(2 * lam, 4.0, 4)).cell
     everywhere = np.ones(5, bool)
-    got = [share_beyond(electrotonus, limit, everywhere) for limit in (0.0, 0.25, 0.5, 1.9, 2.5)]
+    got = [share_beyond(cell, limit, everywhere) for limit in (0.0, 0.25, 0.5, 1.9, 2.5)]
     assert got == pytest.approx([1.0, 0.875, 0.75, 0.05, 0.0], abs=1e-12)
-    assert np.isnan(share_beyond(electrotonus, 1.0, np.zeros(5, bool)))
+    assert np.isnan(share_beyond(cell, 1.0, np.zeros(5, bool)))
 
 
 def test_share_beyond_X_of_a_cone_in_closed_form():
     """X grows with sqrt(r), membrane with r^2: halfway in X from radius 4 to 1 lies r = 2.25."""
-    electrotonus = tables_of(trees.frustum(300.0, 8.0, 2.0)).electrotonus
-    limit = electrotonus.X[1, 0] / 2
-    assert share_beyond(electrotonus, limit, np.ones(2, bool)) == pytest.approx((2.25**2 - 1) / (4**2 - 1))
+    cell = tables_of(trees.frustum(300.0, 8.0, 2.0)).cell
+    limit = cell.electrotonus.X[1, 0] / 2
+    assert share_beyond(cell, limit, np.ones(2, bool)) == pytest.approx((2.25**2 - 1) / (4**2 - 1))
 
 
 def test_ball_and_stick_worked_by_hand():
@@ -113,7 +113,8 @@ def test_the_mean_attenuation_tends_to_its_integral_over_the_membrane():
 def test_six_trees_are_one_equivalent_cylinder():
     """Rall 1962: six trees of L = 1 that obey the 3/2 rule have six times a cylinder's input conductance."""
     row = tables_of(trees.rall_neuron(6, 3, 1.0, 4.0), Assumptions(Membrane(10000.0, 100.0))).cell_row
-    assert (row["branches"], row["stems"], row["branch_points"], row["tips"]) == (90, 6, 42, 48)
+    # Seven branch points in each tree, and the root.
+    assert (row["branches"], row["stems"], row["branch_points"], row["tips"]) == (90, 6, 43, 48)
     assert (row["order_greatest"], row["soma_rule"], row["soma_samples"]) == (4, "none", 0)
     assert (row["rall_ratio_mean"], row["rall_ratio_sd"]) == pytest.approx((1.0, 0.0), abs=1e-12)
     X = [row[f"X_tips_{name}"] for name in ("mean", "least", "greatest", "sd")]

@@ -13,7 +13,8 @@ import numpy as np
 
 from morphotone.cable.assumptions import Assumptions, Membrane
 from morphotone.cable.electrotonus import build_cases, cases_of, solve, solve_cables
-from morphotone.questions.branches import branch_table, branches_of
+from morphotone.questions.branch_table import branch_table
+from morphotone.questions.cell import Cell
 from morphotone.questions.cells import cell_row
 from morphotone.questions.samples import sample_table
 from morphotone.reading.reconstruction import domain_name, reconstruct
@@ -28,6 +29,7 @@ class Tables:
     """What the program makes of one cell."""
 
     rec: object
+    cell: object
     electrotonus: object
     branches: object
     branch_table: dict
@@ -43,14 +45,9 @@ def tables_of(swc, assumptions=DEFAULTS, vetting=NOTHING_SEEN):
     """Ask the program for all tables of SWC text."""
     rec = reconstruct(swc.encode(), file="cell.swc", cell="cell")
     electrotonus = solve_cables([build_cases(rec, [assumptions])], cases_of([assumptions]))[0]
-    branches = branches_of(electrotonus.cable.parent)
+    cell = Cell(rec, vetting, electrotonus)
     return Tables(
-        rec,
-        electrotonus,
-        branches,
-        branch_table(rec, electrotonus, branches),
-        cell_row(rec, vetting, electrotonus, branches),
-        sample_table(rec, electrotonus, branches),
+        rec, cell, electrotonus, cell.branches, branch_table(cell), cell_row(cell), sample_table(cell)
     )
 
 
@@ -244,7 +241,7 @@ def cell_by_definition(walked, rec):
         "samples_analysed": len(cable.node),
         "branches": len(walked.walks),
         "stems": len(stems),
-        "branch_points": sum(w.children > 1 for w in walked.walks),
+        "branch_points": sum(w.children > 1 for w in walked.walks) + (len(stems) > 1 and not soma),
         "tips": len(tips),
         "order_greatest": max([0, *(w.order for w in walked.walks)]),
         "soma_rule": cable.choices.soma_rule,

@@ -1,0 +1,104 @@
+"""One analysed cell, and what several tables need of it, each derived once."""
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+from morphotone.cable.assumptions import Assumptions
+from morphotone.cable.electrotonus import Electrotonus
+from morphotone.cable.forest import Membrane, membrane_of
+from morphotone.cable.frustum import electrotonic_lengths
+from morphotone.cable.traced import AXON
+from morphotone.cable.tree import Cable
+from morphotone.questions.branches import Branches, branches_of
+from morphotone.reading.reconstruction import Reconstruction
+from morphotone.reading.soma import SOMA
+from morphotone.reading.vetting import Vetting
+from morphotone.units import UM_PER_CM
+
+Real = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+
+@dataclass(frozen=True, eq=False)
+class Cell:
+    """An analysed cell; arrays are by node, shape (nodes,), and node 0 has no frustum.
+
+    Attributes
+    ----------
+    rec : Reconstruction
+        As analysed.
+    vetting : Vetting
+        Its grade and findings.
+    electrotonus : Electrotonus
+        By node, the cases of one assumptions object, the first at 0 Hz.
+    """
+
+    rec: Reconstruction
+    vetting: Vetting
+    electrotonus: Electrotonus
+
+    @property
+    def cable(self) -> Cable:
+        """The cell as frusta."""
+        return self.electrotonus.cable
+
+    @property
+    def assumptions(self) -> Assumptions:
+        """What was assumed."""
+        return self.electrotonus.cases[0].assumptions
+
+    @cached_property
+    def branches(self) -> Branches:
+        """Its branches."""
+        return branches_of(self.cable.parent)
+
+    @cached_property
+    def membrane(self) -> Membrane:
+        """Passive constants of each frustum, broadcast to (nodes,)."""
+        constants = membrane_of(self.cable.kind, self.assumptions)
+        return Membrane(*(np.broadcast_to(values, self.cable.kind.shape) for values in constants))
+
+    @cached_property
+    def areas(self) -> tuple[Real, Real]:
+        """Membrane that stands for the start and for the end of each frustum, µm2 (see `Cable.areas`)."""
+        return self.cable.areas()
+
+    @cached_property
+    def area(self) -> Real:
+        """Membrane of each frustum, µm2."""
+        return self.areas[0] + self.areas[1]
+
+    @cached_property
+    def L(self) -> Real:
+        """Electrotonic length of each frustum at 0 Hz."""
+        cable = self.cable
+        return electrotonic_lengths(
+            cable.r_start, cable.r_end, cable.length, self.membrane.R_i, self.membrane.leak
+        )
+
+    @cached_property
+    def lambdas(self) -> tuple[Real, Real]:
+        """Least and greatest local λ of each frustum, µm: those of cylinders as thick as its two ends."""
+        thin, thick = (choose(self.cable.r_start, self.cable.r_end) for choose in (np.minimum, np.maximum))
+        per_root = np.sqrt(UM_PER_CM / (2.0 * self.membrane.R_i * self.membrane.leak))
+        return np.sqrt(thin) * per_root, np.sqrt(thick) * per_root
+
+    @cached_property
+    def dendritic(self) -> Mask:
+        """Frusta outside soma and axon."""
+        dendritic: Mask = (self.cable.kind != SOMA) & (self.cable.kind != AXON)
+        dendritic[0] = False
+        return dendritic
+
+    @cached_property
+    def farthest_tip(self) -> int:
+        """Node of the dendritic tip with the longest path; of all tips where no dendrite is."""
+        tips = self.branches.end[self.branches.tips]
+        if not len(tips):
+            return 0
+        dendritic = tips[self.dendritic[tips]]
+        tips = dendritic if len(dendritic) else tips
+        return int(tips[np.argmax(self.electrotonus.path_um[tips, 0])])
