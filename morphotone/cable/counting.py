@@ -40,7 +40,7 @@ from morphotone.units import MICROSIEMENS_PER_NANOSIEMENS, MICROSIEMENS_PER_S_CM
 Index = NDArray[np.int64]
 Real = NDArray[np.float64]
 
-# Of a piece: |Θ| at the fastest rate, as the first resonance is at π; and L, so short that a forest cuts none.
+# Of a piece: |Θ| at the fastest rate, as the first resonance is at π; L, so short that a forest cuts none.
 _LONGEST, _LONGEST_AT_REST = 1.0, 4.0
 _LARGE = 1e100
 
@@ -206,30 +206,30 @@ def fold(plan: Schedule, chain: Chain, load: Values) -> Folded:
         at = slice(first, last)
         upper = Chain(*(part[at] for part in chain))
         if child is None:
-            fall = _never_zero(upper.A + upper.B * load[at], upper.A)
+            fall = _never_zero(upper.A + upper.B * load[at])
             negative[at] = _opposite(fall, upper.B)
             log_factor[at] += np.log(np.abs(fall))
             load[parent[groups]] += np.add.reduceat((upper.C + upper.D * load[at]) / fall, groups, axis=0)
             continue
         lower = Chain(*(part[child] for part in chain))
         joined, log_size = _moderate(_joined(upper, load[at], lower))
-        negative[at] = _opposite(joined.B, upper.B)
+        negative[at] = _opposite(joined.B, upper.B) ^ (lower.B.real < 0.0)
         log_factor[at] += log_size
         for part, new in zip(chain, joined, strict=True):
             part[child] = new
     roots = slice(len(load) - plan.roots, None)
-    load[roots] = _never_zero(load[roots], np.ones_like(load[roots]))
+    load[roots] = _never_zero(load[roots])
     negative[roots] = load[roots].real < 0.0
     log_factor[roots] += np.log(np.abs(load[roots]))
     return Folded(negative, log_factor, load)
 
 
 def _joined(upper: Chain, load: Values, lower: Chain) -> Chain:
-    """Return the product of two chain matrices with a load between them."""
+    """Return the product of two chain matrices with a load between them, B at resonance moved off zero."""
     A, C = upper.A + upper.B * load, upper.C + upper.D * load
     return Chain(
         A * lower.A + upper.B * lower.C,
-        A * lower.B + upper.B * lower.D,
+        _never_zero(A * lower.B + upper.B * lower.D),
         C * lower.A + upper.D * lower.C,
         C * lower.B + upper.D * lower.D,
     )
@@ -241,9 +241,10 @@ def _moderate(chain: Chain) -> tuple[Chain, Real]:
     Only cable far leakier than the rest, hundreds of λ long, gets there.
     """
     size = np.abs(chain.A) + np.abs(chain.D)
-    scale = np.where(size > _LARGE, size, 1.0)
-    if not (size > _LARGE).any():
+    large = size > _LARGE
+    if not large.any():
         return chain, np.zeros_like(size)
+    scale = np.where(large, size, 1.0)
     return Chain(*(part / scale for part in chain)), np.log(scale)
 
 
@@ -253,7 +254,7 @@ def _opposite(one: Values, other: Values) -> NDArray[np.bool_]:
     return differ
 
 
-def _never_zero(values: Values, scale: Values) -> Values:
-    """Return values with exact zeros moved by rounding's amount, which leaves counts next to them right."""
-    moved: Values = np.where(values == 0.0, np.finfo(np.float64).eps * scale, values)
+def _never_zero(values: Values) -> Values:
+    """Return values with exact zeros moved by rounding's amount: counts a hair away are as good."""
+    moved: Values = np.where(values == 0.0, np.finfo(np.float64).eps, values)
     return moved

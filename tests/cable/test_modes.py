@@ -11,11 +11,12 @@ from mpmath import mp, mpf
 from scipy.optimize import brentq
 
 from morphotone.cable.assumptions import Assumptions, Membrane
-from morphotone.cable.counting import line_up
+from morphotone.cable.counting import chain_of, fold, line_up
 from morphotone.cable.electrotonus import solve
 from morphotone.cable.forest import Column, Forest
-from morphotone.cable.frustum import pi_of_frusta
+from morphotone.cable.frustum import Pi, pi_of_frusta
 from morphotone.cable.modes import MOST, amplitudes_by_node, time_constants
+from morphotone.cable.sweeps import schedule
 from morphotone.cable.tree import build
 from morphotone.errors import AssumptionError
 from morphotone.reading.reconstruction import reconstruct
@@ -124,6 +125,33 @@ def test_counts_against_a_mesh_at_any_rate():
     counted = line_up([cell(swc, assumptions)], assumptions, [2e6]).counted(1e3 * rate[None])
     np.testing.assert_array_equal(counted.slower[0], np.searchsorted(expected, rate))
     assert counted.slower[0, -1] > 40
+
+
+@pytest.mark.parametrize(
+    "parent", [[-1, 0], [-1, 0, 1, 2, 3], [-1, 0, 1, 1, 3, 3], [-1, 0, 0, 2, 2, 3, 5, 6, 7, 7]]
+)
+def test_counts_of_small_matrices(parent):
+    # Admittances of either sign, and small whole numbers, so that pivots of exactly zero come up.
+    plan, n = schedule(np.array(parent)), len(parent)
+    rng = np.random.default_rng(n)
+    load, start, end = rng.integers(-2, 3, (3, n, 1000)).astype(float)
+    axial = rng.choice([1.0, 2.0], (n, 1000))
+    Y = np.zeros((1000, n, n))
+    Y[:, range(n), range(n)] += load.T
+    for i in range(1, n):
+        Y[:, i, i] += axial[i] + end[i]
+        Y[:, parent[i], parent[i]] += axial[i] + start[i]
+        Y[:, i, parent[i]] = Y[:, parent[i], i] = -axial[i]
+    by_place = [part[plan.order] for part in (axial, start, end, load)]
+    folded = fold(plan, chain_of(Pi(*(part[: n - 1] for part in by_place[:3]))), by_place[3])
+    eigenvalues = np.linalg.eigvalsh(Y)
+    regular = np.abs(eigenvalues).min(axis=1) > 1e-9
+    assert regular.sum() > 200
+    np.testing.assert_array_equal(
+        folded.negative.sum(axis=0)[regular], (eigenvalues < 0).sum(axis=1)[regular]
+    )
+    det = np.exp(folded.log_factor.sum(axis=0)) * axial[1:].prod(axis=0)
+    np.testing.assert_allclose(det[regular], np.abs(np.linalg.det(Y))[regular], rtol=1e-9)
 
 
 # ---------------------------------------------------------------- against 50 digits
@@ -242,6 +270,16 @@ def test_a_lone_soma_has_one_mode():
         assert np.isnan(modes.peeled.X_tips)
         by_node = amplitudes_by_node(cell(LONE_SOMA, assumptions), assumptions, modes)
         np.testing.assert_allclose(by_node.local, [[1e3 / capacity]], rtol=1e-12)
+
+
+def test_cables_of_very_many_lambda():
+    # 250,000 lambda: all modes crowd behind tau0, and none of the points is wasted on resonances far beyond.
+    membrane = Assumptions(membrane=Membrane(1e4, 100.0))
+    lam = 1e4 * np.sqrt(1e4 / 100.0 * 4e-4 / 4)
+    for L in (250.0, 250_000.0):
+        modes = modes_of(trees.cylinder(L * lam), membrane)
+        w = (np.pi * np.arange(3) / L) ** 2
+        np.testing.assert_allclose(modes.tau_ms, 10.0 / (1 + w), rtol=1e-10, atol=0)
 
 
 def test_a_cell_without_membrane_has_no_modes():
