@@ -1,4 +1,4 @@
-"""A whole sample cell, from its file to the digits in the survey's tables, against the 50-digit definitions."""
+"""Whole sample cells, from the file to the digits in the survey's tables, against the definitions."""
 
 from pathlib import Path
 
