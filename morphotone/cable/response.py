@@ -100,7 +100,7 @@ def frequency_response(
     Raises
     ------
     AssumptionError
-        When the frequencies are not positive and ascending.
+        When there are no frequencies, or they are not positive and ascending.
 
     Notes
     -----
@@ -179,6 +179,8 @@ def _half_power(grid: Real, growth: Real) -> Real:
 def _checked(hz: Sequence[float] | Real) -> Real:
     """Return frequencies as an array, or refuse them."""
     frequencies = np.asarray(hz, np.float64)
+    if not frequencies.size:
+        raise AssumptionError("no frequencies, expected at least one positive number of Hz")
     for f in frequencies[~(np.isfinite(frequencies) & (frequencies > 0.0))].tolist():
         raise AssumptionError(f"frequency {f!r} Hz, expected positive numbers of Hz")
     if not (np.diff(frequencies) > 0.0).all():

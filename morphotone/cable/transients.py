@@ -1,8 +1,10 @@
 """Responses to a brief synaptic current at every site: peak, times and widths, without time steps.
 
 V(t) is the inverse Laplace transform of an exact transfer function times that of the current, along one
-fixed hyperbola (`morphotone.cable.contour`): some eighty complex frequencies are solved, each at all samples
-by the two sweeps, and every time after 0.02 of the rise time is a weighted sum over them.
+fixed hyperbola (`morphotone.cable.contour`): some hundred complex frequencies are solved, each at all samples
+by the two sweeps, and the response at any time after 0.02 of the rise time is a weighted
+sum over them.  Where it peaks and crosses a level is read off a grid of times that all sites share, with a
+polynomial between them (`morphotone.cable.neighbours`).
 
 How large the error can be is known.  A passive cell's impedance is a sum of modes, Z_ij(s) =
 Σ ψ_k(i)·ψ_k(j)/(s + a_k) with a_k > 0 (THEORY section 6), so its response is a mixture of the responses of
@@ -27,6 +29,7 @@ from morphotone.cable import neighbours
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.contour import Complex, Contour, contour
 from morphotone.cable.spectrum import MS_PER_S, forest_of, places_of, slowest_ms, spectra
+from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.cable.tree import Cable
 from morphotone.errors import AssumptionError
 
@@ -46,53 +49,6 @@ _REFERENCE = 1e-13  # precision of the hyperbola that ρ is measured against
 _STEP = 0.04  # of ln t, between the times at which responses are looked at
 _ROWS = 1000  # evaluated at a time, so that they stay in the processor's cache
 _UNRESOLVED = 1e-3  # a response less certain than this, relative to its peak, is not given
-
-
-@dataclass(frozen=True)
-class SynapticCurrent:
-    """A current i(t) ∝ e^{−t/decay} − e^{−t/rise}, or (t/rise)·e^{−t/rise} when the two are equal.
-
-    Rall 1967, J Neurophysiol 30:1138–1168, for the alpha function.
-
-    Attributes
-    ----------
-    rise_ms, decay_ms : float
-        Time constants, ms; equal for an alpha function, which peaks at the rise time.
-    """
-
-    rise_ms: float
-    decay_ms: float
-
-    def __post_init__(self) -> None:
-        for name, value in (("rise", self.rise_ms), ("decay", self.decay_ms)):
-            if not (np.isfinite(value) and value > 0.0):
-                raise AssumptionError(
-                    f"{name} time {value!r} ms of the synaptic current, expected a positive number of ms"
-                )
-        if self.rise_ms > self.decay_ms:
-            raise AssumptionError(
-                f"rise time {self.rise_ms!r} ms is longer than the decay time {self.decay_ms!r} ms, expected "
-                "rise < decay, or both equal for an alpha function; exchange them if their order was mistaken"
-            )
-
-    @property
-    def peak_time_ms(self) -> float:
-        """When the current is greatest, ms: rise·decay/(decay − rise)·ln(decay/rise), or the rise time."""
-        excess = (self.decay_ms - self.rise_ms) / self.rise_ms
-        return self.decay_ms * (float(np.log1p(excess)) / excess if excess else 1.0)
-
-    @property
-    def charge_fC(self) -> float:
-        """Charge of a current with a peak of 1 pA, fC (pA·ms).
-
-        A current of charge 1 has its peak of e^{−t/decay}/decay where both exponentials, each divided by
-        its time constant, are equal.
-        """
-        return self.decay_ms * float(np.exp(self.peak_time_ms / self.decay_ms))
-
-    def transform(self, s: Complex) -> Complex:
-        """Return the Laplace transform for charge 1: 1/((1 + s·rise)(1 + s·decay)); s in 1/ms."""
-        return 1.0 / ((1.0 + s * self.rise_ms) * (1.0 + s * self.decay_ms))
 
 
 @dataclass(frozen=True, eq=False)
@@ -116,7 +72,8 @@ class Responses:
     error : ndarray, shape (sites,)
         Bound of the error of V at any time in the window, relative to the peak.
     error_ms : ndarray, shape (sites,)
-        Greatest error of the three times that follows from it.
+        Greatest error of the three times that follows from it; the polynomials between times add at most
+        1e-7 of the time to peak, and 2e-8 of the other values.
     """
 
     peak_mV_per_pA: Real
@@ -236,9 +193,11 @@ def potentials(
     Raises
     ------
     AssumptionError
-        When a time is zero, negative or no number.
+        When there is no time, or one is zero, negative or no number.
     """
     times = np.asarray(times_ms, np.float64)
+    if not times.size:
+        raise AssumptionError("no times, expected at least one time after the current's start, ms")
     for time in times[~(np.isfinite(times) & (times > 0.0))].tolist():
         raise AssumptionError(f"time {time!r} ms, expected times after the current's start, above 0 ms")
     line = contour(float(times.min()), float(times.max()), _PRECISION)
@@ -360,9 +319,10 @@ def _transients(cable: Cable, window: Window, along: _Along) -> Transients:
 def _responses(window: Window, Z: Complex, R: Real, scale: Real) -> Responses:
     """Read off responses block by block; ``scale`` is what ρ is multiplied with."""
     starts = range(0, max(len(Z), 1), _ROWS)
-    shapes = np.concatenate(
-        [_shapes(window, Z[start : start + _ROWS], scale[start : start + _ROWS]) for start in starts], axis=1
-    )
+    with np.errstate(divide="ignore", invalid="ignore"):  # where nothing arrives there is nothing to read off
+        shapes = np.concatenate(
+            [_shapes(window, Z[at : at + _ROWS], scale[at : at + _ROWS]) for at in starts], axis=1
+        )
     peak, to_peak, rise, width, _, error_ms = np.where(shapes[4] <= _UNRESOLVED, shapes, np.nan)
     per_pA = window.current.charge_fC * GOHM_PER_MOHM
     return Responses(per_pA * peak, peak, to_peak, rise, width, per_pA * R, shapes[4], error_ms)
@@ -381,11 +341,11 @@ def _shapes(window: Window, Z: Complex, scale: Real) -> Real:
     falling = _crossing(window, curves, highest, 0.5 * peak, 1)
     bound = window.rho * scale
     slack = [2.0 * bound * time / slope for time, slope in (*rising, falling)]
-    error_ms = np.max(
-        [to_peak * window.rho_slope * scale / -bend, slack[0] + slack[2], slack[1] + slack[3]], axis=0
-    )
+    slack_of_peak = to_peak * window.rho_slope * scale / np.abs(bend)
+    error_ms = np.max([slack_of_peak, slack[0] + slack[2], slack[1] + slack[3]], axis=0)
     rise, width = rising[2][0] - rising[0][0], falling[0] - rising[1][0]
-    return np.stack((peak, to_peak, rise, width, bound / peak, error_ms))
+    error = np.where(peak > 0.0, bound / peak, np.inf)
+    return np.stack((peak, to_peak, rise, width, error, error_ms))
 
 
 def _crossing(window: Window, curves: Real, highest: Index, level: Real, way: int) -> tuple[Real, Real]:

@@ -187,6 +187,11 @@ def test_frequencies_that_are_none_are_refused(hz):
         frequency_response([cable(trees.frustum())], DEFAULTS, [hz])
 
 
+def test_no_frequencies_are_refused():
+    with pytest.raises(AssumptionError, match="expected at least one positive number of Hz"):
+        frequency_response([cable(trees.frustum())], DEFAULTS, [])
+
+
 @pytest.mark.parametrize("hz", [[10.0, 10.0], [20.0, 10.0]])
 def test_frequencies_out_of_order_are_refused(hz):
     with pytest.raises(AssumptionError, match="ascending order"):

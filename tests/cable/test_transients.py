@@ -15,7 +15,8 @@ from morphotone.cable.contour import contour
 from morphotone.cable.delays import delays
 from morphotone.cable.electrotonus import solve
 from morphotone.cable.spectrum import MS_PER_S, forest_of, spectra
-from morphotone.cable.transients import Responses, SynapticCurrent, Window, potentials, transients
+from morphotone.cable.synaptic import SynapticCurrent
+from morphotone.cable.transients import Responses, Window, potentials, transients
 from morphotone.cable.tree import build
 from morphotone.errors import AssumptionError
 from morphotone.reading.reconstruction import reconstruct
@@ -420,6 +421,22 @@ def test_no_cells_no_transients():
 def test_times_that_are_none_are_refused(time):
     with pytest.raises(AssumptionError, match="expected times after the current's start, above 0 ms"):
         potentials(cable(SPHERE), DEFAULTS, ALPHA, [1.0, time])
+
+
+def test_no_times_are_refused():
+    with pytest.raises(AssumptionError, match="expected at least one time"):
+        potentials(cable(SPHERE), DEFAULTS, ALPHA, [])
+
+
+def test_where_nothing_arrives_nothing_is_read_off():
+    # 2,000 λ: the transfer impedance is 0 in double precision.
+    swc = trees.cylinder(2000 * 577.35, 2.0, 20)
+    (seen,) = transients([cable(swc)], DEFAULTS, ALPHA)
+    for name in ("peak_mV_per_pA", "time_to_peak_ms", "half_width_ms"):
+        assert np.isnan(getattr(seen.at_soma, name)[-1])
+        assert np.isfinite(getattr(seen.at_site, name)).all()
+    assert seen.at_soma.error[-1] == np.inf
+    assert seen.at_soma.area_mV_ms_per_pA[-1] == 0.0
 
 
 def test_domains_shunt_and_spines_are_in_the_response():
