@@ -30,6 +30,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions
+from morphotone.cable.cutting import cut
 from morphotone.cable.forest import Forest, membrane_of
 from morphotone.cable.frustum import Pi, Values, electrotonic_lengths, pi_of_frusta
 from morphotone.cable.sweeps import Schedule
@@ -145,40 +146,31 @@ def line_up(cells: Sequence[Cable], assumptions: Assumptions, fastest: Sequence[
     fastest : sequence of float
         Per cell the greatest |s| that it will be asked at, 1/s.
     """
-    cut = [_cut(cable, assumptions, rate) for cable, rate in zip(cells, fastest, strict=True)]
-    forest = Forest([(cable,) for cable, _ in cut], (assumptions,))
-    return Lineup(forest, assumptions, tuple(ends for _, ends in cut))
+    finer = [_finer(cable, assumptions, rate) for cable, rate in zip(cells, fastest, strict=True)]
+    forest = Forest([(cable,) for cable, _ in finer], (assumptions,))
+    return Lineup(forest, assumptions, tuple(ends for _, ends in finer))
 
 
-def _cut(cable: Cable, assumptions: Assumptions, rate: float) -> tuple[Cable, Index]:
-    """Return a cable whose frusta are cut into pieces of equal L, and the new number of each of its nodes.
-
-    Along a linear taper L grows with the square root of the radius.
-    """
+def _finer(cable: Cable, assumptions: Assumptions, rate: float) -> tuple[Cable, Index]:
+    """Return a cable cut so that no piece resonates, and the new number of each of its nodes."""
     R_i, leak, capacity = membrane_of(cable.kind, assumptions)
     geometry = cable.r_start, cable.r_end, cable.length
     theta = electrotonic_lengths(*geometry, R_i, np.maximum(capacity * rate - leak, 0.0)) / _LONGEST
     at_rest = electrotonic_lengths(*geometry, R_i, leak) / _LONGEST_AT_REST
     pieces = np.ceil(np.maximum(np.maximum(theta, at_rest), 1.0)).astype(np.int64)
-    ends = np.cumsum(pieces) - 1
-    of = np.repeat(np.arange(len(pieces)), pieces)
-    first = (ends - pieces + 1)[of]
-    step = np.arange(len(of)) - first
-    here, there = np.sqrt(cable.r_start)[of], np.sqrt(cable.r_end)[of]
-    begin, finish = (here + (there - here) * (step + more) / pieces[of] for more in (0, 1))
-    parent = np.where(step > 0, np.arange(-1, len(of) - 1), ends[cable.parent[of]])
-    parent[0] = -1
+    start, end, length = (part[:, None] for part in geometry)
+    parts = cut(cable.parent, start, end, length, pieces)
     finer = replace(
         cable,
-        parent=parent,
-        kind=cable.kind[of],
-        r_start=np.where(step == 0, cable.r_start[of], begin**2),
-        r_end=np.where(step == pieces[of] - 1, cable.r_end[of], finish**2),
-        length=cable.length[of] * (begin + finish) / ((here + there) * pieces[of]),
-        sample=cable.sample[of],
-        node=np.where(cable.node < 0, -1, ends[cable.node]),
+        parent=parts.parent,
+        kind=cable.kind[parts.of],
+        r_start=parts.r_start[:, 0],
+        r_end=parts.r_end[:, 0],
+        length=parts.length[:, 0],
+        sample=cable.sample[parts.of],
+        node=np.where(cable.node < 0, -1, parts.ends[cable.node]),
     )
-    return finer, ends
+    return finer, parts.ends
 
 
 def chain_of(pieces: Pi) -> Chain:

@@ -7,6 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions
+from morphotone.cable.cutting import cut
 from morphotone.cable.frustum import Pi, Values, electrotonic_lengths, pi_of_frusta
 from morphotone.cable.sweeps import path_sums, schedule, sweep
 from morphotone.cable.tree import Cable
@@ -211,33 +212,10 @@ def _frusta_of(cells: Sequence[Sequence[Cable]], many: Sequence[Assumptions]) ->
         for values in list(zip(*(membrane_of(kind, one) for one in many), strict=True))[:2]
     )
     pieces = np.ceil(electrotonic_lengths(r_start, r_end, length, R_i, leak).max(axis=1) / _LONGEST)
-    return _cut(whole, np.clip(pieces, 1, _MOST_PIECES).astype(np.int64)) if (pieces > 1).any() else whole
-
-
-def _cut(frusta: _Frusta, pieces: Index) -> _Frusta:
-    """Cut each frustum into pieces of equal L, which changes nothing else.
-
-    Along a linear taper L grows with the square root of the radius.
-    """
-    ends = np.cumsum(pieces) - 1
-    of = np.repeat(np.arange(len(pieces)), pieces)
-    begin, finish = (
-        ((np.arange(len(of)) - (ends - pieces + 1)[of] + step) / pieces[of])[:, None] for step in (0, 1)
-    )
-    root_start, root_end = np.sqrt(frusta.r_start)[of], np.sqrt(frusta.r_end)[of]
-    root_begin, root_finish = ((1.0 - part) * root_start + part * root_end for part in (begin, finish))
-    share = (finish - begin) * (root_begin + root_finish) / (root_start + root_end)
-    parent = np.arange(-1, len(of) - 1)
-    heads = ends - pieces + 1
-    parent[heads] = np.where(frusta.parent < 0, -1, ends[frusta.parent])
-    return _Frusta(
-        parent,
-        frusta.kind[of],
-        np.where(begin == 0.0, frusta.r_start[of], root_begin**2),
-        np.where(finish == 1.0, frusta.r_end[of], root_finish**2),
-        frusta.length[of] * share,
-        ends,
-    )
+    if not (pieces > 1).any():
+        return whole
+    parts = cut(parent, r_start, r_end, length, np.clip(pieces, 1, _MOST_PIECES).astype(np.int64))
+    return _Frusta(parts.parent, kind[parts.of], parts.r_start, parts.r_end, parts.length, parts.ends)
 
 
 def _frusta_only(first_root: int, geometry: tuple[Real, Real, Real], R_i: Values, g: Values) -> Pi:
