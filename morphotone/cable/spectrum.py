@@ -39,7 +39,7 @@ def spectra(
     forest : Forest
         Under one set of assumptions.
     s : sequence of complex, shape (columns,)
-        Complex frequencies, 1/s.
+        Complex frequencies, 1/s; all with an imaginary part, or none.
     places : sequence of ndarray of int64
         Per cell, the places to keep.
     names : sequence of str
@@ -55,14 +55,16 @@ def spectra(
     Fast currents reach frequencies at which a frustum is hundreds of space constants long and its axial
     admittance 0 in double precision: the attenuation is then infinite, and the transfer impedance 0.
     """
-    parts: list[list[list[NDArray[Any]]]] = [[[] for _ in names] for _ in places]
+    kept: list[list[NDArray[Any]]] = []
     with np.errstate(divide="ignore", over="ignore", invalid="ignore"):
         for start in range(0, len(s), _COLUMNS):
             solved = forest.solved([Column(0, each) for each in s[start : start + _COLUMNS]])
-            for cell, at in zip(parts, places, strict=True):
-                for field, name in zip(cell, names, strict=True):
-                    field.append(getattr(solved, name)[at])
-    return [[np.concatenate(field, axis=1) for field in cell] for cell in parts]
+            fields = [getattr(solved, name) for name in names]
+            kept = kept or [[np.empty((len(at), len(s)), f.dtype) for f in fields] for at in places]
+            for cell, at in zip(kept, places, strict=True):
+                for out, field in zip(cell, fields, strict=True):
+                    out[:, start : start + _COLUMNS] = field[at]
+    return kept
 
 
 def slowest_ms(assumptions: Assumptions) -> float:

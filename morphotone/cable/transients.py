@@ -160,6 +160,11 @@ def transients(
         Injected at one site at a time.
     nodes : sequence of ndarray of int64, optional
         Per cell the nodes of the sites; all nodes unless given.
+
+    Notes
+    -----
+    About as long as 100 sweeps of one case for all sites of a cell of 6,500 samples, 70 for a few sites;
+    some 3 kB of memory per site of all cells together.
     """
     if not cells:
         return []
