@@ -18,6 +18,7 @@ import joblib
 import pandas as pd
 
 from morphotone.cable.assumptions import Assumptions
+from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.commands.options import add_assumption_options, assumptions_of
 from morphotone.errors import ReadingError
 from morphotone.night.folder import PATTERNS, find_files
@@ -30,6 +31,7 @@ from morphotone.night.runner import Tally
 from morphotone.night.runner import run as run_night
 from morphotone.questions.columns import Columns
 from morphotone.questions.survey import Answer, Request, answers, cell_name, headers
+from morphotone.questions.time_axis import TimeRequest
 from morphotone.reading.swc import read_bytes
 from morphotone.showing.tables import csv_texts
 
@@ -92,6 +94,9 @@ def survey(
     assumptions: Assumptions | None = None,
     samples: bool = False,
     keep_unfit: bool = False,
+    delays: bool = False,
+    time_constants: int = 0,
+    transient_ms: tuple[float, float] | None = None,
     patterns: Sequence[str] = PATTERNS,
     workers: int = 1,
     strict: bool = False,
@@ -110,6 +115,12 @@ def survey(
         Give the tables by sample too.
     keep_unfit : bool
         Analyse files of grade unfit too, flagged.
+    delays : bool
+        Give delays too.
+    time_constants : int
+        How many of each cell's own time constants to give too, up to 20.
+    transient_ms : (float, float), optional
+        Rise and decay of a synaptic current, ms, whose responses to give too; equal for an alpha function.
     patterns : sequence of str
         Which file names count.
     workers : int
@@ -126,7 +137,8 @@ def survey(
     ResultsError
         The results folder belongs to another run or cannot be written to.
     """
-    request = Request(assumptions or Assumptions(), keep_unfit, samples)
+    time = TimeRequest(delays, time_constants, _current(transient_ms))
+    request = Request(assumptions or Assumptions(), keep_unfit, samples, time)
     with ExitStack() as stack:
         target = Path(into if into is not None else stack.enter_context(TemporaryDirectory()))
         tally = write_survey(
@@ -235,6 +247,7 @@ def _fingerprint(request: Request) -> dict[str, Any]:
         "morphotone": version("morphotone"),
         "keep_unfit": request.keep_unfit,
         "samples": request.samples,
+        **request.time.to_dict(),
         "assumptions": request.assumptions.to_dict(),
     }
 
@@ -271,6 +284,24 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         help="frequencies besides 0 Hz, in Hz; overrides the assumptions file",
     )
     parser.add_argument("--samples", action="store_true", help="write one CSV per cell with a row per sample")
+    parser.add_argument(
+        "--delays", action="store_true", help="give delays of the voltage's centroid too, in ms"
+    )
+    parser.add_argument(
+        "--time-constants",
+        metavar="K",
+        type=int,
+        default=0,
+        help="give the cell's own K slowest time constants too, in ms, 1 to 20",
+    )
+    parser.add_argument(
+        "--transient",
+        metavar=("RISE", "DECAY"),
+        type=float,
+        nargs=2,
+        help="give the responses to a brief synaptic current too: its rise and decay times in ms, equal for "
+        "an alpha function; with --samples from every sample, else from the soma and the farthest tip",
+    )
     parser.add_argument("--keep-unfit", action="store_true", help="analyse files of grade unfit too, flagged")
     parser.add_argument(
         "--pattern",
@@ -285,12 +316,20 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("--strict", action="store_true", help="stop at the first file turned away")
 
 
+def _current(transient_ms: Sequence[float] | None) -> SynapticCurrent | None:
+    return None if transient_ms is None else SynapticCurrent(*transient_ms)
+
+
+def _time_of(args: argparse.Namespace) -> TimeRequest:
+    return TimeRequest(args.delays, args.time_constants, _current(args.transient))
+
+
 def run(args: argparse.Namespace) -> int:
     """Run the survey, say how it went, and return the exit code."""
     tally = write_survey(
         args.folder,
         args.into,
-        Request(assumptions_of(args), args.keep_unfit, args.samples),
+        Request(assumptions_of(args), args.keep_unfit, args.samples, _time_of(args)),
         patterns=args.pattern,
         workers=args.workers,
         strict=args.strict,

@@ -1,6 +1,6 @@
 """One analysed cell, and what several tables need of it, each derived once."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
 
 import numpy as np
@@ -13,6 +13,7 @@ from morphotone.cable.frustum import electrotonic_lengths
 from morphotone.cable.traced import AXON
 from morphotone.cable.tree import Cable
 from morphotone.questions.branches import Branches, branches_of
+from morphotone.questions.time_axis import TimeAxis
 from morphotone.reading.reconstruction import Reconstruction
 from morphotone.reading.soma import SOMA
 from morphotone.reading.vetting import Vetting
@@ -34,11 +35,14 @@ class Cell:
         Its grade and findings.
     electrotonus : Electrotonus
         By node, the cases of one assumptions object, the first at 0 Hz.
+    time : TimeAxis
+        Delays, time constants, transients, as far as they were asked for.
     """
 
     rec: Reconstruction
     vetting: Vetting
     electrotonus: Electrotonus
+    time: TimeAxis = field(default_factory=TimeAxis)
 
     @property
     def cable(self) -> Cable:

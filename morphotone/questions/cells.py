@@ -12,6 +12,7 @@ from morphotone.cable.traced import AXON
 from morphotone.questions.branches import endless_conductance, rall_ratios
 from morphotone.questions.cell import Cell
 from morphotone.questions.columns import case_suffixes
+from morphotone.questions.time_axis import time_row
 from morphotone.reading.reconstruction import domain_name
 from morphotone.reading.soma import SOMA
 from morphotone.reading.vetting import SEVERITIES
@@ -26,10 +27,17 @@ _DOMAINS = {AXON: "axon", 3: "basal", 4: "apical"}
 _FAR = (0.5, 1.0)  # X beyond which the share of dendritic membrane is told
 
 
-def cell_row(cell: Cell) -> dict[str, Any]:
+def cell_row(cell: Cell, time_constants: int = 0) -> dict[str, Any]:
     """Return the row of ``cells.csv`` that one cell gives, without its name; README explains the columns.
 
     Dendritic membrane and dendritic tips are those outside soma and axon.
+
+    Parameters
+    ----------
+    cell : Cell
+        What is known of it.
+    time_constants : int
+        How many time constants have columns, whether or not the cell has as many.
     """
     row: dict[str, Any] = {"sha256": cell.rec.sha256, "grade": cell.vetting.grade}
     for severity in SEVERITIES:
@@ -37,6 +45,7 @@ def cell_row(cell: Cell) -> dict[str, Any]:
     row |= _counts(cell) | _sizes(cell) | _space_constants(cell) | _rall_conditions(cell) | _distances(cell)
     for case, suffix in enumerate(case_suffixes(cell.electrotonus)):
         row |= {name + suffix: value for name, value in _attenuation(cell, case)}
+    row |= time_row(cell.time, cell.farthest_tip, time_constants)
     return row | _assumed(cell.assumptions)
 
 

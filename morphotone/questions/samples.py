@@ -7,6 +7,7 @@ from numpy.typing import NDArray
 
 from morphotone.questions.cell import Cell
 from morphotone.questions.columns import Columns, case_suffixes
+from morphotone.questions.time_axis import time_columns
 from morphotone.reading.reconstruction import domain_name
 
 
@@ -50,6 +51,7 @@ def sample_table(cell: Cell) -> Columns:
         }
         if not suffix:
             columns["charge_to_soma"] = np.exp(-from_soma)
+    columns |= time_columns(cell.time)
     in_file = np.argsort(rec.line, kind="stable")
     return {name: np.asarray(values)[in_file] for name, values in columns.items()}
 

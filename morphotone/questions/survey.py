@@ -3,13 +3,13 @@
 import hashlib
 import re
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
 
 from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.electrotonus import Electrotonus, build_cases, cases_of, solve_cables
+from morphotone.cable.electrotonus import build_cases, cases_of, solve_cables
 from morphotone.cable.tree import Cable
 from morphotone.errors import ReadingError
 from morphotone.questions.branch_table import branch_table
@@ -17,6 +17,7 @@ from morphotone.questions.cell import Cell
 from morphotone.questions.cells import cell_row
 from morphotone.questions.columns import Columns
 from morphotone.questions.samples import sample_table
+from morphotone.questions.time_axis import TimeRequest, time_axes
 from morphotone.questions.trust import findings_table, unfit_sentence
 from morphotone.reading.reconstruction import Reconstruction, reconstruct
 from morphotone.reading.repair import mend_radii
@@ -39,11 +40,14 @@ class Request:
         Analyse files of grade unfit too, flagged, instead of turning them away.
     samples : bool
         Give the table by sample too.
+    time : TimeRequest
+        Delays, time constants and transients that are asked for.
     """
 
     assumptions: Assumptions
     keep_unfit: bool = False
     samples: bool = False
+    time: TimeRequest = field(default_factory=TimeRequest)
 
 
 @dataclass(frozen=True, eq=False)
@@ -113,9 +117,10 @@ def answers(files: Sequence[tuple[str, bytes | ReadingError]], request: Request)
     ready = [each for each in prepared if isinstance(each, _Read)]
     # Absurd files (kept although unfit) may overflow; their infinities stand in the table for what they are.
     with np.errstate(over="ignore", under="ignore", divide="ignore", invalid="ignore"):
-        solved = iter(solve_cables([each.cables for each in ready], cases_of([request.assumptions])))
+        cells = iter(_solved(ready, request))
         return [
-            _tabulated(each, next(solved), request) if isinstance(each, _Read) else each for each in prepared
+            _tabulated(each.name, next(cells), request) if isinstance(each, _Read) else each
+            for each in prepared
         ]
 
 
@@ -164,14 +169,24 @@ def _in_view_of(assumptions: Assumptions, vetting: Vetting) -> Vetting:
     return Vetting(findings, grade_of(findings))
 
 
-def _tabulated(read: _Read, electrotonus: Electrotonus, request: Request) -> Answer:
-    cell = Cell(read.rec, read.vetting, electrotonus)
+def _solved(ready: Sequence[_Read], request: Request) -> list[Cell]:
+    """Solve cells as one forest, the time axis too where it is asked for."""
+    solved = solve_cables([each.cables for each in ready], cases_of([request.assumptions]))
+    cells = [Cell(each.rec, each.vetting, one) for each, one in zip(ready, solved, strict=True)]
+    if request.time == TimeRequest():
+        return cells
+    cables, tips = [cell.cable for cell in cells], [cell.farthest_tip for cell in cells]
+    axes = time_axes(cables, tips, request.assumptions, request.time, everywhere=request.samples)
+    return [replace(cell, time=axis) for cell, axis in zip(cells, axes, strict=True)]
+
+
+def _tabulated(name: str, cell: Cell, request: Request) -> Answer:
     return Answer(
-        name=read.name,
-        sha256=read.rec.sha256,
-        samples=len(read.rec.number),
-        findings=findings_table(read.vetting.findings, read.vetting.grade),
-        cell=cell_row(cell),
+        name=name,
+        sha256=cell.rec.sha256,
+        samples=len(cell.rec.number),
+        findings=findings_table(cell.vetting.findings, cell.vetting.grade),
+        cell=cell_row(cell, request.time.time_constants),
         branches=branch_table(cell),
         by_sample=sample_table(cell) if request.samples else None,
     )
