@@ -14,7 +14,13 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from morphotone.cable.assumptions import Assumptions, Membrane
+    from morphotone.cable.delays import Delays, delays
     from morphotone.cable.electrotonus import Electrotonus, solve
+    from morphotone.cable.modes import Modes, time_constants
+    from morphotone.cable.response import FrequencyResponse, frequency_response, half_power_hz
+    from morphotone.cable.synaptic import SynapticCurrent
+    from morphotone.cable.transients import Transients, potentials, transients
+    from morphotone.cable.tree import Cable, build
     from morphotone.commands.survey import Survey, survey
     from morphotone.commands.vet import vet
     from morphotone.errors import AssumptionError, MorphotoneError, ReadingError, ResultsError
@@ -25,6 +31,19 @@ _HOMES = {
     "Membrane": "morphotone.cable.assumptions",
     "Electrotonus": "morphotone.cable.electrotonus",
     "solve": "morphotone.cable.electrotonus",
+    "Delays": "morphotone.cable.delays",
+    "delays": "morphotone.cable.delays",
+    "Modes": "morphotone.cable.modes",
+    "time_constants": "morphotone.cable.modes",
+    "FrequencyResponse": "morphotone.cable.response",
+    "frequency_response": "morphotone.cable.response",
+    "half_power_hz": "morphotone.cable.response",
+    "SynapticCurrent": "morphotone.cable.synaptic",
+    "Transients": "morphotone.cable.transients",
+    "potentials": "morphotone.cable.transients",
+    "transients": "morphotone.cable.transients",
+    "Cable": "morphotone.cable.tree",
+    "build": "morphotone.cable.tree",
     "Survey": "morphotone.commands.survey",
     "survey": "morphotone.commands.survey",
     "vet": "morphotone.commands.vet",
@@ -39,16 +58,29 @@ _HOMES = {
 __all__ = [
     "AssumptionError",
     "Assumptions",
+    "Cable",
+    "Delays",
     "Electrotonus",
+    "FrequencyResponse",
     "Membrane",
+    "Modes",
     "MorphotoneError",
     "ReadingError",
     "Reconstruction",
     "ResultsError",
     "Survey",
+    "SynapticCurrent",
+    "Transients",
+    "build",
+    "delays",
+    "frequency_response",
+    "half_power_hz",
+    "potentials",
     "read",
     "solve",
     "survey",
+    "time_constants",
+    "transients",
     "vet",
 ]
 

@@ -175,7 +175,8 @@ def solve_cables(cells: Sequence[Sequence[Cable]], cases: Sequence[Case]) -> lis
     parts = [forest.solved([columns[i] for i in group]) for group in groups]
     back = np.argsort(np.concatenate(groups))
     solved = Solved(*(np.concatenate(values, axis=1)[:, back] for values in zip(*parts, strict=True)))
-    values_of_all = (*solved, *(values[:, which] for values in forest.distances()))
+    logarithms = (values.real for values in solved[2:])
+    values_of_all = (*solved[:2], *logarithms, *(values[:, which] for values in forest.distances()))
     per_cell = zip(*(forest.by_cell(values) for values in values_of_all), strict=True)
     return [
         Electrotonus(cables[0], tuple(cases), *values) for cables, values in zip(cells, per_cell, strict=True)

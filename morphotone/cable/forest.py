@@ -37,12 +37,16 @@ class Column(NamedTuple):
 
 
 class Solved(NamedTuple):
-    """By place, one column per case asked: impedances in MΩ, natural logarithms of the attenuations."""
+    """By place, one column per case asked: impedances in MΩ, natural logarithms of the attenuations.
+
+    ln(V_site/V_soma) for current at the site and ln(V_soma/V_site) for current at the soma; complex where
+    s is, the imaginary part being the phase summed along the path.
+    """
 
     Z_in: Values
     Z_transfer: Values
-    log_attenuation_to_soma: Real
-    log_attenuation_from_soma: Real
+    log_attenuation_to_soma: Values
+    log_attenuation_from_soma: Values
 
 
 class Membrane(NamedTuple):
@@ -131,9 +135,9 @@ class Forest:
         fall_from = (pieces.end + looks.away) / pieces.axial
         fall_to = far / pieces.axial
         log_from = path_sums(self.plan, np.log1p(fall_from))
-        log_to = path_sums(self.plan, np.log1p(fall_to).real)
+        log_to = path_sums(self.plan, np.log1p(fall_to))
         at_soma = z_in[self._root_of_place()]
-        return Solved(z_in, at_soma * np.exp(-log_from), log_to, log_from.real)
+        return Solved(z_in, at_soma * np.exp(-log_from), log_to, log_from)
 
     def load(self, columns: Sequence[Column], dtype: np.dtype[np.generic]) -> Values:
         """Return the soma's membrane and the shunt at the roots, µS, by place; 0 elsewhere."""

@@ -32,6 +32,7 @@ from morphotone.cable.peeling import Peeled, peel
 from morphotone.cable.tree import Cable
 from morphotone.errors import AssumptionError
 from morphotone.reading.soma import SOMA
+from morphotone.units import MS_PER_S
 
 Index = NDArray[np.int64]
 Real = NDArray[np.float64]
@@ -39,7 +40,6 @@ Real = NDArray[np.float64]
 MOST = 20
 """The most time constants that are looked for."""
 
-_MS_PER_S = 1e3
 _POINTS_PER_PLACE = 4  # in one sweep, and there is one place to look at per pole wanted and one behind them
 _COLUMNS = 16  # of one sweep: more of them leave the processor's caches
 # τs that agree to this are one: the products of decimal numbers round.
@@ -155,8 +155,8 @@ def amplitudes_by_node(cable: Cable, assumptions: Assumptions, modes: Modes) -> 
     modes : Modes
         As `time_constants` returns them.
     """
-    rate = _MS_PER_S / modes.tau_ms
-    circles = _circles(rate, _MS_PER_S * modes.separation_per_ms)
+    rate = MS_PER_S / modes.tau_ms
+    circles = _circles(rate, MS_PER_S * modes.separation_per_ms)
     lineup = line_up([cable], assumptions, [float(np.abs(circles).max(initial=0.0))])
     solved = lineup.forest.solved([Column(0, complex(s)) for s in circles.ravel()])
     transfer, local = (
@@ -171,7 +171,7 @@ def _membrane_taus(cable: Cable, assumptions: Assumptions) -> Real:
     codes = np.unique(cable.kind[1:]).tolist()
     soma = [SOMA] if cable.traced.soma.area > 0.0 or not _has_membrane(cable) else []
     membranes = [assumptions.of(code) for code in (*codes, *soma)]
-    return np.array([membrane.R_m_ohm_cm2 * membrane.C_m_uF_cm2 / _MS_PER_S for membrane in membranes])
+    return np.array([membrane.R_m_ohm_cm2 * membrane.C_m_uF_cm2 / MS_PER_S for membrane in membranes])
 
 
 def _enough(cable: Cable, assumptions: Assumptions, slowest_ms: float, count: int) -> float:
@@ -185,7 +185,7 @@ def _enough(cable: Cable, assumptions: Assumptions, slowest_ms: float, count: in
     L = electrotonic_lengths(cable.r_start, cable.r_end, cable.length, R_i, leak)
     with np.errstate(divide="ignore"):
         held = (1.0 + (count * np.pi / L) ** 2) * leak / capacity
-    return float(held.min() * slowest_ms / _MS_PER_S - 1.0)
+    return float(held.min() * slowest_ms / MS_PER_S - 1.0)
 
 
 def _has_membrane(cable: Cable) -> bool:
@@ -204,7 +204,7 @@ def _poles(
     fastest = np.zeros(len(cells))
     points = [search.points(_POINTS_PER_PLACE * search.places) for search in searches]
     while open_now := [i for i, w in enumerate(points) if len(w)]:
-        rate = (1.0 + np.stack([points[i] for i in open_now])) * (_MS_PER_S / slowest[open_now, None])
+        rate = (1.0 + np.stack([points[i] for i in open_now])) * (MS_PER_S / slowest[open_now, None])
         if open_now != looking or (rate.max(axis=1) > fastest[open_now]).any():
             looking = open_now
             fastest[looking] = np.maximum(fastest[looking], rate.max(axis=1))
@@ -221,7 +221,7 @@ def _amplitudes_at_soma(
     cells: Sequence[Cable], assumptions: Assumptions, slowest: Real, poles: Sequence[Sequence[Pole]]
 ) -> list[Real]:
     """Return A_k of every cell, MΩ/ms."""
-    unit = _MS_PER_S / slowest
+    unit = MS_PER_S / slowest
     rates = [
         one * (1.0 + np.array([pole.w for pole in found])) for one, found in zip(unit, poles, strict=True)
     ]
@@ -250,7 +250,7 @@ def _circles(rate: Real, separation: Real) -> NDArray[np.complex128]:
 
 def _residues(Z: NDArray[np.complex128], circles: NDArray[np.complex128], rate: Real) -> Real:
     """Return residues, MΩ/ms, from impedances (…, k, points) on circles (k, points); Z(s*) = Z(s)*."""
-    residues: Real = ((circles + rate[:, None]) * Z).real.mean(axis=-1) / _MS_PER_S
+    residues: Real = ((circles + rate[:, None]) * Z).real.mean(axis=-1) / MS_PER_S
     return residues
 
 

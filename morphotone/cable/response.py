@@ -11,10 +11,11 @@ from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.forest import Column, Forest
 from morphotone.cable.frustum import electrotonic_lengths
 from morphotone.cable.ranges import RANGES
-from morphotone.cable.spectrum import MS_PER_S, forest_of, places_of, slowest_ms, spectra
+from morphotone.cable.spectrum import forest_of, places_of, slowest_ms, spectra
 from morphotone.cable.sweeps import path_sums
 from morphotone.cable.tree import Cable
 from morphotone.errors import AssumptionError
+from morphotone.units import MS_PER_S
 
 Index = NDArray[np.int64]
 Real = NDArray[np.float64]
@@ -124,7 +125,7 @@ def frequency_response(
         cells, nodes, places, spectra(forest, s, places, names), strict=True
     ):
         phase = _unwrapped(np.angle(Z_transfer), wave[at])
-        response = (frequencies, Z_in, Z_transfer, np.angle(Z_in), phase, log_to, log_from)
+        response = (frequencies, Z_in, Z_transfer, np.angle(Z_in), phase, log_to.real, log_from.real)
         out.append(FrequencyResponse(cable, chosen, *response, warnings))
     return out
 
@@ -161,7 +162,7 @@ def half_power_hz(
     names = ("log_attenuation_to_soma",)
     at_rest = spectra(forest, [0.0], places, names)
     moving = spectra(forest, (2j * np.pi * grid).tolist(), places, names)
-    return [_half_power(grid, log - rest) for (rest,), (log,) in zip(at_rest, moving, strict=True)]
+    return [_half_power(grid, log.real - rest) for (rest,), (log,) in zip(at_rest, moving, strict=True)]
 
 
 def _half_power(grid: Real, growth: Real) -> Real:

@@ -9,11 +9,10 @@ from numpy.typing import NDArray
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.forest import Column, Forest
 from morphotone.cable.tree import Cable
-from morphotone.units import FARAD_PER_MICROFARAD
+from morphotone.units import FARAD_PER_MICROFARAD, MS_PER_S
 
 Index = NDArray[np.int64]
 
-MS_PER_S = 1e3
 _COLUMNS = 16  # solved at a time: with more, the sweeps leave the processor's cache
 
 

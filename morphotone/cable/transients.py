@@ -28,10 +28,11 @@ from numpy.typing import NDArray
 from morphotone.cable import neighbours
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.contour import Complex, Contour, contour
-from morphotone.cable.spectrum import MS_PER_S, forest_of, places_of, slowest_ms, spectra
+from morphotone.cable.spectrum import forest_of, places_of, slowest_ms, spectra
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.cable.tree import Cable
 from morphotone.errors import AssumptionError
+from morphotone.units import MS_PER_S
 
 Index = NDArray[np.int64]
 Real = NDArray[np.float64]

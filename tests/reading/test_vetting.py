@@ -626,7 +626,8 @@ def test_without_a_soma_the_piece_with_the_most_cable_is_the_cell() -> None:
     made = in_pieces(6, 40)
     made.kind[0] = 3
     assert sentence(made, "piece_apart") == (
-        "A piece of 6 samples and 10 µm of cable, from line 3, sample 1, is not connected to the longest piece."
+        "A piece of 6 samples and 10 µm of cable, from line 3, sample 1, "
+        "is not connected to the longest piece."
     )
 
 
