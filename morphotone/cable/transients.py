@@ -49,6 +49,7 @@ _PRECISION = 1e-11
 _REFERENCE = 1e-13  # precision of the hyperbola that ρ is measured against
 _STEP = 0.04  # of ln t, between the times at which responses are looked at
 _ROWS = 1000  # evaluated at a time, so that they stay in the processor's cache
+_STACK = 4  # rows of one matrix product, too few for several threads to share
 _UNRESOLVED = 1e-3  # a response less certain than this, relative to its peak, is not given
 
 
@@ -270,16 +271,28 @@ def _single_poles(
     line: Contour, current: SynapticCurrent, times: Real, poles: Real
 ) -> tuple[Real, Real, Real]:
     """Return the response of each pole to unit charge, its dV/d ln t, and V when the current peaks."""
-    modes = _pairs(1.0 / (line.s + poles[:, None]))
+    modes = 1.0 / (line.s + poles[:, None])
     transform = current.transform(line.s)
     peak = line.kernel(np.array([current.peak_time_ms]), transform)
-    slope = modes @ line.kernel(times, transform * line.s) * times
-    return modes @ line.kernel(times, transform), slope, modes @ peak
+    slope = _evaluated(modes, line.kernel(times, transform * line.s)) * times
+    return _evaluated(modes, line.kernel(times, transform)), slope, _evaluated(modes, peak)
 
 
 def _pairs(values: Complex) -> Real:
     """Return complex rows as pairs of real and imaginary parts."""
     return np.ascontiguousarray(values).view(np.float64)
+
+
+def _evaluated(Z: Complex, kernel: Real) -> Real:
+    """Return the product of complex rows, as pairs, with a kernel: the same bits for any number of threads.
+
+    Threads share out the rows of a large product, and the last rows of each share are rounded differently.
+    """
+    pairs = _pairs(Z)
+    stacks = np.zeros((-(-len(pairs) // _STACK), _STACK, pairs.shape[1]))
+    stacks.reshape(-1, pairs.shape[1])[: len(pairs)] = pairs
+    product: Real = (stacks @ kernel).reshape(-1, kernel.shape[1])[: len(pairs)]
+    return product
 
 
 class _Along(NamedTuple):
@@ -311,7 +324,7 @@ def _solved(
 
 def _transients(cable: Cable, window: Window, along: _Along) -> Transients:
     """Read off one cell's responses."""
-    at_peak = (_pairs(along.Z_in) @ window.at_peak)[:, 0]
+    at_peak = _evaluated(along.Z_in, window.at_peak)[:, 0]
     local, between = at_peak[1:], np.sqrt(at_peak[1:] * at_peak[0])
     return Transients(
         cable,
@@ -336,7 +349,7 @@ def _responses(window: Window, Z: Complex, R: Real, scale: Real) -> Responses:
 
 def _shapes(window: Window, Z: Complex, scale: Real) -> Real:
     """Return peak (per unit charge), time to peak, rise, half-width, error and error_ms, one row each."""
-    curves = _pairs(Z) @ window.kernel
+    curves = _evaluated(Z, window.kernel)
     highest = np.clip(curves.argmax(axis=1), neighbours.LEFT, curves.shape[1] - 1 - neighbours.RIGHT)
     near = neighbours.polynomials(curves, highest)
     x = neighbours.summits(near)
