@@ -38,7 +38,7 @@ from morphotone.showing.tables import csv_texts
 NAME = "survey"
 _LEADING = ["file", "cell"]  # columns that say whose row it is
 _TYPES = dict.fromkeys(
-    ("file", "cell", "domain", "domains_differ", "reason", "sentence"), "str"
+    ("file", "cell", "domain", "domains_differ", "peeling_warnings", "reason", "sentence"), "str"
 ) | dict.fromkeys(("line", "sample", "count"), "Int64")
 # From 3.1 on pandas reads every number back equal, and warns who asks for it.
 _PANDAS = tuple(int(part) for part in pd.__version__.split(".")[:2])
