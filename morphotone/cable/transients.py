@@ -289,9 +289,10 @@ def _evaluated(Z: Complex, kernel: Real) -> Real:
     Threads share out the rows of a large product, and the last rows of each share are rounded differently.
     """
     pairs = _pairs(Z)
-    stacks = np.zeros((-(-len(pairs) // _STACK), _STACK, pairs.shape[1]))
-    stacks.reshape(-1, pairs.shape[1])[: len(pairs)] = pairs
-    product: Real = (stacks @ kernel).reshape(-1, kernel.shape[1])[: len(pairs)]
+    missing = -len(pairs) % _STACK
+    whole = np.concatenate((pairs, np.zeros((missing, pairs.shape[1])))) if missing else pairs
+    stacks = whole.reshape(len(whole) // _STACK, _STACK, -1)
+    product: Real = (stacks @ kernel).reshape(len(whole), -1)[: len(pairs)]
     return product
 
 
