@@ -40,14 +40,15 @@ QUICK = Sizes(
     most_cases=4,
 )
 #: Too few cells for several workers, too little time for new processes one after the other.
-QUICK_PARTS = ("runs", "stages", "growth")
+QUICK_PARTS = ("runs", "stages", "time", "growth")
 _NAME_WIDTH = 46
 
 _EPILOG = """\
 parts:
-  runs     bare reading (pandas.read_csv, files warm), vet, and survey in its three usual forms, 1 worker
+  runs     bare reading (pandas.read_csv, files warm), vet, and survey in its usual forms, 1 worker
   stages   where the time of a survey at 0 Hz goes; elements are the frusta, sweeps the two sweeps and the
            sums along paths, forest what else solving needs, rest the hashes and all between the stages
+  time     the time axis of one cell, in units of one sweep of one case at 0 Hz
   workers  a survey by several processes that run already, against the same by one
   growth   exponent of time against samples (one cell, without ledger), cells (whole surveys) and cases
            (solving alone), by least squares of the logarithms
@@ -55,7 +56,7 @@ parts:
   memory   the most that the process of a survey ever had in RAM
 
 each figure is the median of the repetitions, beside the least and the greatest; x bare is a ratio to the bare
-reading in the same repetition
+reading in the same repetition, sweeps one to a single case; a target stands beside where one was set
 
 examples:
   python scripts/benchmark.py --quick
@@ -130,7 +131,8 @@ def printed(rows: Iterator[Row]) -> Iterator[Row]:
             part = row.part
             print(f"\n{part:<{_NAME_WIDTH}} {'median':>9} {'least':>9} {'greatest':>9}")
         figures = " ".join(f"{_figure(value):>9}" for value in (row.median, row.least, row.greatest))
-        print(f"  {row.name:<{_NAME_WIDTH - 2}} {figures} {row.unit}".rstrip(), flush=True)
+        target = "" if row.target is None else f" (target: at most {_figure(row.target)})"
+        print(f"  {row.name:<{_NAME_WIDTH - 2}} {figures} {row.unit}{target}".rstrip(), flush=True)
         yield row
 
 
@@ -159,7 +161,7 @@ def parser() -> argparse.ArgumentParser:
         "--parts",
         nargs="+",
         choices=PARTS,
-        help="what to measure (default: all, or with --quick runs, stages, growth)",
+        help="what to measure (default: all, or with --quick runs, stages, time, growth)",
     )
     add("--json", metavar="FILE", type=Path, help="write the figures there too")
     add("--repeats", metavar="N", type=_positive, help=f"of everything (default: {USUAL.repeats})")

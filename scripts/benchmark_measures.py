@@ -1,4 +1,4 @@
-"""What the benchmark times: the commands, their stages, workers, growth, start and memory.
+"""What the benchmark times: the commands, their stages, the time axis, workers, growth, start and memory.
 
 Everything that is timed is what the commands call. Every repetition goes through all runs of a part in turn
 and a ratio is taken within one repetition, so that what slows the machine for a while slows both sides.
@@ -12,7 +12,7 @@ import time
 from collections import defaultdict
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from contextlib import ExitStack, contextmanager
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import partial
 from pathlib import Path
 from pkgutil import resolve_name
@@ -25,13 +25,22 @@ import pandas as pd
 from benchmark_cells import draw_folder
 
 from morphotone.cable.assumptions import Assumptions, Membrane
+from morphotone.cable.delays import delays
 from morphotone.cable.electrotonus import build_cases, cases_of, solve_cables
+from morphotone.cable.forest import Column, Forest
+from morphotone.cable.modes import time_constants
+from morphotone.cable.response import frequency_response, half_power_hz
+from morphotone.cable.spectrum import forest_of
+from morphotone.cable.synaptic import SynapticCurrent
+from morphotone.cable.transients import transients
+from morphotone.cable.tree import build
 from morphotone.commands.survey import outcomes, write_survey
 from morphotone.commands.vet import vet
 from morphotone.night.folder import PATTERNS, find_files
 from morphotone.night.outcome import Item
 from morphotone.night.runner import Tally
 from morphotone.questions.survey import Request
+from morphotone.questions.time_axis import TimeRequest
 from morphotone.reading.reconstruction import Reconstruction, read
 
 Key = TypeVar("Key")
@@ -42,8 +51,12 @@ COLUMNS = ["number", "type", "x", "y", "z", "radius", "parent"]
 AT_REST = Request(Assumptions())
 TWO_FREQUENCIES = Request(Assumptions(hz=(10.0, 100.0)))
 BY_SAMPLE = Request(Assumptions(), samples=True)
+WITH_DELAYS = replace(TWO_FREQUENCIES, time=TimeRequest(delays=True))
 SMALL_CELL = 500  # samples; of the cells whose number grows
 CELLS_OF_CASES = 8  # solved together where the number of cases grows
+SWEEPS = 5  # of one case, whose median is the unit of the time axis
+CURRENT = SynapticCurrent(0.5, 3.0)
+GRID_HZ: list[float] = np.geomspace(1.0, 1e4, 41).tolist()
 
 #: Stage, and a function whose time it takes, less the time of other functions of this list within it.
 STAGES = (
@@ -72,7 +85,10 @@ REST = "rest"
 
 @dataclass(frozen=True)
 class Row:
-    """One line of the table: the median of the repetitions, with the least and the greatest."""
+    """One line of the table: the median of the repetitions, with the least and the greatest.
+
+    ``target`` is what the median should not exceed, where something was set.
+    """
 
     part: str
     name: str
@@ -80,6 +96,7 @@ class Row:
     median: float
     least: float
     greatest: float
+    target: float | None = None
 
 
 @dataclass(frozen=True)
@@ -119,9 +136,9 @@ class Bench:
         return {name: list(given) for name, given in zip(timers, zip(*rounds, strict=True), strict=True)}
 
 
-def row(part: str, name: str, unit: str, values: Sequence[float]) -> Row:
+def row(part: str, name: str, unit: str, values: Sequence[float], target: float | None = None) -> Row:
     """Summarise repetitions."""
-    return Row(part, name, unit, float(np.median(values)), min(values), max(values))
+    return Row(part, name, unit, float(np.median(values)), min(values), max(values), target)
 
 
 def ratios(values: Sequence[float], to: Sequence[float]) -> list[float]:
@@ -176,6 +193,7 @@ def measure_runs(bench: Bench) -> Iterator[Row]:
             "vet": partial(seconds_of, vet, folder),
             "survey at 0 Hz": partial(survey_seconds, folder),
             "survey at 0 Hz and two frequencies": partial(survey_seconds, folder, TWO_FREQUENCIES),
+            "survey at 0 Hz with two frequencies and delays": partial(survey_seconds, folder, WITH_DELAYS),
             "survey at 0 Hz with tables by sample": partial(survey_seconds, folder, BY_SAMPLE),
         }
     )
@@ -223,6 +241,35 @@ def stages_timed() -> Iterator[dict[str, float]]:
             owner = resolve_name(home)
             stack.enter_context(mock.patch.object(owner, name, timed(stage, getattr(owner, name))))
         yield seconds
+
+
+def measure_time(bench: Bench) -> Iterator[Row]:
+    """Measure the time axis of one drawn cell in units of one sweep of one case, at 0 Hz."""
+    (path,) = bench.drawn(1, bench.sizes.samples).iterdir()
+    cell = [build(read(path), Assumptions())]
+    sweep = partial(_sweep_seconds, forest_of(cell, Assumptions()))
+    targets: dict[str, tuple[Callable[..., object], tuple[Any, ...], float | None]] = {
+        "all delays": (delays, (), 2.0),
+        "three time constants": (time_constants, (3,), 60.0),
+        "peak and half-width, all samples": (transients, (CURRENT,), 150.0),
+        "peak and half-width, soma only": (transients, (CURRENT, [np.zeros(1, np.int64)]), None),
+        f"{len(GRID_HZ)} frequencies": (frequency_response, (GRID_HZ,), None),
+        "half-power frequency of the attenuation": (half_power_hz, (), None),
+    }
+    timers: dict[str, Timer] = {
+        name: partial(seconds_of, work, cell, Assumptions(), *more)
+        for name, (work, more, _) in targets.items()
+    }
+    seconds = bench.repeated({"one case": sweep, **timers})
+    reference = seconds.pop("one case")
+    yield row("time", "one case, at 0 Hz", "ms", [1e3 * value for value in reference])
+    for name, values in seconds.items():
+        yield row("time", name, "sweeps", ratios(values, reference), targets[name][2])
+
+
+def _sweep_seconds(forest: Forest) -> float:
+    """Return how long one case takes to solve: the median of a few, each too short to be timed alone."""
+    return float(np.median([seconds_of(forest.solved, [Column(0, 0.0)]) for _ in range(SWEEPS)]))
 
 
 def measure_workers(bench: Bench) -> Iterator[Row]:
@@ -354,6 +401,7 @@ def _said_by(command: Sequence[str]) -> str:
 PARTS: dict[str, Callable[[Bench], Iterator[Row]]] = {
     "runs": measure_runs,
     "stages": measure_stages,
+    "time": measure_time,
     "workers": measure_workers,
     "growth": measure_growth,
     "start": measure_start,

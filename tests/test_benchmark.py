@@ -13,7 +13,7 @@ from morphotone.reading.vetting import vet_reconstruction
 
 SCRIPTS = Path(__file__).resolve().parent.parent / "scripts"
 TINY = ["--cells", "3", "--samples", "90", "--most-samples", "400", "--most-cells", "20", "--most-cases", "2"]
-IN_ONE_PROCESS = ["runs", "stages", "growth"]
+IN_ONE_PROCESS = ["runs", "stages", "time", "growth"]
 IN_OTHERS = ["workers", "start", "memory"]
 STAGES = {"read", "vet", "build", "forest", "elements", "sweeps", "tables", "write", "rest"}
 
@@ -71,6 +71,25 @@ def test_stages_have_all_been_through(tiny):
     stages = {row["name"]: row["median"] for row in figures["rows"] if row["part"] == "stages"}
     assert set(stages) == STAGES
     assert all(stages.values())
+
+
+def test_the_time_axis_stands_in_sweeps_beside_its_targets(tiny):
+    printed, figures = tiny
+    rows = {row["name"]: row for row in figures["rows"] if row["part"] == "time"}
+    case = rows.pop("one case, at 0 Hz")
+    assert (case["unit"], case["target"]) == ("ms", None)
+    assert {row["unit"] for row in rows.values()} == {"sweeps"}
+    targets = {name: row["target"] for name, row in rows.items() if row["target"] is not None}
+    assert targets == {
+        "all delays": 2.0,
+        "three time constants": 60.0,
+        "peak and half-width, all samples": 150.0,
+    }
+    for name, target in targets.items():
+        (line,) = (line for line in printed.splitlines() if line.startswith(f"  {name} "))
+        assert line.endswith(f" sweeps (target: at most {target:.0f})")
+    assert rows["41 frequencies"]["target"] is None
+    assert "two frequencies and delays" in printed
 
 
 def test_growth_names_each_size_and_an_exponent(tiny):
