@@ -7,6 +7,9 @@ import numpy as np
 from morphotone.cable.contour import Complex
 from morphotone.errors import AssumptionError
 
+# No current in a neuron is outside; well inside what the inversion was tried on.
+_SHORTEST_MS, _LONGEST_MS = 1e-6, 1e6
+
 
 @dataclass(frozen=True)
 class SynapticCurrent:
@@ -25,9 +28,10 @@ class SynapticCurrent:
 
     def __post_init__(self) -> None:
         for name, value in (("rise", self.rise_ms), ("decay", self.decay_ms)):
-            if not (np.isfinite(value) and value > 0.0):
+            if not _SHORTEST_MS <= value <= _LONGEST_MS:  # NaN fails too
                 raise AssumptionError(
-                    f"{name} time {value!r} ms of the synaptic current, expected a positive number of ms"
+                    f"{name} time {value!r} ms of the synaptic current, expected a number from "
+                    f"{_SHORTEST_MS:g} to {_LONGEST_MS:g} ms"
                 )
         if self.rise_ms > self.decay_ms:
             raise AssumptionError(

@@ -45,7 +45,7 @@ FIRST_TIME = 0.02
 # The response is followed until this many times the sum of the time constants of the current and of the
 # slowest membrane: half a peak lies there even for a site 50 λ away.
 _LAST_TIME = 40.0
-_PRECISION = 1e-11
+_PRECISION = 1e-10
 _REFERENCE = 1e-13  # precision of the hyperbola that ρ is measured against
 _STEP = 0.04  # of ln t, between the times at which responses are looked at
 _ROWS = 1000  # evaluated at a time, so that they stay in the processor's cache
@@ -165,8 +165,8 @@ def transients(
 
     Notes
     -----
-    About as long as 100 sweeps of one case for all sites of a cell of 6,500 samples, 70 for a few sites;
-    some 3 kB of memory per site of all cells together.
+    About as long as 90 to 140 sweeps of one case for all sites of a cell of 6,500 samples, 50 to 100 for
+    a few; some 3 kB of memory per site of all cells together.
     """
     if not cells:
         return []

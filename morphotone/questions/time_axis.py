@@ -131,7 +131,7 @@ def _modes_row(modes: Modes, count: int) -> dict[str, Any]:
     return row | {
         "L_by_peeling": modes.peeled.L,
         "peeling_conditions_broken": len(modes.peeled.warnings),
-        "peeling_warnings": "; ".join(modes.peeled.warnings),
+        "peeling_warnings": " | ".join(modes.peeled.warnings),
     }
 
 

@@ -169,7 +169,7 @@ def test_the_row_of_a_cell_says_what_the_engine_says(family, assumed):
     assert_equal(added(row, modes_columns(3)), expected)
     assert row["L_by_peeling"] == pytest.approx(modes.peeled.L, rel=1e-9)
     assert row["peeling_conditions_broken"] == len(modes.peeled.warnings)
-    assert row["peeling_warnings"] == "; ".join(modes.peeled.warnings)
+    assert row["peeling_warnings"] == " | ".join(modes.peeled.warnings)
     seen = ((brief.at_soma, 0), (brief.at_soma, tip), (brief.at_site, tip))
     for way, (responses, node) in zip(WAYS, seen, strict=True):
         expected = {name: values[node] for name, values in shape(responses, way).items()}
