@@ -55,6 +55,14 @@ def rows_of(table: str) -> list[dict[str, str]]:
         return list(csv.DictReader(lines))
 
 
+def shown(field: str) -> str:
+    """Return a field of a table with four digits at most if it is a number with a decimal point."""
+    try:
+        return f"{float(field):.4g}" if "." in field else field
+    except ValueError:
+        return field
+
+
 def explain(cells: list[dict[str, str]], turned_away: int) -> None:
     """Say what the exit code means, show some rows, name the files."""
     say(
@@ -62,7 +70,7 @@ def explain(cells: list[dict[str, str]], turned_away: int) -> None:
         f"in {SAMPLES.name}/troubles were turned away, on purpose. turned_away.csv says why.\n"
     )
     say(f"cells.csv has {len(cells)} cells; four of its columns, the first {SHOWN_ROWS}:")
-    for line in [SHOWN, *([cell[column] for column in SHOWN] for cell in cells[:SHOWN_ROWS])]:
+    for line in [SHOWN, *([shown(cell[column]) for column in SHOWN] for cell in cells[:SHOWN_ROWS])]:
         say("  " + "".join(field[:22].ljust(24) for field in line).rstrip())
     say("\nWhere to look:")
     for path in sorted(RESULTS.iterdir()):
