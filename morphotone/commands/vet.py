@@ -86,7 +86,7 @@ def vet(
         No path is given, one is not there, or a folder holds no such file.
     """
     chosen = assumptions or Assumptions()
-    found = list(_found([paths] if isinstance(paths, str | os.PathLike) else paths))
+    found = list(files_of([paths] if isinstance(paths, str | os.PathLike) else paths))
     if not found:
         raise MorphotoneError("nothing to vet: read no path, expected files or folders")
     progress = progress or Silent()
@@ -106,7 +106,7 @@ def vet(
     return Trust(pd.DataFrame(rows), pd.DataFrame(findings).astype(whole))
 
 
-def _found(paths: Sequence[str | os.PathLike[str]]) -> Iterator[Found]:
+def files_of(paths: Sequence[str | os.PathLike[str]]) -> Iterator[Found]:
     """Yield all files; those of one folder among several names are led by the folder's."""
     for path in map(Path, paths):
         if path.is_dir():

@@ -38,16 +38,38 @@ def run_record(
         What the caller adds, JSON types: assumptions, thresholds. Stands after the times.
     """
     known = ledger.known()
+    inputs = {name: known[name].sha256 for name in names}
+    return record_of(started=started, counts=asdict(tally), inputs_sha256=inputs, details=details)
+
+
+def record_of(
+    *,
+    started: datetime,
+    counts: Mapping[str, int],
+    inputs_sha256: Mapping[str, str],
+    details: Mapping[str, Any],
+) -> dict[str, Any]:
+    """Put together the record of any run that ends now, with or without a ledger.
+
+    Parameters
+    ----------
+    started, details
+        As for `run_record`.
+    counts : mapping of str to int
+        What came in, and what became of it.
+    inputs_sha256 : mapping of str to str
+        By name of the input; empty where it could not be read.
+    """
     return {
         "started": _utc(started),
         "ended": _utc(datetime.now(UTC)),
         "command": sys.argv,
         **details,
-        "counts": asdict(tally),
+        "counts": dict(counts),
         "machine": {"host": platform.node(), "platform": platform.platform()},
         "python": platform.python_version(),
         "packages": {package: version(package) for package in PACKAGES},
-        "inputs_sha256": {name: known[name].sha256 or None for name in names},
+        "inputs_sha256": {name: sha256 or None for name, sha256 in inputs_sha256.items()},
     }
 
 

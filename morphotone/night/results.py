@@ -7,10 +7,11 @@ import os
 import re
 import unicodedata
 from collections import Counter
-from collections.abc import Iterable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from contextlib import ExitStack, contextmanager, suppress
+from functools import partial
 from pathlib import Path
-from typing import TextIO
+from typing import Any, BinaryIO, TextIO
 
 from morphotone.errors import ResultsError
 from morphotone.night.ledger import Ledger
@@ -33,10 +34,23 @@ def atomic(path: Path) -> Iterator[TextIO]:
     ResultsError
         The disk refuses.
     """
+    with _in_place_when_whole(path, partial(open, mode="w", encoding="utf-8", newline="")) as stream:
+        yield stream
+
+
+@contextmanager
+def atomic_bytes(path: Path) -> Iterator[BinaryIO]:
+    """Open a binary file that takes its place as a text file does with `atomic`."""
+    with _in_place_when_whole(path, partial(open, mode="wb")) as stream:
+        yield stream
+
+
+@contextmanager
+def _in_place_when_whole(path: Path, opened: Callable[[Path], Any]) -> Iterator[Any]:
     unfinished = path.with_name(f".{path.name}.part")
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
-        with unfinished.open("w", encoding="utf-8", newline="") as stream:
+        with opened(unfinished) as stream:
             yield stream
             stream.flush()
             os.fsync(stream.fileno())

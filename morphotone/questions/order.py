@@ -77,7 +77,7 @@ def levels(values: ArrayLike) -> Real:
 
 
 def ranks(values: ArrayLike, within: Sequence[Hashable] | None = None) -> pd.DataFrame:
-    """Return rank, number of sites that share it, and percentile, of all values or within each group.
+    """Return rank, number of other sites that share it, and percentile, of all values or within each group.
 
     Parameters
     ----------
@@ -90,7 +90,7 @@ def ranks(values: ArrayLike, within: Sequence[Hashable] | None = None) -> pd.Dat
     -------
     DataFrame, shape (n, 3)
         ``rank``: 1 for the greatest value, ties sharing the smallest number (Int64, missing where there is
-        none); ``sharing``: how many sites share it, 1 for no tie; ``percentile``: share of the sites that
+        none); ``tied``: how many others share it, 0 for no tie (Int64); ``percentile``: share of the sites that
         lie below, tied ones counted half, in percent (`scipy.stats.percentileofscore`, kind "mean").
     """
     level = pd.Series(levels(values))
@@ -102,11 +102,11 @@ def ranks(values: ArrayLike, within: Sequence[Hashable] | None = None) -> pd.Dat
     inside = level.groupby(group)
     rank = inside.rank(method="min", ascending=False)
     middle = inside.rank(method="average")
-    sharing = level.groupby([group, level]).transform("size")
+    tied = level.groupby([group, level]).transform("size") - 1
     return pd.DataFrame(
         {
             "rank": rank.astype("Int64"),
-            "sharing": sharing.astype("Int64"),
+            "tied": tied.astype("Int64"),
             "percentile": 100.0 * (middle - 0.5) / inside.transform("count"),
         }
     )

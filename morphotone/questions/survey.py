@@ -84,8 +84,20 @@ class Answer:
 
 
 @dataclass(frozen=True, eq=False)
-class _Read:
-    """A file that will be solved."""
+class Prepared:
+    """A file that will be solved.
+
+    Attributes
+    ----------
+    name : str
+        The file's, as asked.
+    rec : Reconstruction
+        As analysed, its radii mended.
+    vetting : Vetting
+        Its grade and findings.
+    cables : tuple of Cable
+        One, under the assumptions asked.
+    """
 
     name: str
     rec: Reconstruction
@@ -113,13 +125,13 @@ def answers(files: Sequence[tuple[str, bytes | ReadingError]], request: Request)
     list of Answer
         One per file, in the same order; each is the same whatever files it is in company with.
     """
-    prepared = [_prepare(name, content, request) for name, content in files]
-    ready = [each for each in prepared if isinstance(each, _Read)]
+    prepared = [prepare(name, content, request) for name, content in files]
+    ready = [each for each in prepared if isinstance(each, Prepared)]
     # Absurd files (kept although unfit) may overflow; their infinities stand in the table for what they are.
     with np.errstate(over="ignore", under="ignore", divide="ignore", invalid="ignore"):
         cells = iter(_solved(ready, request))
         return [
-            _tabulated(each.name, next(cells), request) if isinstance(each, _Read) else each
+            _tabulated(each.name, next(cells), request) if isinstance(each, Prepared) else each
             for each in prepared
         ]
 
@@ -132,7 +144,7 @@ def headers(request: Request) -> dict[str, list[str]]:
     return {"cells": list(answer.cell or {}), **columns}
 
 
-def _prepare(name: str, content: bytes | ReadingError, request: Request) -> _Read | Answer:
+def prepare(name: str, content: bytes | ReadingError, request: Request) -> Prepared | Answer:
     """Read, vet, mend and build; an Answer means that the file is turned away."""
     assumptions = request.assumptions
     nothing = findings_table((), "")
@@ -150,7 +162,7 @@ def _prepare(name: str, content: bytes | ReadingError, request: Request) -> _Rea
         mended = mend_radii(rec, assumptions.thresholds)
         findings = vetting.findings + mended.findings[len(rec.findings) :]
         vetting = Vetting(findings, grade_of(findings))
-        return _Read(name, mended, vetting, build_cases(mended, [assumptions]))
+        return Prepared(name, mended, vetting, build_cases(mended, [assumptions]))
     except ReadingError as error:
         table = findings_table(vetting.findings, vetting.grade)
         return Answer(name, sha256, len(rec.number), table, reason=error.reason, sentence=str(error))
@@ -169,7 +181,7 @@ def _in_view_of(assumptions: Assumptions, vetting: Vetting) -> Vetting:
     return Vetting(findings, grade_of(findings))
 
 
-def _solved(ready: Sequence[_Read], request: Request) -> list[Cell]:
+def _solved(ready: Sequence[Prepared], request: Request) -> list[Cell]:
     """Solve cells as one forest, the time axis too where it is asked for."""
     solved = solve_cables([each.cables for each in ready], cases_of([request.assumptions]))
     cells = [Cell(each.rec, each.vetting, one) for each, one in zip(ready, solved, strict=True)]

@@ -33,8 +33,8 @@ def test_percentiles_are_those_of_scipy(values):
     np.testing.assert_allclose(ranks(values)["percentile"], expected, rtol=1e-13)
 
 
-def test_sharing_counts_the_sites_of_a_rank(values):
-    assert ranks(values)["sharing"].tolist() == [int((values == value).sum()) for value in values]
+def test_tied_counts_the_others_of_a_rank(values):
+    assert ranks(values)["tied"].tolist() == [int((values == value).sum()) - 1 for value in values]
 
 
 def test_by_hand_with_a_tie_and_a_value_that_is_not_there():
@@ -42,7 +42,7 @@ def test_by_hand_with_a_tie_and_a_value_that_is_not_there():
     assert table["rank"].tolist()[:2] == [2, 1]
     assert table["rank"].isna().tolist() == [False, False, True, False, False]
     assert table["rank"].tolist()[3:] == [2, 4]
-    assert table["sharing"].dropna().tolist() == [2, 1, 2, 1]
+    assert table["tied"].dropna().tolist() == [1, 0, 1, 0]
     np.testing.assert_allclose(table["percentile"], [50.0, 87.5, np.nan, 50.0, 12.5])
 
 
@@ -53,7 +53,7 @@ def test_within_groups_each_group_is_ranked_by_itself():
     for group in ("ferry", "heron"):
         rows = np.flatnonzero(within == group)
         assert table["rank"][rows].tolist() == stats.rankdata(-values[rows], method="min").tolist()
-        assert table["sharing"][rows].tolist() == [int((values[rows] == v).sum()) for v in values[rows]]
+        assert table["tied"][rows].tolist() == [int((values[rows] == v).sum()) - 1 for v in values[rows]]
     outside = within == np.array(None)
     assert outside.any()
     assert table[outside].isna().all(axis=None)
