@@ -1,4 +1,4 @@
-"""Pairs of sites against the literal definitions, a dense inverse, networkx's common ancestors, and by hand."""
+"""Pairs of sites against the literal definitions, a dense inverse, networkx's common ancestors, by hand."""
 
 from itertools import product
 
@@ -141,7 +141,7 @@ def test_on_path_is_ancestry():
 
 
 def test_equal_arms_by_hand():
-    """Two sealed cylinders of L = 1 from one point are one of L = 2: R_in at its end coth 2, across 1/sinh 2."""
+    """Two sealed cylinders of L = 1 from one point are one of L = 2: coth 2 at its end, 1/sinh 2 across."""
     lam = 1e4 * np.sqrt(20000 / 150 * 2e-4 / 4)
     tree = trees.Tree()
     root = tree.add((0, 0, 0), 1.0)
