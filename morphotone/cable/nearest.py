@@ -16,7 +16,7 @@ Real = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 _POINTS_AT_ONCE = 1024
-_CANDIDATES_AT_ONCE = 2_000_000  # bounds the memory: of some points, thousands of frusta are about equally far
+_CANDIDATES_AT_ONCE = 2_000_000  # bounds the memory: thousands of frusta may be about equally far
 _ROUNDING = 1e-9  # share by which a search radius is widened, so that rounding loses no candidate
 
 
@@ -72,13 +72,29 @@ def nearest_places(cable: Cable, points: Real) -> Nearest:
     node, fraction, moved = _on_frusta(_cones(cable), points)
     to_soma = _distance_to_soma(cable.traced, points)
     in_soma = to_soma <= moved
-    return Nearest(
-        np.where(in_soma, 0, node), np.where(in_soma, 0.0, fraction), np.where(in_soma, to_soma, moved), in_soma
-    )
+    node[in_soma], fraction[in_soma] = 0, 0.0
+    return Nearest(node, fraction, np.minimum(to_soma, moved), in_soma)
+
+
+def positions(cable: Cable, node: Index, fraction: Real) -> Real:
+    """Return where on the cable's axis places lie, µm, shape (places, 3), in the frame of ``cable.traced``.
+
+    Parameters
+    ----------
+    cable : Cable
+        As `morphotone.cable.tree.build` makes it, before any cut at sites.
+    node, fraction : ndarray, shape (places,)
+        As `morphotone.cable.sites.with_sites` takes them.
+    """
+    cones = _cones(cable)
+    origin = cable.traced.position[cable.sample[:1]]
+    end, start = (np.concatenate((origin, ends)) for ends in (cones.end, cones.start))
+    share = np.asarray(fraction)[:, None]
+    return (1.0 - share) * end[node] + share * start[node]
 
 
 def _cones(cable: Cable) -> _Cones:
-    """Return where the frustum that ends at each node from 1 on lies; a stem's starts at the soma's surface."""
+    """Return where the frustum that ends at each node but the first lies; a stem's starts at the soma."""
     traced, ends = cable.traced, cable.sample[1:]
     position, above = traced.position, traced.parent[ends]
     tip = position[ends]
@@ -107,13 +123,13 @@ def _on_frusta(cones: _Cones, points: Real) -> tuple[Index, Real, Real]:
 class _Balls(NamedTuple):
     """Balls of about one size that together hold some of the frusta."""
 
-    index: cKDTree  # of their centres
+    tree: cKDTree  # of their centres
     radius: float  # of the largest, µm
     of: Index  # (balls,) the cone each one holds a part of
 
 
 def _balls(cones: _Cones) -> list[_Balls]:
-    """Cover the frusta with balls, sorted into classes of size so that a thick frustum widens no other's search.
+    """Cover the frusta with balls, in classes of size, so that a thick one widens no other's search.
 
     A frustum much longer than the mean or its own width is covered by several: at most three a frustum
     on average.
@@ -134,11 +150,11 @@ def _balls(cones: _Cones) -> list[_Balls]:
 
 def _search(cones: _Cones, classes: list[_Balls], points: Real) -> tuple[Index, Real, Real]:
     """Return node, fraction and distance of the nearest frustum, from all whose balls reach near enough."""
-    guesses = [balls.of[balls.index.query(points)[1]] for balls in classes]
+    guesses = [balls.of[balls.tree.query(points)[1]] for balls in classes]
     bound = np.min([_to_cones(cones, guess, points)[1] for guess in guesses], axis=0)
     reach = [(bound + balls.radius) * (1.0 + _ROUNDING) for balls in classes]
     counts = sum(
-        balls.index.query_ball_point(points, near, return_length=True)
+        balls.tree.query_ball_point(points, near, return_length=True)
         for balls, near in zip(classes, reach, strict=True)
     )
     portions = np.cumsum(counts) // _CANDIDATES_AT_ONCE
@@ -157,7 +173,7 @@ def _nearest_of(
     rows = np.arange(len(points))
     point, cone = [], []
     for balls, radius in zip(classes, reach, strict=True):
-        near = balls.index.query_ball_point(points, radius)
+        near = balls.tree.query_ball_point(points, radius)
         counts = np.fromiter(map(len, near), np.int64, len(near))
         point.append(np.repeat(rows, counts))
         cone.append(balls.of[np.fromiter(chain.from_iterable(near), np.int64, counts.sum())])
@@ -186,7 +202,8 @@ def _distance_to_soma(traced: Traced, points: Real) -> Real:
         distance = np.minimum(distance, np.linalg.norm(points - centre, axis=1) - radius)
     for cone in _soma_cones(traced):
         distance = np.minimum(distance, _outside(cone, points))
-    return np.maximum(distance, 0.0)
+    outside: Real = np.maximum(distance, 0.0)
+    return outside
 
 
 def _soma_spheres(traced: Traced) -> Iterator[tuple[Real, float]]:
@@ -217,4 +234,5 @@ def _outside(cone: _Cones, points: Real) -> Real:
     beside = np.linalg.norm(points - cone.start - along[:, None] * axis, axis=1)
     within = (along >= 0) & (along <= 1) & (beside <= cone.r_start + along * (cone.r_end - cone.r_start))
     _, distance = _to_cones(cone, np.zeros(len(points), np.int64), points)
-    return np.where(within, 0.0, distance)
+    distance[within] = 0.0
+    return distance

@@ -2,14 +2,29 @@
 
 from __future__ import annotations
 
+import csv
+import hashlib
+import io
+import os
+from collections.abc import Sequence
 from dataclasses import dataclass, fields, replace
-from typing import Literal
 
 import numpy as np
+import pandas as pd
 from numpy.typing import NDArray
 
-Way = Literal["sample", "space", "branch"]
-"""How a place is given."""
+from morphotone.errors import ReadingError
+from morphotone.reading.diagnosis import quote
+from morphotone.reading.site_rows import (
+    COORDINATES,
+    KNOWN,
+    NEEDED,
+    WHOLE,
+    Floats,
+    Rows,
+    check_all,
+)
+from morphotone.reading.swc import read_bytes
 
 
 @dataclass(frozen=True)
@@ -80,12 +95,162 @@ class Sites:
         }
         return replace(self, **arrays, others={name: text[rows] for name, text in self.others.items()})
 
+    def turned_away(self, reasons: Sequence[str], sentences: Sequence[str]) -> tuple[TurnedAwaySite, ...]:
+        """Return these rows as turned away, each for its reason and with its sentence after file and line."""
+        rows = zip(self.line.tolist(), self.cell, self.site, reasons, sentences, strict=True)
+        return tuple(
+            TurnedAwaySite(line, cell, site, reason, f"{self.file}: line {line}: {sentence}")
+            for line, cell, site, reason, sentence in rows
+        )
+
 
 @dataclass(frozen=True, eq=False)
 class SitesFile:
-    """What a file of sites holds: rows in = rows of `sites` + `turned_away`."""
+    """What a file of sites holds: each row is a site or turned away."""
 
-    sites: Sites
-    turned_away: tuple[TurnedAwaySite, ...]
-    rows_in: int
-    sha256: str
+    sites: Sites  #: rows that can be looked for in a cell
+    turned_away: tuple[TurnedAwaySite, ...]  #: the others, in file order
+    rows_in: int  #: both together
+    sha256: str  #: of the file's bytes, hexadecimal
+
+
+def read_sites(path: str | os.PathLike[str]) -> SitesFile:
+    """Read a file of synapse sites.
+
+    Parameters
+    ----------
+    path : path-like
+        A CSV with the columns ``cell`` and ``site`` and those of at least one way to give a place.
+
+    Raises
+    ------
+    ReadingError
+        As `parse_sites`, or when the file cannot be read at all (reason ``unreadable``).
+    """
+    return parse_sites(read_bytes(path), os.fspath(path))
+
+
+def parse_sites(data: bytes, file: str) -> SitesFile:
+    """Turn the bytes of a file of sites into columns; a row that cannot be used is turned away alone.
+
+    Parameters
+    ----------
+    data : bytes
+        Content of the file: CSV (RFC 4180) in UTF-8, with or without byte-order mark.
+    file : str
+        Its name, for messages.
+
+    Raises
+    ------
+    ReadingError
+        When the file is no such table: not UTF-8 (reason ``not_utf8``), a quotation mark without its pair
+        (``quotes``), empty (``empty``), a column missing (``columns_missing``) or twice (``columns_twice``).
+
+    Notes
+    -----
+    Lines without any text between their commas are no rows.
+    """
+    header, lines, records = _records(_decoded(data, file), file)
+    _check_header(header, file)
+    width = len(header)
+    rows = Rows(pd.DataFrame([_fitted(record, width) for record in records], columns=header, dtype=object))
+    rows.turn_away(
+        [i for i, record in enumerate(records) if any(field.strip() for field in record[width:])],
+        "fields_extra",
+        f"more than {width} fields",
+        f"{width} as in the header; put quotation marks around text with commas",
+    )
+    way, numbers = check_all(rows)
+    sites = _sites(file, np.array(lines, np.int64), rows, way, numbers)
+    away = np.array(sorted(rows.verdicts), np.int64)
+    verdicts = [rows.verdicts[row] for row in away.tolist()]
+    turned_away = sites.at(away).turned_away([v.reason for v in verdicts], [v.sentence for v in verdicts])
+    good = np.setdiff1d(np.arange(len(lines)), away)
+    return SitesFile(sites.at(good), turned_away, len(lines), hashlib.sha256(data).hexdigest())
+
+
+def _sites(
+    file: str, line: NDArray[np.int64], rows: Rows, way: NDArray[np.object_], numbers: dict[str, Floats]
+) -> Sites:
+    """Return all rows as columns, those to be turned away too."""
+    whole = {name: np.where(np.isnan(numbers[name]), -1, numbers[name]).astype(np.int64) for name in WHOLE}
+    others = [name for name in rows.text.columns.tolist() if name not in KNOWN]
+    return Sites(
+        file=file,
+        line=line,
+        cell=rows.known("cell"),
+        site=rows.known("site"),
+        group=rows.known("group"),
+        way=way,
+        sample=whole["sample"],
+        fraction=np.nan_to_num(numbers["fraction"]),
+        position=np.stack([numbers[name] for name in COORDINATES], axis=1),
+        branch=whole["branch"],
+        along_um=numbers["along_um"],
+        g_peak_nS=numbers["g_peak_nS"],
+        driving_force_mV=numbers["driving_force_mV"],
+        rise_ms=numbers["rise_ms"],
+        decay_ms=numbers["decay_ms"],
+        others={name: rows.text[name].to_numpy(object) for name in others},
+    )
+
+
+def _decoded(data: bytes, file: str) -> str:
+    try:
+        return data.decode("utf-8-sig")
+    except UnicodeDecodeError as error:
+        line = data[: error.start].count(b"\n") + 1
+        raise ReadingError(
+            f"{file}: line {line}: read the byte {data[error.start]:#04x}, expected text in UTF-8; save the "
+            "table as CSV in UTF-8",
+            "not_utf8",
+        ) from error
+
+
+def _records(text: str, file: str) -> tuple[list[str], list[int], list[list[str]]]:
+    """Return the header's names, the lines on which rows start, and the rows' fields."""
+    reader = csv.reader(io.StringIO(text, newline=""), strict=True)
+    lines, records, starts = [], [], 1
+    try:
+        for record in reader:
+            if any(field.strip() for field in record):
+                lines.append(starts)
+                records.append(record)
+            starts = reader.line_num + 1
+    except csv.Error as error:
+        raise ReadingError(
+            f"{file}: line {starts}: read fields that cannot be told apart ({error}), expected quotation "
+            'marks in pairs around a field, "" for one inside it; mend the line',
+            "quotes",
+        ) from error
+    if not records:
+        raise ReadingError(f"{file}: read no line with text, expected a header and rows", "empty")
+    header = [name.strip() for name in records[0]]
+    while header and not header[-1]:
+        header.pop()
+    return header, lines[1:], records[1:]
+
+
+def _check_header(header: list[str], file: str) -> None:
+    shown = quote(",".join(header).encode())
+    missing = [name for name in ("cell", "site") if name not in header]
+    given = any(set(columns) <= set(header) for columns in NEEDED.values())
+    if missing or not given:
+        expected = "cell, site, and sample, or x_um, y_um and z_um, or branch and along_um"
+        raise ReadingError(
+            f"{file}: line 1: read the columns {shown!r}, expected {expected}, separated by commas; name the "
+            "columns so in the first line",
+            "columns_missing",
+        )
+    twice = [name or "without a name" for name in dict.fromkeys(header) if header.count(name) > 1 or not name]
+    if twice:
+        raise ReadingError(
+            f"{file}: line 1: read the columns {shown!r}, expected each under a name of its own; rename the "
+            f"column {twice[0]}",
+            "columns_twice",
+        )
+
+
+def _fitted(record: list[str], width: int) -> list[str]:
+    """Return as many fields as the header has; a short row ends in empty ones."""
+    return record[:width] + [""] * (width - len(record))
