@@ -220,7 +220,7 @@ def _put_inside(
 
 
 def _refuse_absent(places: Places, rows: Index, sites: Sites, apart: Mask, assumptions: Assumptions) -> None:
-    """Refuse sites on samples that are not analysed, since their piece stands apart or for the axon's sake."""
+    """Refuse sites on samples not analysed, since their piece stands apart or the axon was left out."""
 
     def read(row: int) -> str:
         return f"read sample {sites.sample[row]} with fraction {sites.fraction[row]:g}"
@@ -241,7 +241,7 @@ def _refuse_absent(places: Places, rows: Index, sites: Sites, apart: Mask, assum
         rows[~apart],
         "beyond_axon_cut" if cut else "axon_left_out",
         lambda row: (
-            f"{read(row)}, {where}, or on what hangs there, expected a place on analysed cable; keep the axon "
-            'by the assumptions (axon = "kept")'
+            f"{read(row)}, {where}, or on what hangs there, expected a place on analysed cable; keep the "
+            'axon by the assumptions (axon = "kept")'
         ),
     )
