@@ -21,6 +21,7 @@ if TYPE_CHECKING:
     from morphotone.cable.synaptic import SynapticCurrent
     from morphotone.cable.transients import Transients, potentials, transients
     from morphotone.cable.tree import Cable, build
+    from morphotone.commands.rank import Ranking, rank
     from morphotone.commands.survey import Survey, survey
     from morphotone.commands.vet import vet
     from morphotone.errors import AssumptionError, MorphotoneError, ReadingError, ResultsError
@@ -44,6 +45,8 @@ _HOMES = {
     "transients": "morphotone.cable.transients",
     "Cable": "morphotone.cable.tree",
     "build": "morphotone.cable.tree",
+    "Ranking": "morphotone.commands.rank",
+    "rank": "morphotone.commands.rank",
     "Survey": "morphotone.commands.survey",
     "survey": "morphotone.commands.survey",
     "vet": "morphotone.commands.vet",
@@ -65,6 +68,7 @@ __all__ = [
     "Membrane",
     "Modes",
     "MorphotoneError",
+    "Ranking",
     "ReadingError",
     "Reconstruction",
     "ResultsError",
@@ -76,6 +80,7 @@ __all__ = [
     "frequency_response",
     "half_power_hz",
     "potentials",
+    "rank",
     "read",
     "solve",
     "survey",

@@ -15,6 +15,7 @@ from morphotone.errors import MorphotoneError, ReadingError, TurnedAwayError
 COMMANDS = {
     "vet": "which reconstructions can be trusted for cable work, and what is wrong with the others",
     "survey": "the night's run: every cell of a folder, to CSV tables",
+    "rank": "which synapses are electrotonically far or weak, in what order",
     "assumptions": "print a commented assumptions file with the defaults, or check one",
 }
 

@@ -4,7 +4,7 @@ Everything is counted on `levels`: whole numbers, the same for values that diffe
 promises, so that two sites at one place, or on mirrored branches, are tied whatever their last bits.
 """
 
-from collections.abc import Hashable, Iterator, Mapping, Sequence
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from itertools import combinations
 
@@ -76,22 +76,22 @@ def levels(values: ArrayLike) -> Real:
     return level
 
 
-def ranks(values: ArrayLike, within: Sequence[Hashable] | None = None) -> pd.DataFrame:
+def ranks(values: ArrayLike, within: ArrayLike | None = None) -> pd.DataFrame:
     """Return rank, number of other sites that share it, and percentile, of all values or within each group.
 
     Parameters
     ----------
     values : array_like, shape (n,)
         Any unit; NaN has no rank.
-    within : sequence, shape (n,), optional
+    within : array_like of object, shape (n,), optional
         The group each value is ranked in; a missing one has no rank.
 
     Returns
     -------
     DataFrame, shape (n, 3)
         ``rank``: 1 for the greatest value, ties sharing the smallest number (Int64, missing where there is
-        none); ``tied``: how many others share it, 0 for no tie (Int64); ``percentile``: share of the sites that
-        lie below, tied ones counted half, in percent (`scipy.stats.percentileofscore`, kind "mean").
+        none); ``tied``: how many others share it, 0 for no tie (Int64); ``percentile``: share of the sites
+        that lie below, tied ones counted half, in percent (`scipy.stats.percentileofscore`, kind "mean").
     """
     level = pd.Series(levels(values))
     if within is not None:

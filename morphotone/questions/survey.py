@@ -25,7 +25,7 @@ from morphotone.reading.vetting import Vetting, grade_of, vet_reconstruction
 
 _ENDING = re.compile(r"\.swc(\.gz)?\Z", re.IGNORECASE)
 # The least that has every column: from it the headers of tables without rows are known.
-_SPECIMEN = b"1 1 0 0 0 5 -1\n2 3 50 0 0 1 1\n"
+SPECIMEN = b"1 1 0 0 0 5 -1\n2 3 50 0 0 1 1\n"
 
 
 @dataclass(frozen=True)
@@ -138,7 +138,7 @@ def answers(files: Sequence[tuple[str, bytes | ReadingError]], request: Request)
 
 def headers(request: Request) -> dict[str, list[str]]:
     """Return the columns of the tables that `answers` gives to a request, without the leading names."""
-    (answer,) = answers([("specimen", _SPECIMEN)], replace(request, keep_unfit=True))
+    (answer,) = answers([("specimen", SPECIMEN)], replace(request, keep_unfit=True))
     tables = {"branches": answer.branches, "samples": answer.by_sample, "findings": answer.findings}
     columns = {name: list(table) for name, table in tables.items() if table is not None}
     return {"cells": list(answer.cell or {}), **columns}

@@ -1,0 +1,409 @@
+"""`morphotone rank`: which synapses are electrotonically far or weak, in what order."""
+
+import argparse
+import os
+import sys
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import asdict, dataclass, fields, replace
+from datetime import UTC, datetime
+from importlib.metadata import version
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from morphotone.cable.assumptions import Assumptions
+from morphotone.commands.options import add_assumption_options, assumptions_of
+from morphotone.commands.vet import files_of
+from morphotone.errors import ReadingError, ResultsError
+from morphotone.night.folder import Found
+from morphotone.night.ledger import FILE as LEDGER
+from morphotone.night.progress import Progress, Silent, Step, progress_on
+from morphotone.night.record import record_of, write_record
+from morphotone.night.results import atomic, atomic_bytes
+from morphotone.questions.matching import matched
+from morphotone.questions.pair_table import Pairs
+from morphotone.questions.placing import FARTHEST_UM
+from morphotone.questions.ranking import BY, TEXT_COLUMNS, in_order, numeric, orders
+from morphotone.questions.site_answers import (
+    FileOfCell,
+    SiteAnswer,
+    SiteRequest,
+    all_turned_away,
+    headers,
+    site_answers,
+)
+from morphotone.questions.survey import cell_name
+from morphotone.questions.synapses import with_synapse
+from morphotone.reading.sites import Sites, SitesFile, TurnedAwaySite, read_sites
+from morphotone.reading.swc import read_bytes
+from morphotone.showing.tables import LINE_END
+
+Paths = str | os.PathLike[str] | Sequence[str | os.PathLike[str]]
+
+NAME = "rank"
+TURNED_AWAY_COLUMNS = tuple(field.name for field in fields(TurnedAwaySite))
+_HZ = (100.0,)  # where nobody says which: the orders at rest and at 100 Hz differ
+_BATCH_BYTES = 2_000_000  # of files solved together
+
+_EPILOG = """\
+SITES.csv has the columns cell (file name, with or without folder and ending), site (a label, unique in its
+cell), and a place in one of three ways: sample with or without fraction toward its parent; x_um, y_um, z_um;
+branch (as in branches.csv) with along_um. It may have g_peak_nS, driving_force_mV, rise_ms, decay_ms, group,
+and further columns, which are carried through.
+
+what is written into RESULTS:
+  ranking.csv            one row per site, cell by cell, in order: rank 1 has the greatest value
+  orders.csv             how far orders by path, X, attenuation, peak at the soma agree (Kendall's tau-b)
+  movers.csv             which sites change place most between two orders, from where to where
+  pairs.csv, pairs.npz   with --pairs: transfer resistance, attenuation, delay between all sites of a cell
+  together.csv           with --together: the synapses of each group of a cell active at once
+  clamp.csv              with --clamp-MOhm: what an electrode at the soma sees of each site
+  turned_away_sites.csv  one row per site not ranked, with the reason
+  assumptions.toml       what was assumed, whole
+  run.json               the record: versions, assumptions, counts, SHA-256 of the inputs, times
+
+units: um, MOhm, nS, mV, ms, Hz; every column is explained in the README
+
+example:
+  morphotone rank --synapses sample_morphologies/sites.csv sample_morphologies --into ranked
+
+exit code: 0 all ranked, 1 some site was turned away (turned_away_sites.csv says why), 2 wrong usage or
+unusable assumptions, sites or results folder, 130 interrupted
+"""
+
+
+@dataclass(frozen=True, eq=False)
+class Ranking:
+    """The sites in order, as tables; columns as in README.
+
+    Attributes
+    ----------
+    ranking : DataFrame
+        One row per site, cell by cell, in order within each.
+    orders, movers : DataFrame
+        How far orders by different keys agree; which sites change place most.
+    turned_away : DataFrame
+        One row per site that is not ranked.
+    together, veto, clamp : DataFrame or None
+        None unless asked for.
+    pairs : dict of str to Pairs
+        By file; empty unless asked for.
+    counts : dict of str to int
+        ``sites`` = ``ranked`` + ``turned_away``; ``files`` found, ``cells`` with a ranked site.
+    """
+
+    ranking: pd.DataFrame
+    orders: pd.DataFrame
+    movers: pd.DataFrame
+    turned_away: pd.DataFrame
+    together: pd.DataFrame | None
+    veto: pd.DataFrame | None
+    clamp: pd.DataFrame | None
+    pairs: dict[str, Pairs]
+    counts: dict[str, int]
+
+
+def add_arguments(parser: argparse.ArgumentParser) -> None:
+    """Add the command's arguments to its parser."""
+    parser.formatter_class = argparse.RawDescriptionHelpFormatter
+    parser.epilog = _EPILOG
+    parser.add_argument(
+        "paths", metavar="FOLDER_OR_FILE", type=Path, nargs="+", help="the cells; folders at any depth"
+    )
+    parser.add_argument("--synapses", metavar="SITES.csv", type=Path, required=True, help="the sites")
+    parser.add_argument("--into", metavar="RESULTS", type=Path, required=True, help="results folder")
+    parser.add_argument(
+        "--by", metavar="COLUMN", default=BY, help="numeric column to rank by (default: %(default)s)"
+    )
+    add_assumption_options(parser)
+    parser.add_argument(
+        "--hz",
+        metavar="HZ",
+        type=float,
+        nargs="+",
+        help="frequencies besides 0 Hz, in Hz (default: those of the assumptions file, else 100)",
+    )
+    parser.add_argument(
+        "--farthest-um",
+        metavar="UM",
+        type=float,
+        default=FARTHEST_UM,
+        help="turn away sites in space farther than this from the cable, in um (default: %(default)g)",
+    )
+    parser.add_argument("--pairs", choices=("csv", "npy"), help="write all pairs of sites of each cell")
+    parser.add_argument(
+        "--together", action="store_true", help="write what each group does when active at once"
+    )
+    parser.add_argument(
+        "--clamp-MOhm",
+        metavar="R_S",
+        type=float,
+        help="write what a voltage clamp at the soma sees through this series resistance, in MOhm",
+    )
+    parser.add_argument("--keep-unfit", action="store_true", help="rank on files of grade unfit too")
+
+
+def run(args: argparse.Namespace) -> int:
+    """Rank, write the tables, say how it went, and return the exit code."""
+    ranking = rank(
+        args.paths,
+        args.synapses,
+        args.into,
+        assumptions=assumptions_of(args),
+        by=args.by,
+        farthest_um=args.farthest_um,
+        pairs=args.pairs,
+        together=args.together,
+        clamp_MOhm=args.clamp_MOhm,
+        keep_unfit=args.keep_unfit,
+        progress=progress_on(sys.stderr) if sys.stderr.isatty() else None,
+    )
+    counts = ranking.counts
+    print(
+        f"{counts['sites']} sites = {counts['ranked']} ranked + {counts['turned_away']} turned away, "
+        f"on {counts['cells']} of {counts['files']} files\nresults: {args.into}"
+    )
+    if counts["turned_away"]:
+        print(f"why sites were turned away: {args.into / 'turned_away_sites.csv'}")
+    return int(counts["turned_away"] > 0)
+
+
+def rank(
+    paths: Paths,
+    synapses: str | os.PathLike[str],
+    into: str | os.PathLike[str] | None = None,
+    *,
+    assumptions: Assumptions | None = None,
+    by: str = BY,
+    farthest_um: float = FARTHEST_UM,
+    pairs: str | None = None,
+    together: bool = False,
+    clamp_MOhm: float | None = None,
+    keep_unfit: bool = False,
+    progress: Progress | None = None,
+) -> Ranking:
+    """Rank the sites of a file on the cells of files and folders.
+
+    Parameters
+    ----------
+    paths : path or sequence of paths
+        Files, whatever their names; folders are searched at any depth for SWC files.
+    synapses : path
+        The file of sites.
+    into : path, optional
+        Results folder; without one nothing is written.
+    assumptions : Assumptions, optional
+        The defaults unless given; where they have no frequency besides 0 Hz, 100 Hz is added.
+    by : str
+        Column to rank by, the greatest value first.
+    farthest_um : float
+        Sites in space farther than this from the cable's surface are turned away, µm.
+    pairs : {"csv", "npy"}, optional
+        Work out all pairs of sites of each cell; the name says what file is written.
+    together : bool
+        Work out what the synapses of each group of a cell do when all are active.
+    clamp_MOhm : float, optional
+        Work out what a voltage clamp at the soma sees through this series resistance, MΩ.
+    keep_unfit : bool
+        Rank on files of grade unfit too.
+    progress : Progress, optional
+        Told about each batch of files.
+
+    Raises
+    ------
+    ReadingError
+        The file of sites cannot be read as such.
+    MorphotoneError
+        A path is not there, a folder holds no such file, or there is no such column to rank by.
+    ResultsError
+        The results folder holds a survey or cannot be written to.
+    """
+    started = datetime.now(UTC)
+    chosen = assumptions or Assumptions()
+    chosen = chosen if chosen.hz else replace(chosen, hz=_HZ)
+    target = None if into is None else _free_folder(Path(into))
+    file = read_sites(synapses)
+    request = SiteRequest(
+        chosen, farthest_um, keep_unfit, *_synapses(file.sites), pairs is not None, together, clamp_MOhm
+    )
+    header = _checked_header(request, file.sites, by)
+    listed = [paths] if isinstance(paths, str | os.PathLike) else list(paths)
+    found = list(files_of(listed))
+    per_file, unmatched = matched(file.sites, [(each.name, each.path) for each in found])
+    answers = list(_answers(found, per_file, request, progress or Silent()))
+    ranking = _ranking(file, found, answers, unmatched, by, header)
+    if target is not None:
+        _write(ranking, target, pairs)
+        with atomic(target / "assumptions.toml") as stream:
+            stream.write(chosen.to_toml())
+        inputs = {str(synapses): file.sha256} | {answer.name: answer.sha256 for answer in answers}
+        details = {"by": by, "pairs": pairs, **_details(listed, request)}
+        record = record_of(started=started, counts=ranking.counts, inputs_sha256=inputs, details=details)
+        write_record(target / "run.json", record)
+    return ranking
+
+
+def _synapses(sites: Sites) -> tuple[bool, bool]:
+    """Return whether any site has a conductance, and whether any has one with a course in time."""
+    there = with_synapse(sites)
+    return bool(there.any()), bool((there & ~np.isnan(sites.rise_ms + sites.decay_ms)).any())
+
+
+def _checked_header(request: SiteRequest, sites: Sites, by: str) -> dict[str, list[str]]:
+    """Return the columns of the tables, having seen before any work that the sites can be ranked as asked."""
+    header = headers(request, list(sites.others))
+    specimen = {name: np.zeros(0) for name in header["ranking"] if name not in TEXT_COLUMNS}
+    given = {name: sites.others[name] for name in sites.others if name == by and name in header["ranking"]}
+    numeric(pd.DataFrame(given or specimen), by)
+    return header
+
+
+def _details(paths: Sequence[Any], request: SiteRequest) -> dict[str, Any]:
+    """Return what was asked, as JSON types."""
+    asked = {field.name: getattr(request, field.name) for field in fields(SiteRequest)[1:]}
+    return {
+        "paths": [str(path) for path in paths],
+        **asked,
+        "morphotone": version("morphotone"),
+        "assumptions": request.assumptions.to_dict(),
+        "warnings": list(request.assumptions.warnings),
+    }
+
+
+def _free_folder(into: Path) -> Path:
+    """Return the folder unless it holds a survey, whose record would be lost."""
+    if (into / LEDGER).exists():
+        raise ResultsError(f"{into} holds a survey, whose run.json would be lost; choose another --into")
+    return into
+
+
+def _answers(
+    found: Sequence[Found], per_file: dict[str, Sites], request: SiteRequest, progress: Progress
+) -> Iterator[SiteAnswer]:
+    """Yield what the sites of each file with sites gave, solving some files at a time."""
+    wanted = [file for file in found if file.name in per_file]
+    progress.begin(len(wanted), sum(file.size for file in wanted))
+    try:
+        for batch in _batches(wanted):
+            files = [FileOfCell(file.name, _content(file), per_file[file.name]) for file in batch]
+            answers = _attempt(files, request)
+            yield from answers
+            failed = sum(not answer.tables for answer in answers)
+            progress.advance(Step(len(batch), sum(file.size for file in batch), 0, failed))
+    finally:
+        progress.end()
+
+
+def _batches(files: Sequence[Found]) -> Iterator[list[Found]]:
+    """Yield files together until they reach a size; which ones depends on the list alone."""
+    batch: list[Found] = []
+    for file in files:
+        batch.append(file)
+        if sum(each.size for each in batch) >= _BATCH_BYTES:
+            yield batch
+            batch = []
+    if batch:
+        yield batch
+
+
+def _content(file: Found) -> bytes | ReadingError:
+    """Return a file's bytes, or the error that says why they cannot be had."""
+    if file.problem:
+        return ReadingError(f"{file.name}: {file.problem}", "unreadable")
+    try:
+        return read_bytes(file.path, name=file.name)
+    except ReadingError as error:
+        return error
+
+
+def _attempt(files: list[FileOfCell], request: SiteRequest) -> list[SiteAnswer]:
+    """Work on a batch; if that fails, on each of its files, so that only the one that fails is lost."""
+    try:
+        return site_answers(files, request)
+    except Exception as error:
+        if len(files) > 1:
+            return [answer for file in files for answer in _attempt([file], request)]
+        text = " ".join(str(error).split())
+        sentence = (
+            f"{type(error).__name__}: {text}: a fault of the program, not of the file; please report it"
+        )
+        return [all_turned_away(files[0].name, files[0].sites, "program_error", sentence)]
+
+
+def _ranking(
+    file: SitesFile,
+    found: Sequence[Found],
+    answers: Sequence[SiteAnswer],
+    unmatched: Sequence[TurnedAwaySite],
+    by: str,
+    header: dict[str, list[str]],
+) -> Ranking:
+    """Put the answers together, and hold them against the rows of the file of sites."""
+    tables = {name: _together(answers, name, columns) for name, columns in header.items()}
+    ranked = in_order(tables.pop("ranking"), by)
+    agreed, moved = orders(ranked, by)
+    away = [*file.turned_away, *unmatched, *(one for answer in answers for one in answer.turned_away)]
+    counts = {
+        "sites": file.rows_in,
+        "ranked": len(ranked),
+        "turned_away": len(away),
+        "files": len(found),
+        "cells": int(ranked["file"].nunique()),
+    }
+    if counts["sites"] != counts["ranked"] + counts["turned_away"]:
+        raise RuntimeError(f"some sites were lost, which is a fault of the program: {counts}")
+    lines = sorted((asdict(one) for one in away), key=lambda row: row["line"])
+    return Ranking(
+        ranked,
+        agreed,
+        moved,
+        pd.DataFrame(lines, columns=list(TURNED_AWAY_COLUMNS)),
+        **{name: tables.get(name) for name in ("together", "veto", "clamp")},
+        pairs={answer.name: answer.pairs for answer in answers if answer.pairs is not None},
+        counts=counts,
+    )
+
+
+def _together(answers: Sequence[SiteAnswer], name: str, columns: Sequence[str]) -> pd.DataFrame:
+    """Return one table of all cells, each row led by its file and cell."""
+    filled = [answer for answer in answers if name in answer.tables]
+    whole = {
+        column: np.concatenate(
+            [np.asarray(answer.tables[name][column]) for answer in filled] or [np.empty(0, object)]
+        )
+        for column in columns
+    }
+    rows = [len(next(iter(answer.tables[name].values()))) for answer in filled]
+    files = [answer.name for answer in filled]
+    leading = {"file": np.repeat(np.array(files, object), rows)}
+    leading["cell"] = np.repeat(np.array([cell_name(each) for each in files], object), rows)
+    return pd.DataFrame(leading | whole)
+
+
+def _write(ranking: Ranking, into: Path, pairs: str | None) -> None:
+    """Write every table, each whole or not at all."""
+    names = {"turned_away": "turned_away_sites"}
+    for field in fields(Ranking):
+        table = getattr(ranking, field.name)
+        if isinstance(table, pd.DataFrame):
+            with atomic(into / f"{names.get(field.name, field.name)}.csv") as stream:
+                table.to_csv(stream, index=False, lineterminator=LINE_END)
+    if pairs == "csv":
+        with atomic(into / "pairs.csv") as stream:
+            for number, (file, each) in enumerate(ranking.pairs.items()):
+                rows = pd.DataFrame({"file": file, "cell": cell_name(file)} | each.table())
+                rows.to_csv(stream, index=False, header=not number, lineterminator=LINE_END)
+    elif pairs == "npy":
+        with atomic_bytes(into / "pairs.npz") as binary:
+            np.savez(binary, allow_pickle=False, **_arrays(ranking.pairs))
+
+
+def _arrays(pairs: Mapping[str, Pairs]) -> dict[str, NDArray[Any]]:
+    """Return the arrays of pairs.npz by name: file, a slash, and the quantity."""
+    labels = {f"{file}/site": each.site.astype(np.str_) for file, each in pairs.items()}
+    return labels | {
+        f"{file}/{name}": matrix for file, each in pairs.items() for name, matrix in each.matrices.items()
+    }

@@ -1,0 +1,145 @@
+"""A batch of files with their sites to the tables they give: read, place, solve as one forest, tabulate."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from morphotone.cable.assumptions import Assumptions
+from morphotone.errors import AssumptionError, ReadingError
+from morphotone.questions.columns import Columns
+from morphotone.questions.pair_table import Pairs, pairs_of
+from morphotone.questions.placing import FARTHEST_UM, placed_on
+from morphotone.questions.survey import SPECIMEN, Answer, Request, prepare
+from morphotone.questions.synapses import Placed, Solved, site_table, solved, steady_columns
+from morphotone.questions.together import together_table, veto_table, with_soma
+from morphotone.reading.sites import Sites, TurnedAwaySite
+
+
+@dataclass(frozen=True)
+class SiteRequest:
+    """What is asked of every cell with sites.
+
+    Attributes
+    ----------
+    assumptions : Assumptions
+        One choice; its frequencies are cases besides 0 Hz.
+    farthest_um : float
+        A site in space farther than this from the cable's surface is turned away, µm.
+    keep_unfit : bool
+        Rank on files of grade unfit too.
+    synapses, brief : bool
+        Give what each synapse does, steadily; as a brief conductance too.
+    pairs, together : bool
+        Give all pairs of sites; what groups of synapses do at once.
+    clamp_MOhm : float or None
+        Series resistance of the voltage clamp at the soma whose view of each site is asked for, MΩ.
+    """
+
+    assumptions: Assumptions
+    farthest_um: float = FARTHEST_UM
+    keep_unfit: bool = False
+    synapses: bool = False
+    brief: bool = False
+    pairs: bool = False
+    together: bool = False
+    clamp_MOhm: float | None = None
+
+    def __post_init__(self) -> None:
+        for value, name, option in (
+            (self.farthest_um, "greatest distance from the cable", "µm"),
+            (self.clamp_MOhm or 0.0, "series resistance", "MΩ"),
+        ):
+            if not 0.0 <= value < np.inf:  # NaN fails too
+                raise AssumptionError(f"{name} {value!r} {option}, expected a number of 0 {option} or more")
+
+
+@dataclass(frozen=True, eq=False)
+class SiteAnswer:
+    """What the sites of one file gave; each is ranked or turned away.
+
+    Attributes
+    ----------
+    name, sha256 : str
+        The file's name as asked; of its bytes, empty if they could not be read.
+    tables : dict of str to Columns
+        ``ranking``, and on request ``together``, ``veto``, ``clamp``; empty if no site has a place.
+    pairs : Pairs or None
+        On request.
+    turned_away : tuple of TurnedAwaySite
+        Why the others are not in it.
+    """
+
+    name: str
+    sha256: str
+    tables: dict[str, Columns] = field(default_factory=dict)
+    pairs: Pairs | None = None
+    turned_away: tuple[TurnedAwaySite, ...] = ()
+
+
+@dataclass(frozen=True, eq=False)
+class FileOfCell:
+    """A file and the sites on its cell."""
+
+    name: str
+    content: bytes | ReadingError
+    sites: Sites
+
+
+def site_answers(files: Sequence[FileOfCell], request: SiteRequest) -> list[SiteAnswer]:
+    """Work out the sites of several files together; one that fails costs nobody else anything."""
+    begun = [_begin(file, request) for file in files]
+    ready = [placed for _, placed in begun if placed is not None]
+    with np.errstate(over="ignore", under="ignore", divide="ignore", invalid="ignore"):
+        cells = iter(solved(ready, request.assumptions))
+        return [
+            answer if placed is None else _filled(answer, next(cells), request) for answer, placed in begun
+        ]
+
+
+def headers(request: SiteRequest, others: Sequence[str]) -> dict[str, list[str]]:
+    """Return the columns of the tables that `site_answers` gives to a request, without the leading names."""
+    nothing = np.full(2, np.nan)
+    text, count = np.full(2, "", object), np.array([2, 2])
+    sites = Sites(
+        "specimen", count, text, text, text, np.full(2, "sample", object), count, np.zeros(2),
+        np.full((2, 3), np.nan), count, nothing, np.ones(2), np.array([70.0, -8.0]), np.ones(2), np.ones(2),
+        dict.fromkeys(others, text),
+    )  # fmt: skip
+    file = FileOfCell("specimen", SPECIMEN, sites)
+    (answer,) = site_answers([file], replace(request, keep_unfit=True))
+    return {name: list(table) for name, table in answer.tables.items()}
+
+
+def _filled(answer: SiteAnswer, cell: Solved, request: SiteRequest) -> SiteAnswer:
+    """Return the answer with its tables."""
+    placed, assumptions = cell.placed, request.assumptions
+    table = site_table(cell)
+    if request.synapses:
+        table |= steady_columns(cell)
+    others = placed.sites.others
+    table |= {name if name not in table else f"{name}_as_given": text for name, text in others.items()}
+    tables = {"ranking": table}
+    if request.together:
+        between = with_soma(placed, assumptions)
+        tables |= {"together": together_table(placed, between), "veto": veto_table(placed, between)}
+    pairs = pairs_of(placed.sites.site, placed.sited, assumptions) if request.pairs else None
+    return replace(answer, tables=tables, pairs=pairs)
+
+
+def all_turned_away(name: str, sites: Sites, reason: str, sentence: str, sha256: str = "") -> SiteAnswer:
+    """Return the answer for a file none of whose sites can be ranked."""
+    count = len(sites)
+    return SiteAnswer(name, sha256, turned_away=sites.turned_away([reason] * count, [sentence] * count))
+
+
+def _begin(file: FileOfCell, request: SiteRequest) -> tuple[SiteAnswer, Placed | None]:
+    """Read a file and find its sites' places; no Placed means that all sites are turned away."""
+    wanted = Request(request.assumptions, request.keep_unfit)
+    prepared = prepare(file.name, file.content, wanted)
+    if isinstance(prepared, Answer):
+        answer = all_turned_away(file.name, file.sites, prepared.reason, prepared.sentence, prepared.sha256)
+        return answer, None
+    placed, turned_away = placed_on(prepared, file.sites, request.assumptions, request.farthest_um)
+    answer = SiteAnswer(file.name, prepared.rec.sha256, turned_away=turned_away)
+    return answer, placed if len(placed.sites) else None
