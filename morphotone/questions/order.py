@@ -124,16 +124,28 @@ def agreement(first: ArrayLike, second: ArrayLike) -> Agreement:
     -----
     Kendall 1945, Biometrika 33:239–251: the ties' correction that is called τ_b.
     """
-    one, other = levels(first), levels(second)
+    return _agreement(levels(first), levels(second))
+
+
+def _agreement(one: Real, other: Real) -> Agreement:
+    """Return how two orders differ, given as levels."""
     at = np.flatnonzero(~(np.isnan(one) | np.isnan(other)))
     one, other = one[at], other[at]
     unordered = any(not len(values) or (values == values[0]).all() for values in (one, other))
     tau_b = np.nan if unordered else float(stats.kendalltau(one, other).statistic)
-    first, second = (stats.rankdata(-values, method="min").astype(np.int64) for values in (one, other))
-    return Agreement(len(at), tau_b, first, second, at)
+    return Agreement(len(at), tau_b, _from_the_top(one), _from_the_top(other), at)
+
+
+def _from_the_top(level: Real) -> Index:
+    """Return the rank of each level, 1 for the highest: one more than there are values above it."""
+    whole = level.astype(np.int64)
+    upto = np.cumsum(np.bincount(whole))
+    ranked: Index = 1 + len(whole) - upto[whole]
+    return ranked
 
 
 def agreements(keys: Mapping[str, ArrayLike]) -> Iterator[tuple[str, str, Agreement]]:
     """Yield how every two of several orders of the same sites differ, with the orders' names."""
+    at_level = {name: levels(values) for name, values in keys.items()}
     for first, second in combinations(keys, 2):
-        yield first, second, agreement(keys[first], keys[second])
+        yield first, second, _agreement(at_level[first], at_level[second])

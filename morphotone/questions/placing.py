@@ -103,6 +103,8 @@ def _put_points(
     places: Places, rows: Index, sites: Sites, cable: Cable, assumptions: Assumptions, farthest_um: float
 ) -> None:
     """Put sites in space on the nearest point of the surface."""
+    if not len(rows):
+        return  # the index of the surface is worth its cost only for someone
     near = nearest_places(cable, sites.position[rows] * np.asarray(assumptions.shrinkage))
     places.node[rows], places.fraction[rows], places.moved_um[rows] = near[:3]
     far = rows[near.moved_um > farthest_um]

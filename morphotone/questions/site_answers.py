@@ -11,7 +11,15 @@ from morphotone.questions.columns import Columns
 from morphotone.questions.pair_table import Pairs, pairs_of
 from morphotone.questions.placing import FARTHEST_UM, placed_on
 from morphotone.questions.survey import SPECIMEN, Answer, Request, prepare
-from morphotone.questions.synapses import Placed, Solved, site_table, solved, steady_columns
+from morphotone.questions.synapses import (
+    Placed,
+    Solved,
+    brief_columns,
+    site_table,
+    solved,
+    steady_columns,
+    with_synapse,
+)
 from morphotone.questions.together import together_table, veto_table, with_soma
 from morphotone.reading.sites import Sites, TurnedAwaySite
 
@@ -117,10 +125,12 @@ def _filled(answer: SiteAnswer, cell: Solved, request: SiteRequest) -> SiteAnswe
     table = site_table(cell)
     if request.synapses:
         table |= steady_columns(cell)
+    if request.brief:
+        table |= brief_columns(cell, assumptions)
     others = placed.sites.others
     table |= {name if name not in table else f"{name}_as_given": text for name, text in others.items()}
     tables = {"ranking": table}
-    if request.together:
+    if request.together and with_synapse(placed.sites).any():
         between = with_soma(placed, assumptions)
         tables |= {"together": together_table(placed, between), "veto": veto_table(placed, between)}
     pairs = pairs_of(placed.sites.site, placed.sited, assumptions) if request.pairs else None

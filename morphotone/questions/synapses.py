@@ -7,6 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions
+from morphotone.cable.brief import brief
 from morphotone.cable.circuit import alone
 from morphotone.cable.delays import Delays, delays
 from morphotone.cable.electrotonus import Electrotonus, cases_of, solve_cables
@@ -118,6 +119,29 @@ def steady_columns(cell: Solved) -> Columns:
     for name, values in (("steady_site_mV", state.local_mV), ("steady_soma_mV", state.soma_mV)):
         columns[name] = _spread(values, rows, len(node))
     return columns
+
+
+def brief_columns(cell: Solved, assumptions: Assumptions) -> Columns:
+    """Return what each synapse does as a brief conductance, alone; NaN where rise or decay is not given.
+
+    Each value has beside it what halving the steps of its Volterra equation changes.
+    """
+    sites, sited = cell.placed.sites, cell.placed.sited
+    timed = with_synapse(sites) & ~np.isnan(sites.rise_ms) & ~np.isnan(sites.decay_ms)
+    rows = np.flatnonzero(timed)
+    synapse = (sites.g_peak_nS, sites.driving_force_mV, sites.rise_ms, sites.decay_ms)
+    given = brief(sited.cable, assumptions, sited.node[rows], *(values[rows] for values in synapse))
+    columns: Columns = {}
+    for where in ("site", "soma"):
+        seen, error = getattr(given, f"at_{where}"), getattr(given, f"at_{where}_error")
+        columns |= {
+            f"peak_{where}_mV": seen.peak_mV,
+            f"peak_{where}_error_mV": error.peak_mV,
+            f"time_to_peak_{where}_ms": seen.time_to_peak_ms,
+            f"half_width_{where}_ms": seen.half_width_ms,
+            f"half_width_{where}_error_ms": error.half_width_ms,
+        }
+    return {name: _spread(values, rows, len(sites)) for name, values in columns.items()}
 
 
 def _spread(values: Real, rows: Index, count: int) -> Real:
