@@ -95,7 +95,10 @@ def check_all(rows: Rows) -> tuple[NDArray[np.object_], dict[str, Floats]]:
     numbers : dict of str to ndarray, shape (rows,)
         Every column of numbers; NaN where there is none.
     """
-    for name, what in (("cell", "the name of a reconstruction's file"), ("site", "a label of the site")):
+    for name, what in (
+        ("cell", "the name of a reconstruction's file; fill it in"),
+        ("site", "a label, unique in the cell; fill it in"),
+    ):
         rows.turn_away(np.flatnonzero(rows.known(name) == ""), f"{name}_missing", f"no {name}", what)
     way = _ways(rows)
     numbers = {name: _numbers(rows, name, bounds) for name, bounds in NUMBERS.items()}

@@ -151,7 +151,7 @@ def parse_sites(data: bytes, file: str) -> SitesFile:
     Lines without any text between their commas are no rows.
     """
     header, lines, records = _records(_decoded(data, file), file)
-    _check_header(header, file)
+    _check_header(header, lines.pop(0), file)
     width = len(header)
     rows = Rows(pd.DataFrame([_fitted(record, width) for record in records], columns=header, dtype=object))
     rows.turn_away(
@@ -208,7 +208,7 @@ def _decoded(data: bytes, file: str) -> str:
 
 
 def _records(text: str, file: str) -> tuple[list[str], list[int], list[list[str]]]:
-    """Return the header's names, the lines on which rows start, and the rows' fields."""
+    """Return the header's names, the lines on which header and rows start, and the rows' fields."""
     reader = csv.reader(io.StringIO(text, newline=""), strict=True)
     lines, records, starts = [], [], 1
     try:
@@ -228,25 +228,25 @@ def _records(text: str, file: str) -> tuple[list[str], list[int], list[list[str]
     header = [name.strip() for name in records[0]]
     while header and not header[-1]:
         header.pop()
-    return header, lines[1:], records[1:]
+    return header, lines, records[1:]
 
 
-def _check_header(header: list[str], file: str) -> None:
+def _check_header(header: list[str], line: int, file: str) -> None:
     shown = quote(",".join(header).encode())
     missing = [name for name in ("cell", "site") if name not in header]
     given = any(set(columns) <= set(header) for columns in NEEDED.values())
     if missing or not given:
         expected = "cell, site, and sample, or x_um, y_um and z_um, or branch and along_um"
         raise ReadingError(
-            f"{file}: line 1: read the columns {shown!r}, expected {expected}, separated by commas; name the "
-            "columns so in the first line",
+            f"{file}: line {line}: read the columns {shown!r}, expected {expected}, separated by commas; name "
+            "the columns so in the first line with text",
             "columns_missing",
         )
     twice = [name or "without a name" for name in dict.fromkeys(header) if header.count(name) > 1 or not name]
     if twice:
         raise ReadingError(
-            f"{file}: line 1: read the columns {shown!r}, expected each under a name of its own; rename the "
-            f"column {twice[0]}",
+            f"{file}: line {line}: read the columns {shown!r}, expected each under a name of its own; rename "
+            f"the column {twice[0]}",
             "columns_twice",
         )
 

@@ -42,7 +42,7 @@ def points_about(cable, count, key, spread=3.0):
 
 
 def tube(start, end, r_start, r_end):
-    """Return a triangulated lateral surface of each frustum, all in one mesh, and the frustum of each face."""
+    """Return the triangulated lateral surfaces of all frusta as one mesh, and the frustum of each face."""
     angle = 2 * np.pi * np.arange(SIDES) / SIDES
     vertices, faces = [], []
     for k in range(len(start)):
@@ -214,7 +214,7 @@ def test_the_soma_of_a_chain_is_its_samples_spheres_and_the_frusta_between_them(
 def test_an_outline_soma_is_its_sphere():
     cable = cable_of(trees.soma_outline())
     centre, radius = cable.traced.soma.centre, cable.traced.soma.radius
-    found = nearest_places(cable, [centre, centre + [0, 0, radius + 2], centre + [0, 0, -radius]])
+    found = nearest_places(cable, centre + np.outer([0, radius + 2, -radius], [0, 0, 1]))
     assert found.in_soma.all()
     np.testing.assert_allclose(found.moved_um, [0, 2, 0], atol=1e-12)
 
