@@ -128,8 +128,8 @@ def _put_along(places: Places, rows: Index, sites: Sites, cable: Cable) -> None:
         rows[~known],
         "branch_unknown",
         lambda row: (
-            f"read branch {sites.branch[row]}, expected a number from 1 to {count} as in branches.csv; check "
-            "the number, and that axon and orphans are treated as they were there"
+            f"read branch {sites.branch[row]}, expected the number of one of the {count:,} branches in "
+            "branches.csv; check the number, and that axon and orphans are treated as they were there"
         ),
     )
     rows = rows[known]

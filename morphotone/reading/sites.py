@@ -238,8 +238,8 @@ def _check_header(header: list[str], line: int, file: str) -> None:
     if missing or not given:
         expected = "cell, site, and sample, or x_um, y_um and z_um, or branch and along_um"
         raise ReadingError(
-            f"{file}: line {line}: read the columns {shown!r}, expected {expected}, separated by commas; name "
-            "the columns so in the first line with text",
+            f"{file}: line {line}: read the columns {shown!r}, expected {expected}, separated by commas; "
+            "name the columns so in the first line with text",
             "columns_missing",
         )
     twice = [name or "without a name" for name in dict.fromkeys(header) if header.count(name) > 1 or not name]
