@@ -68,7 +68,7 @@ what is written into RESULTS:
 units: um, MOhm, nS, mV, ms, Hz; every column is explained in the README
 
 example:
-  morphotone rank --synapses sample_morphologies/sites.csv sample_morphologies --into ranked
+  morphotone rank --synapses sample_morphologies/sites.csv sample_morphologies --into ranked --together
 
 exit code: 0 all ranked, 1 some site was turned away (turned_away_sites.csv says why), 2 wrong usage or
 unusable assumptions, sites or results folder, 130 interrupted
@@ -326,10 +326,8 @@ def _attempt(files: list[FileOfCell], request: SiteRequest) -> list[SiteAnswer]:
     except Exception as error:
         if len(files) > 1:
             return [answer for file in files for answer in _attempt([file], request)]
-        text = " ".join(str(error).split())
-        sentence = (
-            f"{type(error).__name__}: {text}: a fault of the program, not of the file; please report it"
-        )
+        text = f"{files[0].name}: {type(error).__name__}: {' '.join(str(error).split())}"
+        sentence = f"{text}: a fault of the program, not of the file; please report it"
         return [all_turned_away(files[0].name, files[0].sites, "program_error", sentence)]
 
 
