@@ -16,7 +16,7 @@ Real = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 _POINTS_AT_ONCE = 1024
-_CANDIDATES_AT_ONCE = 2_000_000  # bounds the memory: thousands of frusta may be about equally far
+_CANDIDATES_AT_ONCE = 500_000  # bounds the memory: thousands of frusta may be about equally far
 _ROUNDING = 1e-9  # share by which a search radius is widened, so that rounding loses no candidate
 
 

@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 import trimesh
 
+from morphotone.cable import nearest
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.nearest import nearest_places, positions
 from morphotone.cable.tree import build
@@ -139,6 +140,15 @@ def test_answers_do_not_depend_on_what_else_is_asked():
     for some in (slice(0, 1), slice(1500, 1700), slice(2999, 3000)):
         for alone, whole in zip(nearest_places(cable, points[some]), together, strict=True):
             np.testing.assert_array_equal(alone, whole[some])
+
+
+def test_answers_do_not_depend_on_how_many_candidates_are_looked_at_together(monkeypatch):
+    cable = cable_of(trees.irregular(300, 10, soma=True))
+    points = points_about(cable, 300, 26, spread=200.0)
+    together = nearest_places(cable, points)
+    monkeypatch.setattr(nearest, "_CANDIDATES_AT_ONCE", 20)
+    for apart, whole in zip(nearest_places(cable, points), together, strict=True):
+        np.testing.assert_array_equal(apart, whole)
 
 
 def test_no_points():
