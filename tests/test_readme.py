@@ -8,6 +8,9 @@ import pytest
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.commands import COMMANDS
+from morphotone.questions.ranking import MOVERS_COLUMNS, ORDERS_COLUMNS
+from morphotone.questions.site_answers import SiteRequest
+from morphotone.questions.site_answers import headers as site_headers
 from morphotone.questions.survey import Request, headers
 from morphotone.questions.time_axis import TimeRequest
 
@@ -48,6 +51,24 @@ def test_no_column_is_explained_that_is_not_there(table: str, title: str) -> Non
     explained = {name for row in rows for name in re.findall(r"`([^`]+)`", row)}
     assert explained <= set(headers(ALL)[table])
     assert explained
+
+
+ASKED = SiteRequest(Assumptions(), synapses=True, brief=True, together=True)
+RANKED = [
+    f"{name}_in_{scope}" for name in ("rank", "tied", "percentile") for scope in ("cell", "group", "set")
+]
+OF_SITES = {
+    "`ranking.csv`": [*site_headers(ASKED, [])["ranking"], "ranked_by", *RANKED],
+    "`orders.csv`, `movers.csv`": [*ORDERS_COLUMNS, *MOVERS_COLUMNS],
+    "`together.csv`, `veto.csv`": [name for t in ("together", "veto") for name in site_headers(ASKED, [])[t]],
+}
+
+
+@pytest.mark.parametrize("title", OF_SITES)
+def test_the_columns_of_ranking_are_those_explained(title: str) -> None:
+    rows = re.findall(r"^\| ((?:`[^`]+`(?:, )?)+) \|", section(title), re.MULTILINE)
+    explained = {name for row in rows for name in re.findall(r"`([^`]+)`", row)}
+    assert explained == set(OF_SITES[title]) - {"file", "cell"}
 
 
 def test_every_command_is_named() -> None:

@@ -3,7 +3,7 @@
 import argparse
 import os
 import sys
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import asdict, dataclass, fields, replace
 from datetime import UTC, datetime
 from importlib.metadata import version
@@ -12,7 +12,6 @@ from typing import Any
 
 import numpy as np
 import pandas as pd
-from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions
 from morphotone.commands.options import add_assumption_options, assumptions_of
@@ -22,7 +21,7 @@ from morphotone.night.folder import Found
 from morphotone.night.ledger import FILE as LEDGER
 from morphotone.night.progress import Progress, Silent, Step, progress_on
 from morphotone.night.record import record_of, write_record
-from morphotone.night.results import atomic, atomic_bytes
+from morphotone.night.results import atomic
 from morphotone.questions.matching import matched
 from morphotone.questions.pair_table import Pairs
 from morphotone.questions.placing import FARTHEST_UM
@@ -39,6 +38,7 @@ from morphotone.questions.survey import cell_name
 from morphotone.questions.synapses import with_synapse
 from morphotone.reading.sites import Sites, SitesFile, TurnedAwaySite, read_sites
 from morphotone.reading.swc import read_bytes
+from morphotone.showing.pairs import pairs_file
 from morphotone.showing.tables import LINE_END
 
 Paths = str | os.PathLike[str] | Sequence[str | os.PathLike[str]]
@@ -90,7 +90,7 @@ class Ranking:
     together, veto, clamp : DataFrame or None
         None unless asked for.
     pairs : dict of str to Pairs
-        By file; empty unless asked for.
+        By file; empty unless asked for, and where they went to a file.
     counts : dict of str to int
         ``sites`` = ``ranked`` + ``turned_away``; ``files`` found, ``cells`` with a ranked site.
     """
@@ -233,10 +233,10 @@ def rank(
     listed = [paths] if isinstance(paths, str | os.PathLike) else list(paths)
     found = list(files_of(listed))
     per_file, unmatched = matched(file.sites, [(each.name, each.path) for each in found])
-    answers = list(_answers(found, per_file, request, progress or Silent()))
+    answers = _kept(_answers(found, per_file, request, progress or Silent()), target, pairs)
     ranking = _ranking(file, found, answers, unmatched, by, header)
     if target is not None:
-        _write(ranking, target, pairs)
+        _write(ranking, target)
         with atomic(target / "assumptions.toml") as stream:
             stream.write(chosen.to_toml())
         inputs = {str(synapses): file.sha256} | {answer.name: answer.sha256 for answer in answers}
@@ -244,6 +244,19 @@ def rank(
         record = record_of(started=started, counts=ranking.counts, inputs_sha256=inputs, details=details)
         write_record(target / "run.json", record)
     return ranking
+
+
+def _kept(answers: Iterator[SiteAnswer], into: Path | None, pairs: str | None) -> list[SiteAnswer]:
+    """Return the answers; their pairs, which are large, go to a file as they come if there is one."""
+    if into is None or pairs is None:
+        return list(answers)
+    kept = []
+    with pairs_file(into, pairs) as write:
+        for answer in answers:
+            if answer.pairs is not None:
+                write(answer.name, answer.pairs)
+            kept.append(replace(answer, pairs=None))
+    return kept
 
 
 def _synapses(sites: Sites) -> tuple[bool, bool]:
@@ -381,7 +394,7 @@ def _together(answers: Sequence[SiteAnswer], name: str, columns: Sequence[str]) 
     return pd.DataFrame(leading | whole)
 
 
-def _write(ranking: Ranking, into: Path, pairs: str | None) -> None:
+def _write(ranking: Ranking, into: Path) -> None:
     """Write every table, each whole or not at all."""
     names = {"turned_away": "turned_away_sites"}
     for field in fields(Ranking):
@@ -389,19 +402,3 @@ def _write(ranking: Ranking, into: Path, pairs: str | None) -> None:
         if isinstance(table, pd.DataFrame):
             with atomic(into / f"{names.get(field.name, field.name)}.csv") as stream:
                 table.to_csv(stream, index=False, lineterminator=LINE_END)
-    if pairs == "csv":
-        with atomic(into / "pairs.csv") as stream:
-            for number, (file, each) in enumerate(ranking.pairs.items()):
-                rows = pd.DataFrame({"file": file, "cell": cell_name(file)} | each.table())
-                rows.to_csv(stream, index=False, header=not number, lineterminator=LINE_END)
-    elif pairs == "npy":
-        with atomic_bytes(into / "pairs.npz") as binary:
-            np.savez(binary, allow_pickle=False, **_arrays(ranking.pairs))
-
-
-def _arrays(pairs: Mapping[str, Pairs]) -> dict[str, NDArray[Any]]:
-    """Return the arrays of pairs.npz by name: file, a slash, and the quantity."""
-    labels = {f"{file}/site": each.site.astype(np.str_) for file, each in pairs.items()}
-    return labels | {
-        f"{file}/{name}": matrix for file, each in pairs.items() for name, matrix in each.matrices.items()
-    }
