@@ -40,7 +40,7 @@ QUICK = Sizes(
     most_cases=4,
 )
 #: Too few cells for several workers, too little time for new processes one after the other.
-QUICK_PARTS = ("runs", "stages", "time", "growth")
+QUICK_PARTS = ("runs", "stages", "time", "sites", "growth")
 _NAME_WIDTH = 46
 
 _EPILOG = """\
@@ -49,6 +49,7 @@ parts:
   stages   where the time of a survey at 0 Hz goes; elements are the frusta, sweeps the two sweeps and the
            sums along paths, forest what else solving needs, rest the hashes and all between the stages
   time     the time axis of one cell, in units of one sweep of one case at 0 Hz
+  sites    ranking 200 sites on every cell, with 0 and 100 Hz and delays, against the survey at 0 Hz
   workers  a survey by several processes that run already, against the same by one
   growth   exponent of time against samples (one cell, without ledger), cells (whole surveys) and cases
            (solving alone), by least squares of the logarithms

@@ -34,8 +34,10 @@ from morphotone.cable.spectrum import forest_of
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.cable.transients import transients
 from morphotone.cable.tree import build
+from morphotone.commands.rank import rank
 from morphotone.commands.survey import outcomes, write_survey
 from morphotone.commands.vet import vet
+from morphotone.errors import ReadingError
 from morphotone.night.folder import PATTERNS, find_files
 from morphotone.night.outcome import Item
 from morphotone.night.runner import Tally
@@ -54,6 +56,7 @@ BY_SAMPLE = Request(Assumptions(), samples=True)
 WITH_DELAYS = replace(TWO_FREQUENCIES, time=TimeRequest(delays=True))
 SMALL_CELL = 500  # samples; of the cells whose number grows
 CELLS_OF_CASES = 8  # solved together where the number of cases grows
+SITES_A_CELL = 200
 SWEEPS = 5  # of one case, whose median is the unit of the time axis
 CURRENT = SynapticCurrent(0.5, 3.0)
 GRID_HZ: list[float] = np.geomspace(1.0, 1e4, 41).tolist()
@@ -284,6 +287,39 @@ def measure_workers(bench: Bench) -> Iterator[Row]:
         yield row("workers", f"1 worker's time over {workers}'", "x", ratios(seconds[1], seconds[workers]))
 
 
+def measure_sites(bench: Bench) -> Iterator[Row]:
+    """Measure a ranking of sites on every cell against the survey of the same cells."""
+    sites = _sites_drawn(bench)
+    seconds = bench.repeated(
+        {"survey": partial(survey_seconds, bench.folder), "rank": partial(_rank_seconds, bench.folder, sites)}
+    )
+    name = f"rank {SITES_A_CELL} sites a cell"
+    yield row("sites", name, "s", seconds["rank"])
+    yield row("sites", f"{name}, over a survey at 0 Hz", "x", ratios(seconds["rank"], seconds["survey"]), 2.0)
+
+
+def _sites_drawn(bench: Bench) -> Path:
+    """Write a file of sites: samples drawn from each cell, each with a fraction toward its parent."""
+    rng = np.random.default_rng(SITES_A_CELL)
+    lines = ["cell,site,sample,fraction"]
+    for file in find_files(bench.folder):
+        try:
+            rec = read(file.path)
+        except ReadingError:
+            continue  # in a folder that was given
+        within = rec.number[rec.parent >= 0]
+        drawn = zip(rng.choice(within, SITES_A_CELL), rng.uniform(size=SITES_A_CELL), strict=True)
+        lines += [f"{file.name},s{n},{sample},{share:.3f}" for n, (sample, share) in enumerate(drawn)]
+    path = bench.scratch / "sites.csv"
+    path.write_text("\n".join(lines) + "\n", encoding="utf-8")
+    return path
+
+
+def _rank_seconds(folder: Path, sites: Path) -> float:
+    with TemporaryDirectory() as results:
+        return seconds_of(rank, folder, sites, results)
+
+
 def measure_growth(bench: Bench) -> Iterator[Row]:
     """Measure how time grows with samples, cells and cases."""
     yield from _growth_with_samples(bench)
@@ -402,6 +438,7 @@ PARTS: dict[str, Callable[[Bench], Iterator[Row]]] = {
     "runs": measure_runs,
     "stages": measure_stages,
     "time": measure_time,
+    "sites": measure_sites,
     "workers": measure_workers,
     "growth": measure_growth,
     "start": measure_start,

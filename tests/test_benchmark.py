@@ -13,7 +13,7 @@ from morphotone.reading.vetting import vet_reconstruction
 
 SCRIPTS = Path(__file__).resolve().parent.parent / "scripts"
 TINY = ["--cells", "3", "--samples", "90", "--most-samples", "400", "--most-cells", "20", "--most-cases", "2"]
-IN_ONE_PROCESS = ["runs", "stages", "time", "growth"]
+IN_ONE_PROCESS = ["runs", "stages", "time", "sites", "growth"]
 IN_OTHERS = ["workers", "start", "memory"]
 STAGES = {"read", "vet", "build", "forest", "elements", "sweeps", "tables", "write", "rest"}
 
