@@ -3,7 +3,7 @@
 import argparse
 import os
 import sys
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import asdict, dataclass, fields, replace
 from datetime import UTC, datetime
 from importlib.metadata import version
@@ -231,7 +231,7 @@ def rank(
     )
     header = _checked_header(request, file.sites, by)
     listed = [paths] if isinstance(paths, str | os.PathLike) else list(paths)
-    found = list(files_of(listed))
+    found = _once(files_of(listed))
     per_file, unmatched = matched(file.sites, [(each.name, each.path) for each in found])
     answers = _kept(_answers(found, per_file, request, progress or Silent()), target, pairs)
     ranking = _ranking(file, found, answers, unmatched, by, header)
@@ -244,6 +244,14 @@ def rank(
         record = record_of(started=started, counts=ranking.counts, inputs_sha256=inputs, details=details)
         write_record(target / "run.json", record)
     return ranking
+
+
+def _once(files: Iterable[Found]) -> list[Found]:
+    """Return the files, one that can be reached in several of the ways given only the first time."""
+    by_place: dict[str, Found] = {}
+    for file in files:
+        by_place.setdefault(os.path.realpath(file.path), file)
+    return list(by_place.values())
 
 
 def _kept(answers: Iterator[SiteAnswer], into: Path | None, pairs: str | None) -> list[SiteAnswer]:

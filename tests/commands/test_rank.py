@@ -233,6 +233,11 @@ def test_batches_hold_every_file_once(monkeypatch, tmp_path, cells):
     pd.testing.assert_frame_equal(morphotone.rank(cells, sites_file(tmp_path)).ranking, whole)
 
 
+def test_a_file_given_twice_is_one_file(tmp_path, cells):
+    given = morphotone.rank([cells, cells / "b.swc"], sites_file(tmp_path))
+    assert (given.counts["files"], given.counts["ranked"]) == (5, 5)
+
+
 def test_progress_is_told_of_files_with_sites(tmp_path, cells):
     class Listening(Silent):
         def __init__(self):

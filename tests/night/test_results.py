@@ -13,7 +13,7 @@ from hypothesis import strategies as st
 from morphotone.errors import ResultsError
 from morphotone.night.ledger import Ledger
 from morphotone.night.outcome import Outcome, csv_line
-from morphotone.night.results import atomic, export, export_each, file_names
+from morphotone.night.results import atomic, atomic_bytes, export, export_each, file_names
 
 
 def fill(ledger: Ledger, *names: str) -> None:
@@ -29,6 +29,24 @@ def test_rows_in_the_order_given_with_header_and_crlf(tmp_path: Path) -> None:
     assert (tmp_path / "cells.csv").read_bytes() == b'file,n\r\na,1\r\nb,1\r\n"new\nline",1\r\n'
     assert (tmp_path / "branches.csv").read_bytes() == b"file,x\r\n"
     assert list(pd.read_csv(tmp_path / "cells.csv")["file"]) == ["a", "b", "new\nline"]
+
+
+def test_bytes_take_their_place_when_all_are_written(tmp_path: Path) -> None:
+    path = tmp_path / "new" / "pairs.npz"
+    with atomic_bytes(path) as stream:
+        stream.write(b"\x00\r\n\xff")
+        assert not path.exists()
+    assert path.read_bytes() == b"\x00\r\n\xff"
+
+    def fail_halfway() -> None:
+        with atomic_bytes(path) as stream:
+            stream.write(b"part")
+            raise ZeroDivisionError("halfway")
+
+    with pytest.raises(ZeroDivisionError, match="halfway"):
+        fail_halfway()
+    assert path.read_bytes() == b"\x00\r\n\xff"
+    assert list(path.parent.iterdir()) == [path]
 
 
 def test_pandas_writes_the_same_line_ends(tmp_path: Path) -> None:
