@@ -53,13 +53,14 @@ def test_no_column_is_explained_that_is_not_there(table: str, title: str) -> Non
     assert explained
 
 
-ASKED = SiteRequest(Assumptions(), synapses=True, brief=True, together=True)
+ASKED = SiteRequest(Assumptions(), synapses=True, brief=True, together=True, clamp_MOhm=5.0)
 RANKED = [
     f"{name}_in_{scope}" for name in ("rank", "tied", "percentile") for scope in ("cell", "group", "set")
 ]
 OF_SITES = {
     "`ranking.csv`": [*site_headers(ASKED, [])["ranking"], "ranked_by", *RANKED],
     "`orders.csv`, `movers.csv`": [*ORDERS_COLUMNS, *MOVERS_COLUMNS],
+    "`clamp.csv`": site_headers(ASKED, [])["clamp"],
     "`together.csv`, `veto.csv`": [name for t in ("together", "veto") for name in site_headers(ASKED, [])[t]],
 }
 

@@ -16,7 +16,7 @@ import pandas as pd
 from morphotone.cable.assumptions import Assumptions
 from morphotone.commands.options import add_assumption_options, assumptions_of
 from morphotone.commands.vet import files_of
-from morphotone.errors import ReadingError, ResultsError
+from morphotone.errors import MorphotoneError, ReadingError, ResultsError
 from morphotone.night.folder import Found
 from morphotone.night.ledger import FILE as LEDGER
 from morphotone.night.progress import Progress, Silent, Step, progress_on
@@ -35,7 +35,7 @@ from morphotone.questions.site_answers import (
     site_answers,
 )
 from morphotone.questions.survey import cell_name
-from morphotone.questions.synapses import with_synapse
+from morphotone.questions.synapses import with_course, with_synapse
 from morphotone.reading.sites import Sites, SitesFile, TurnedAwaySite, read_sites
 from morphotone.reading.swc import read_bytes
 from morphotone.showing.pairs import pairs_file
@@ -135,6 +135,9 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     )
     parser.add_argument("--pairs", choices=("csv", "npy"), help="write all pairs of sites of each cell")
     parser.add_argument(
+        "--between", metavar="GROUP", nargs=2, help="with --pairs: only from sites of one group to another's"
+    )
+    parser.add_argument(
         "--together", action="store_true", help="write what each group does when active at once"
     )
     parser.add_argument(
@@ -156,6 +159,7 @@ def run(args: argparse.Namespace) -> int:
         by=args.by,
         farthest_um=args.farthest_um,
         pairs=args.pairs,
+        between=args.between,
         together=args.together,
         clamp_MOhm=args.clamp_MOhm,
         keep_unfit=args.keep_unfit,
@@ -180,6 +184,7 @@ def rank(
     by: str = BY,
     farthest_um: float = FARTHEST_UM,
     pairs: str | None = None,
+    between: Sequence[str] | None = None,
     together: bool = False,
     clamp_MOhm: float | None = None,
     keep_unfit: bool = False,
@@ -203,6 +208,8 @@ def rank(
         Sites in space farther than this from the cable's surface are turned away, µm.
     pairs : {"csv", "npy"}, optional
         Work out all pairs of sites of each cell; the name says what file is written.
+    between : sequence of two str, optional
+        Groups: pairs only from the sites of the first to those of the second.
     together : bool
         Work out what the synapses of each group of a cell do when all are active.
     clamp_MOhm : float, optional
@@ -227,7 +234,14 @@ def rank(
     target = None if into is None else _free_folder(Path(into))
     file = read_sites(synapses)
     request = SiteRequest(
-        chosen, farthest_um, keep_unfit, *_synapses(file.sites), pairs is not None, together, clamp_MOhm
+        chosen,
+        farthest_um,
+        keep_unfit,
+        *_synapses(file.sites),
+        pairs=pairs is not None,
+        between=_groups_of(file.sites, between),
+        together=together,
+        clamp_MOhm=clamp_MOhm,
     )
     header = _checked_header(request, file.sites, by)
     listed = [paths] if isinstance(paths, str | os.PathLike) else list(paths)
@@ -269,8 +283,19 @@ def _kept(answers: Iterator[SiteAnswer], into: Path | None, pairs: str | None) -
 
 def _synapses(sites: Sites) -> tuple[bool, bool]:
     """Return whether any site has a conductance, and whether any has one with a course in time."""
-    there = with_synapse(sites)
-    return bool(there.any()), bool((there & ~np.isnan(sites.rise_ms + sites.decay_ms)).any())
+    return bool(with_synapse(sites).any()), bool(with_course(sites).any())
+
+
+def _groups_of(sites: Sites, between: Sequence[str] | None) -> tuple[str, str] | None:
+    """Return the two groups whose pairs are asked for, which must be there."""
+    if between is None:
+        return None
+    first, second = between
+    for group in (first, second):
+        if group not in sites.group:
+            known = ", ".join(sorted(set(sites.group) - {""})) or "none"
+            raise MorphotoneError(f"no site is of the group {group!r}; the groups are {known}")
+    return first, second
 
 
 def _checked_header(request: SiteRequest, sites: Sites, by: str) -> dict[str, list[str]]:

@@ -7,6 +7,7 @@ import numpy as np
 
 from morphotone.cable.assumptions import Assumptions
 from morphotone.errors import AssumptionError, ReadingError
+from morphotone.questions.clamp_table import clamp_table
 from morphotone.questions.columns import Columns
 from morphotone.questions.pair_table import Pairs, pairs_of
 from morphotone.questions.placing import FARTHEST_UM, placed_on
@@ -39,7 +40,9 @@ class SiteRequest:
     synapses, brief : bool
         Give what each synapse does, steadily; as a brief conductance too.
     pairs, together : bool
-        Give all pairs of sites; what groups of synapses do at once.
+        Give pairs of sites; what groups of synapses do at once.
+    between : (str, str) or None
+        The two groups whose pairs are given; those of all sites if None.
     clamp_MOhm : float or None
         Series resistance of the voltage clamp at the soma whose view of each site is asked for, MΩ.
     """
@@ -51,6 +54,7 @@ class SiteRequest:
     brief: bool = False
     pairs: bool = False
     together: bool = False
+    between: tuple[str, str] | None = None
     clamp_MOhm: float | None = None
 
     def __post_init__(self) -> None:
@@ -133,7 +137,11 @@ def _filled(answer: SiteAnswer, cell: Solved, request: SiteRequest) -> SiteAnswe
     if request.together and with_synapse(placed.sites).any():
         between = with_soma(placed, assumptions)
         tables |= {"together": together_table(placed, between), "veto": veto_table(placed, between)}
-    pairs = pairs_of(placed.sites.site, placed.sited, assumptions) if request.pairs else None
+    if request.clamp_MOhm is not None:
+        tables["clamp"] = clamp_table(
+            placed, assumptions, request.clamp_MOhm, request.synapses, request.brief
+        )
+    pairs = pairs_of(placed, assumptions, request.between) if request.pairs else None
     return replace(answer, tables=tables, pairs=pairs)
 
 

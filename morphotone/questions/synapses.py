@@ -65,6 +65,12 @@ def with_synapse(sites: Sites) -> NDArray[np.bool_]:
     return there
 
 
+def with_course(sites: Sites) -> NDArray[np.bool_]:
+    """Return which of these have rise and decay times too, shape (sites,)."""
+    course: NDArray[np.bool_] = with_synapse(sites) & ~np.isnan(sites.rise_ms + sites.decay_ms)
+    return course
+
+
 def site_table(cell: Solved) -> Columns:
     """Return the columns of ``ranking.csv`` that one cell gives, one row per site; README explains them."""
     placed, node = cell.placed, cell.placed.sited.node
@@ -117,7 +123,7 @@ def steady_columns(cell: Solved) -> Columns:
     R_in, to_soma = (Z[at, 0].real for Z in (cell.electrotonus.Z_in, cell.electrotonus.Z_transfer))
     state = alone(R_in, to_soma, sites.g_peak_nS[rows], sites.driving_force_mV[rows])
     for name, values in (("steady_site_mV", state.local_mV), ("steady_soma_mV", state.soma_mV)):
-        columns[name] = _spread(values, rows, len(node))
+        columns[name] = spread(values, rows, len(node))
     return columns
 
 
@@ -127,8 +133,7 @@ def brief_columns(cell: Solved, assumptions: Assumptions) -> Columns:
     Each value has beside it what halving the steps of its Volterra equation changes.
     """
     sites, sited = cell.placed.sites, cell.placed.sited
-    timed = with_synapse(sites) & ~np.isnan(sites.rise_ms) & ~np.isnan(sites.decay_ms)
-    rows = np.flatnonzero(timed)
+    rows = np.flatnonzero(with_course(sites))
     synapse = (sites.g_peak_nS, sites.driving_force_mV, sites.rise_ms, sites.decay_ms)
     given = brief(sited.cable, assumptions, sited.node[rows], *(values[rows] for values in synapse))
     columns: Columns = {}
@@ -141,10 +146,10 @@ def brief_columns(cell: Solved, assumptions: Assumptions) -> Columns:
             f"half_width_{where}_ms": seen.half_width_ms,
             f"half_width_{where}_error_ms": error.half_width_ms,
         }
-    return {name: _spread(values, rows, len(sites)) for name, values in columns.items()}
+    return {name: spread(values, rows, len(sites)) for name, values in columns.items()}
 
 
-def _spread(values: Real, rows: Index, count: int) -> Real:
+def spread(values: Real, rows: Index, count: int) -> Real:
     """Return values of some rows in a column of all, NaN elsewhere."""
     column = np.full(count, np.nan)
     column[rows] = values

@@ -30,7 +30,7 @@ def pairs_file(into: Path, kind: str) -> Iterator[Writer]:
 
 
 def _rows_to(stream: TextIO) -> Writer:
-    """Return what writes one row per ordered pair, the header before the first."""
+    """Return what writes one row per pair, the header before the first."""
 
     def write(file: str, pairs: Pairs) -> None:
         rows = pd.DataFrame({"file": file, "cell": cell_name(file)} | pairs.table())
@@ -43,7 +43,8 @@ def _arrays_to(archive: ZipFile) -> Writer:
     """Return what writes arrays as `numpy.load` reads them, each named by file, a slash and its quantity."""
 
     def write(file: str, pairs: Pairs) -> None:
-        for name, array in {"site": pairs.site.astype(np.str_), **pairs.matrices}.items():
+        labels = {name: getattr(pairs, name).astype(np.str_) for name in ("site", "other_site")}
+        for name, array in {**labels, **pairs.matrices}.items():
             with archive.open(f"{file}/{name}.npy", "w", force_zip64=True) as entry:
                 np.lib.format.write_array(entry, array, allow_pickle=False)
 

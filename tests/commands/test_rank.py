@@ -205,6 +205,18 @@ def test_pairs_as_rows_and_as_arrays(tmp_path, cells):
     assert not (tmp_path / "npy" / "pairs.csv").exists()
 
 
+def test_pairs_between_two_groups(tmp_path, cells):
+    path = sites_file(tmp_path)
+    whole = morphotone.rank(cells, path, pairs="csv").pairs["b.swc"]
+    some = morphotone.rank(cells, path, pairs="csv", between=("far", "near")).pairs["b.swc"]
+    assert some.site.tolist() == ["tip", "mid"]
+    assert some.other_site.tolist() == ["again"]
+    for name, matrix in some.matrices.items():
+        np.testing.assert_array_equal(matrix, whole.matrices[name][:2, 2:])
+    with pytest.raises(MorphotoneError, match="no site is of the group 'fur'; the groups are far, near"):
+        morphotone.rank(cells, path, pairs="csv", between=("far", "fur"))
+
+
 def test_a_fault_of_the_program_costs_the_sites_of_one_file(tmp_path, cells, monkeypatch):
     honest = command.site_answers
 

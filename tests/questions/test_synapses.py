@@ -135,6 +135,33 @@ def test_groups_together_and_vetoes():
     assert "together" not in answer_of(trees.ball_and_stick(), ["c,n,5,"], together=True).tables
 
 
+def test_the_clamps_view_by_hand():
+    """Two divisions: the clamp's node sees Z_ie/(Z_ee + R_s); perfect at the soma, it sees charge_to_soma."""
+    header = "cell,site,sample,fraction,g_peak_nS,driving_force_mV,rise_ms,decay_ms"
+    rows = ["c,o,1,,1,70,1,1", "c,p,4,0.3,2,70,0.5,3", "c,n,5,,,,,"]
+    asked = {"synapses": True, "brief": True}
+    swc = trees.ball_and_stick()
+    tables = answer_of(swc, rows, header, clamp_MOhm=0.0, **asked).tables
+    perfect, ranking = tables["clamp"], tables["ranking"]
+    for suffix in ("", "_10Hz", "_100Hz"):
+        np.testing.assert_allclose(
+            perfect[f"seen_fraction{suffix}"], ranking[f"charge_to_soma{suffix}"], rtol=1e-10
+        )
+    assert perfect["escape_MOhm"][0] == 0.0
+    poor = answer_of(swc, rows, header, clamp_MOhm=20.0, **asked).tables["clamp"]
+    R_s, R_soma = 20.0, ranking["R_in_MOhm"][0]
+    seen = ranking["R_transfer_MOhm"] / (R_soma + R_s)
+    escape = ranking["R_in_MOhm"] - ranking["R_transfer_MOhm"] ** 2 / (R_soma + R_s)
+    np.testing.assert_allclose(poor["seen_fraction"], seen, rtol=1e-10)
+    np.testing.assert_allclose(poor["escape_MOhm"], escape, rtol=1e-10)
+    gR = np.array([1.0, 2.0]) * 1e-3 * escape[:2]
+    np.testing.assert_allclose(poor["steady_seen_fraction"][:2], seen[:2] / (1 + gR), rtol=1e-10)
+    np.testing.assert_allclose(poor["steady_escape_mV"][:2], 70 * gR / (1 + gR), rtol=1e-10)
+    assert (poor["peak_seen_fraction"][:2] < poor["seen_fraction"][:2]).all()
+    for name in ("steady_seen_pA", "peak_seen_fraction", "peak_escape_mV_per_pA"):
+        assert np.isnan(poor[name]).tolist() == [False, False, True]
+
+
 def test_pairs_are_the_tables_own_numbers_between_a_site_and_the_soma():
     answer = answer_of(
         trees.irregular(40, 2, soma=True), ["c,o,1,", "c,p,20,0.3", "c,q,35,"], pairs=True, keep_unfit=True
