@@ -21,10 +21,11 @@ if TYPE_CHECKING:
     from morphotone.cable.synaptic import SynapticCurrent
     from morphotone.cable.transients import Transients, potentials, transients
     from morphotone.cable.tree import Cable, build
-    from morphotone.commands.rank import Ranking, rank
+    from morphotone.commands.rank import rank
     from morphotone.commands.survey import Survey, survey
     from morphotone.commands.vet import vet
     from morphotone.errors import AssumptionError, MorphotoneError, ReadingError, ResultsError
+    from morphotone.questions.collected import Ranking
     from morphotone.reading.reconstruction import Reconstruction, read
 
 _HOMES = {
@@ -45,7 +46,7 @@ _HOMES = {
     "transients": "morphotone.cable.transients",
     "Cable": "morphotone.cable.tree",
     "build": "morphotone.cable.tree",
-    "Ranking": "morphotone.commands.rank",
+    "Ranking": "morphotone.questions.collected",
     "rank": "morphotone.commands.rank",
     "Survey": "morphotone.commands.survey",
     "survey": "morphotone.commands.survey",

@@ -4,7 +4,7 @@ import argparse
 import os
 import sys
 from collections.abc import Iterable, Iterator, Sequence
-from dataclasses import asdict, dataclass, fields, replace
+from dataclasses import fields, replace
 from datetime import UTC, datetime
 from importlib.metadata import version
 from pathlib import Path
@@ -22,10 +22,10 @@ from morphotone.night.ledger import FILE as LEDGER
 from morphotone.night.progress import Progress, Silent, Step, progress_on
 from morphotone.night.record import record_of, write_record
 from morphotone.night.results import atomic
+from morphotone.questions.collected import Ranking, collected
 from morphotone.questions.matching import matched
-from morphotone.questions.pair_table import Pairs
 from morphotone.questions.placing import FARTHEST_UM
-from morphotone.questions.ranking import BY, TEXT_COLUMNS, in_order, numeric, orders
+from morphotone.questions.ranking import BY, TEXT_COLUMNS, numeric
 from morphotone.questions.site_answers import (
     FileOfCell,
     SiteAnswer,
@@ -34,9 +34,8 @@ from morphotone.questions.site_answers import (
     headers,
     site_answers,
 )
-from morphotone.questions.survey import cell_name
 from morphotone.questions.synapses import with_course, with_synapse
-from morphotone.reading.sites import Sites, SitesFile, TurnedAwaySite, read_sites
+from morphotone.reading.sites import Sites, read_sites
 from morphotone.reading.swc import read_bytes
 from morphotone.showing.pairs import pairs_file
 from morphotone.showing.tables import LINE_END
@@ -44,7 +43,6 @@ from morphotone.showing.tables import LINE_END
 Paths = str | os.PathLike[str] | Sequence[str | os.PathLike[str]]
 
 NAME = "rank"
-TURNED_AWAY_COLUMNS = tuple(field.name for field in fields(TurnedAwaySite))
 _HZ = (100.0,)  # where nobody says which: the orders at rest and at 100 Hz differ
 _BATCH_BYTES = 2_000_000  # of files solved together
 
@@ -73,37 +71,6 @@ example:
 exit code: 0 all ranked, 1 some site was turned away (turned_away_sites.csv says why), 2 wrong usage or
 unusable assumptions, sites or results folder, 130 interrupted
 """
-
-
-@dataclass(frozen=True, eq=False)
-class Ranking:
-    """The sites in order, as tables; columns as in README.
-
-    Attributes
-    ----------
-    ranking : DataFrame
-        One row per site, cell by cell, in order within each.
-    orders, movers : DataFrame
-        How far orders by different keys agree; which sites change place most.
-    turned_away : DataFrame
-        One row per site that is not ranked.
-    together, veto, clamp : DataFrame or None
-        None unless asked for.
-    pairs : dict of str to Pairs
-        By file; empty unless asked for, and where they went to a file.
-    counts : dict of str to int
-        ``sites`` = ``ranked`` + ``turned_away``; ``files`` found, ``cells`` with a ranked site.
-    """
-
-    ranking: pd.DataFrame
-    orders: pd.DataFrame
-    movers: pd.DataFrame
-    turned_away: pd.DataFrame
-    together: pd.DataFrame | None
-    veto: pd.DataFrame | None
-    clamp: pd.DataFrame | None
-    pairs: dict[str, Pairs]
-    counts: dict[str, int]
 
 
 def add_arguments(parser: argparse.ArgumentParser) -> None:
@@ -248,7 +215,7 @@ def rank(
     found = _once(files_of(listed))
     per_file, unmatched = matched(file.sites, [(each.name, each.path) for each in found])
     answers = _kept(_answers(found, per_file, request, progress or Silent()), target, pairs)
-    ranking = _ranking(file, found, answers, unmatched, by, header)
+    ranking = collected(file, len(found), answers, unmatched, by, header)
     if target is not None:
         _write(ranking, target)
         with atomic(target / "assumptions.toml") as stream:
@@ -375,56 +342,6 @@ def _attempt(files: list[FileOfCell], request: SiteRequest) -> list[SiteAnswer]:
         text = f"{files[0].name}: {type(error).__name__}: {' '.join(str(error).split())}"
         sentence = f"{text}: a fault of the program, not of the file; please report it"
         return [all_turned_away(files[0].name, files[0].sites, "program_error", sentence)]
-
-
-def _ranking(
-    file: SitesFile,
-    found: Sequence[Found],
-    answers: Sequence[SiteAnswer],
-    unmatched: Sequence[TurnedAwaySite],
-    by: str,
-    header: dict[str, list[str]],
-) -> Ranking:
-    """Put the answers together, and hold them against the rows of the file of sites."""
-    tables = {name: _together(answers, name, columns) for name, columns in header.items()}
-    ranked = in_order(tables.pop("ranking"), by)
-    agreed, moved = orders(ranked, by)
-    away = [*file.turned_away, *unmatched, *(one for answer in answers for one in answer.turned_away)]
-    counts = {
-        "sites": file.rows_in,
-        "ranked": len(ranked),
-        "turned_away": len(away),
-        "files": len(found),
-        "cells": int(ranked["file"].nunique()),
-    }
-    if counts["sites"] != counts["ranked"] + counts["turned_away"]:
-        raise RuntimeError(f"some sites were lost, which is a fault of the program: {counts}")
-    lines = sorted((asdict(one) for one in away), key=lambda row: row["line"])
-    return Ranking(
-        ranked,
-        agreed,
-        moved,
-        pd.DataFrame(lines, columns=list(TURNED_AWAY_COLUMNS)),
-        **{name: tables.get(name) for name in ("together", "veto", "clamp")},
-        pairs={answer.name: answer.pairs for answer in answers if answer.pairs is not None},
-        counts=counts,
-    )
-
-
-def _together(answers: Sequence[SiteAnswer], name: str, columns: Sequence[str]) -> pd.DataFrame:
-    """Return one table of all cells, each row led by its file and cell."""
-    filled = [answer for answer in answers if name in answer.tables]
-    whole = {
-        column: np.concatenate(
-            [np.asarray(answer.tables[name][column]) for answer in filled] or [np.empty(0, object)]
-        )
-        for column in columns
-    }
-    rows = [len(next(iter(answer.tables[name].values()))) for answer in filled]
-    files = [answer.name for answer in filled]
-    leading = {"file": np.repeat(np.array(files, object), rows)}
-    leading["cell"] = np.repeat(np.array([cell_name(each) for each in files], object), rows)
-    return pd.DataFrame(leading | whole)
 
 
 def _write(ranking: Ranking, into: Path) -> None:
