@@ -12,6 +12,7 @@ from morphotone.cable.assumptions import Assumptions
 from morphotone.commands import rank as command
 from morphotone.errors import AssumptionError, MorphotoneError, ReadingError, ResultsError
 from morphotone.night.progress import Silent
+from tests import trees
 from tests.commands.folders import SMALL, called, examples, fill, rows, run
 
 HEADER = "cell,site,sample,fraction,x_um,y_um,z_um,branch,along_um,group"
@@ -243,6 +244,20 @@ def test_batches_hold_every_file_once(monkeypatch, tmp_path, cells):
     whole = morphotone.rank(cells, sites_file(tmp_path)).ranking
     monkeypatch.setattr(command, "_BATCH_BYTES", 1)
     pd.testing.assert_frame_equal(morphotone.rank(cells, sites_file(tmp_path)).ranking, whole)
+
+
+def test_mirrored_tips_are_tied_whatever_their_last_bits(tmp_path):
+    """Six equal trees obeying Rall's 3/2 law: all tips share rank 1, all stems' ends the last."""
+    fill(tmp_path / "cells", {"rall.swc": trees.rall_neuron(trees=6, orders=3)})
+    rec = morphotone.read(tmp_path / "cells" / "rall.swc")
+    parents = set(rec.parent.tolist())
+    tips = [int(rec.number[k]) for k in range(len(rec.number)) if k not in parents]
+    stems = [int(rec.number[k]) for k in range(1, len(rec.number)) if rec.parent[k] == 0]
+    lines = ["cell,site,sample", *(f"rall,s{number},{number}" for number in [*stems, *tips])]
+    table = morphotone.rank(tmp_path / "cells", sites_file(tmp_path, lines), keep_unfit=True).ranking
+    assert len(stems) == 6
+    assert table["rank_in_cell"].tolist() == [1] * len(tips) + [len(tips) + 1] * 6
+    assert table["tied_in_cell"].tolist() == [len(tips) - 1] * len(tips) + [5] * 6
 
 
 def test_a_file_given_twice_is_one_file(tmp_path, cells):
