@@ -8,7 +8,7 @@ import pytest
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.commands import COMMANDS
-from morphotone.questions.ranking import MOVERS_COLUMNS, ORDERS_COLUMNS
+from morphotone.questions.ranking import ADDED_COLUMNS, MOVERS_COLUMNS, ORDERS_COLUMNS
 from morphotone.questions.site_answers import SiteRequest
 from morphotone.questions.site_answers import headers as site_headers
 from morphotone.questions.survey import Request, headers
@@ -54,11 +54,8 @@ def test_no_column_is_explained_that_is_not_there(table: str, title: str) -> Non
 
 
 ASKED = SiteRequest(Assumptions(), synapses=True, brief=True, together=True, clamp_MOhm=5.0)
-RANKED = [
-    f"{name}_in_{scope}" for name in ("rank", "tied", "percentile") for scope in ("cell", "group", "set")
-]
 OF_SITES = {
-    "`ranking.csv`": [*site_headers(ASKED, [])["ranking"], "ranked_by", *RANKED],
+    "`ranking.csv`": [*site_headers(ASKED, [])["ranking"], *ADDED_COLUMNS],
     "`orders.csv`, `movers.csv`": [*ORDERS_COLUMNS, *MOVERS_COLUMNS],
     "`clamp.csv`": site_headers(ASKED, [])["clamp"],
     "`together.csv`, `veto.csv`": [name for t in ("together", "veto") for name in site_headers(ASKED, [])[t]],

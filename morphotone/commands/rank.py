@@ -268,9 +268,10 @@ def _groups_of(sites: Sites, between: Sequence[str] | None) -> tuple[str, str] |
 def _checked_header(request: SiteRequest, sites: Sites, by: str) -> dict[str, list[str]]:
     """Return the columns of the tables, having seen before any work that the sites can be ranked as asked."""
     header = headers(request, list(sites.others))
-    specimen = {name: np.zeros(0) for name in header["ranking"] if name not in TEXT_COLUMNS}
-    given = {name: sites.others[name] for name in sites.others if name == by and name in header["ranking"]}
-    numeric(pd.DataFrame(given or specimen), by)
+    names = header["ranking"]
+    carried = dict(zip(names[len(names) - len(sites.others) :], sites.others.values(), strict=True))
+    numbers = {name: np.zeros(len(sites)) for name in names if name not in TEXT_COLUMNS}
+    numeric(pd.DataFrame(numbers | carried), by)
     return header
 
 

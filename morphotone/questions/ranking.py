@@ -15,6 +15,9 @@ Real = NDArray[np.float64]
 BY = "attenuation_to_soma"
 TEXT_COLUMNS = ("site", "group", "domain")  # of the table of sites; nothing to rank by
 _SCOPES = ("cell", "group", "set")
+_OF_RANKS = ("rank", "tied", "percentile")
+#: What `in_order` adds to the table of sites.
+ADDED_COLUMNS = ("ranked_by", *(f"{name}_in_{scope}" for scope in _SCOPES for name in _OF_RANKS))
 _KEYS = re.compile(r"path_um|X|attenuation_to_soma(_[\d.e+-]+Hz)?|peak_soma_mV")
 #: Weak sites come first in every order: those are the ones with a small peak.
 _WEAK_IF_SMALL = "peak_soma_mV"
@@ -70,7 +73,7 @@ def in_order(table: pd.DataFrame, by: str) -> pd.DataFrame:
     for scope in _SCOPES:
         names = None if scope == "set" else table["file" if scope == "cell" else "group"]
         columns = ranks(values, None if names is None else names.mask(names == "").to_numpy(object))
-        ranked[[f"{name}_in_{scope}" for name in columns]] = columns.set_axis(table.index)
+        ranked[[f"{name}_in_{scope}" for name in _OF_RANKS]] = columns[list(_OF_RANKS)].set_axis(table.index)
     return ranked.sort_values(["file", "rank_in_cell", "line"], kind="stable", ignore_index=True)
 
 

@@ -1,7 +1,8 @@
 """A batch of files with their sites to the tables they give: read, place, solve as one forest, tabulate."""
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
+from typing import Any
 
 import numpy as np
 
@@ -11,6 +12,7 @@ from morphotone.questions.clamp_table import clamp_table
 from morphotone.questions.columns import Columns
 from morphotone.questions.pair_table import Pairs, pairs_of
 from morphotone.questions.placing import FARTHEST_UM, placed_on
+from morphotone.questions.ranking import ADDED_COLUMNS
 from morphotone.questions.survey import SPECIMEN, Answer, Request, prepare
 from morphotone.questions.synapses import (
     Placed,
@@ -23,6 +25,8 @@ from morphotone.questions.synapses import (
 )
 from morphotone.questions.together import together_table, veto_table, with_soma
 from morphotone.reading.sites import Sites, TurnedAwaySite
+
+LEADING = ("file", "cell")  # columns that say whose row it is
 
 
 @dataclass(frozen=True)
@@ -131,8 +135,7 @@ def _filled(answer: SiteAnswer, cell: Solved, request: SiteRequest) -> SiteAnswe
         table |= steady_columns(cell)
     if request.brief:
         table |= brief_columns(cell, assumptions)
-    others = placed.sites.others
-    table |= {name if name not in table else f"{name}_as_given": text for name, text in others.items()}
+    table |= _carried(placed.sites.others, {*table, *LEADING, *ADDED_COLUMNS})
     tables = {"ranking": table}
     if request.together and with_synapse(placed.sites).any():
         between = with_soma(placed, assumptions)
@@ -143,6 +146,17 @@ def _filled(answer: SiteAnswer, cell: Solved, request: SiteRequest) -> SiteAnswe
         )
     pairs = pairs_of(placed, assumptions, request.between) if request.pairs else None
     return replace(answer, tables=tables, pairs=pairs)
+
+
+def _carried(others: Mapping[str, Any], taken: set[str]) -> Columns:
+    """Return the further columns of the file of sites, under names that hide none of ours."""
+    columns: Columns = {}
+    for name, text in others.items():
+        free = name
+        while free in taken or (free != name and free in others):
+            free += "_as_given"
+        columns[free] = text
+    return columns
 
 
 def all_turned_away(name: str, sites: Sites, reason: str, sentence: str, sha256: str = "") -> SiteAnswer:

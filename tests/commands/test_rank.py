@@ -138,6 +138,10 @@ def test_any_numeric_column_ranks_further_ones_too(tmp_path, cells):
         MorphotoneError, match=r"column 'layer' cannot be ranked by: read 'L0', expected a number"
     ):
         morphotone.rank(cells, path, by="layer")
+    path = sites_file(tmp_path, [f"{HEADER},X", *(f"{line},{n}0" for n, line in enumerate(SITES[1:]))])
+    assert morphotone.rank(cells, path, by="X").ranking["X"].max() < 9
+    given = morphotone.rank(cells, path, by="X_as_given")
+    assert given.ranking["rank_in_set"].tolist() == [2, 3, 4, 5, 1]
 
 
 def test_a_column_that_is_not_there_is_refused_before_any_work(tmp_path, cells, capsys, monkeypatch):

@@ -205,10 +205,16 @@ def test_a_cell_gives_the_same_alone_and_in_company():
 
 
 def test_further_columns_are_carried_and_never_hide_one_of_ours():
-    table = table_of(trees.ball_and_stick(), ["c,a,4,pale,deep"], "cell,site,sample,colour,X")
+    header = "cell,site,sample,colour,X,file,rank_in_cell,file_as_given"
+    table = table_of(trees.ball_and_stick(), ["c,a,4,pale,deep,mine,best,theirs"], header)
     assert table["colour"].tolist() == ["pale"]
     assert table["X_as_given"].tolist() == ["deep"]
     assert table["X"][0] > 0
+    assert "file" not in table
+    assert "rank_in_cell" not in table
+    assert table["rank_in_cell_as_given"].tolist() == ["best"]
+    assert table["file_as_given"].tolist() == ["theirs"]
+    assert table["file_as_given_as_given"].tolist() == ["mine"]
 
 
 def test_headers_are_those_of_the_tables():
