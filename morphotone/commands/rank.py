@@ -43,6 +43,7 @@ from morphotone.showing.tables import LINE_END
 Paths = str | os.PathLike[str] | Sequence[str | os.PathLike[str]]
 
 NAME = "rank"
+PAIRS = ("csv", "npy")
 _HZ = (100.0,)  # where nobody says which: the orders at rest and at 100 Hz differ
 _BATCH_BYTES = 2_000_000  # of files solved together
 
@@ -100,7 +101,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         default=FARTHEST_UM,
         help="turn away sites in space farther than this from the cable, in um (default: %(default)g)",
     )
-    parser.add_argument("--pairs", choices=("csv", "npy"), help="write all pairs of sites of each cell")
+    parser.add_argument("--pairs", choices=PAIRS, help="write all pairs of sites of each cell")
     parser.add_argument(
         "--between", metavar="GROUP", nargs=2, help="with --pairs: only from sites of one group to another's"
     )
@@ -206,7 +207,7 @@ def rank(
         keep_unfit,
         *_synapses(file.sites),
         pairs=pairs is not None,
-        between=_groups_of(file.sites, between),
+        between=_groups_of(file.sites, pairs, between),
         together=together,
         clamp_MOhm=clamp_MOhm,
     )
@@ -253,10 +254,16 @@ def _synapses(sites: Sites) -> tuple[bool, bool]:
     return bool(with_synapse(sites).any()), bool(with_course(sites).any())
 
 
-def _groups_of(sites: Sites, between: Sequence[str] | None) -> tuple[str, str] | None:
+def _groups_of(sites: Sites, pairs: str | None, between: Sequence[str] | None) -> tuple[str, str] | None:
     """Return the two groups whose pairs are asked for, which must be there."""
+    if pairs not in (None, *PAIRS):
+        raise MorphotoneError(f"read pairs = {pairs!r}, expected {' or '.join(PAIRS)}")
     if between is None:
         return None
+    if pairs is None or len(between) != 2:
+        raise MorphotoneError(
+            f"read the groups {' and '.join(between)}, expected two, together with pairs; ask for pairs too"
+        )
     first, second = between
     for group in (first, second):
         if group not in sites.group:

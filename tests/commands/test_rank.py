@@ -220,6 +220,12 @@ def test_pairs_between_two_groups(tmp_path, cells):
         np.testing.assert_array_equal(matrix, whole.matrices[name][:2, 2:])
     with pytest.raises(MorphotoneError, match="no site is of the group 'fur'; the groups are far, near"):
         morphotone.rank(cells, path, pairs="csv", between=("far", "fur"))
+    with pytest.raises(
+        MorphotoneError, match="read the groups far and near, expected two, together with pairs"
+    ):
+        morphotone.rank(cells, path, between=("far", "near"))
+    with pytest.raises(MorphotoneError, match="read pairs = 'xls', expected csv or npy"):
+        morphotone.rank(cells, path, pairs="xls")
 
 
 def test_a_fault_of_the_program_costs_the_sites_of_one_file(tmp_path, cells, monkeypatch):
