@@ -38,7 +38,7 @@ _MEAN = np.linalg.solve(_AT ** np.array([[0.5], [1.0], [1.5]]), 1.0 / np.array([
 _PRECISION = 1e-9  # of the hyperbola
 _LARGE = 40.0  # |v| from where on a moment's closed form loses no digit
 _RULE = legendre.leggauss(48)  # exact up to there
-_STACK = 4  # rows of one matrix product, too few for several threads to share
+_STACK = 2  # rows of one matrix product, too few for several threads to share
 
 
 @dataclass(frozen=True, eq=False)
@@ -152,8 +152,8 @@ def by_rows(rows: Real | Complex, matrix: Real) -> Real:
     flat = np.ascontiguousarray(rows).view(np.float64)
     missing = -len(flat) % _STACK
     whole = np.concatenate((flat, np.zeros((missing, flat.shape[1])))) if missing else flat
-    stacks = whole.reshape(-1, _STACK, flat.shape[1])
-    product: Real = (stacks @ matrix).reshape(-1, matrix.shape[1])[: len(flat)]
+    stacks = whole.reshape(len(whole) // _STACK, _STACK, flat.shape[1])
+    product: Real = (stacks @ matrix).reshape(len(whole), matrix.shape[1])[: len(flat)]
     return np.ascontiguousarray(product)
 
 
