@@ -116,7 +116,6 @@ def brief(
     About as long as 150 sweeps of one case, and 1 ms a site.
     """
     check(g_nS, driving_mV)
-    _peak_times(rise_ms, decay_ms)  # refuses what is none
     if not len(nodes):
         nothing = Response(*np.empty((3, 0)))
         return Brief(nodes, nothing, nothing, nothing, nothing)
@@ -172,6 +171,7 @@ def grids_for(rise_ms: Real, decay_ms: Real, slowest: float) -> Grids:
 
     Both ends are powers of two times 1 ms, so that many cells share them.
     """
+    _peak_times(rise_ms, decay_ms)  # refuses what is none
     first = int(np.floor(np.log2(_FIRST * rise_ms.min())))
     last = int(np.ceil(np.log2(_LAST_TIME * (rise_ms.max() + decay_ms.max() + slowest))))
     return _grids(first, last)

@@ -21,6 +21,7 @@ from numpy.typing import NDArray
 
 from morphotone.cable import neighbours
 from morphotone.cable.assumptions import Assumptions
+from morphotone.cable.brief import grids_for, read_off, solved
 from morphotone.cable.circuit import check
 from morphotone.cable.contour import Complex
 from morphotone.cable.pairs import common_nodes
@@ -106,6 +107,30 @@ class ClampedBrief:
     peak_fraction: Real
     time_to_peak_ms: Real
     escape_mV_per_pA: Real
+
+
+@dataclass(frozen=True, eq=False)
+class ClampedSynapses:
+    """Brief conductances one at a time under a clamp, shape (sites,).
+
+    Attributes
+    ----------
+    peak_seen_pA, peak_seen_error_pA : ndarray
+        Peak of the clamp's current, below 0 for a driving force below 0, and what halving the steps changes.
+    peak_fraction : ndarray
+        That peak over g·E, which a perfect clamp of the site would see; NaN where there is none.
+    time_to_peak_ms : ndarray
+        When the clamp's current peaks, from the start of the conductance; NaN where none is seen.
+    escape_mV, escape_error_mV : ndarray
+        Greatest depolarisation of the site, and what halving the steps changes.
+    """
+
+    peak_seen_pA: Real
+    peak_seen_error_pA: Real
+    peak_fraction: Real
+    time_to_peak_ms: Real
+    escape_mV: Real
+    escape_error_mV: Real
 
 
 def clamp(
@@ -195,6 +220,53 @@ def clamped_brief(
     known = fraction_seen >= _UNSEEN
     return ClampedBrief(
         np.where(known, fraction_seen, np.nan), np.where(known, when, np.nan), per_pA * escaped
+    )
+
+
+def clamped_synapses(
+    cable: Cable,
+    assumptions: Assumptions,
+    nodes: Index,
+    synapses: tuple[Real, Real, Real, Real],
+    series_MOhm: float = 0.0,
+    electrode: int = 0,
+) -> ClampedSynapses:
+    """Return what the clamp sees of a brief conductance at each site, whose driving force escapes too.
+
+    Parameters
+    ----------
+    synapses : tuple of four ndarrays, shape (sites,)
+        Peak conductances (nS), driving forces from rest (mV), rise and decay times (ms), as for
+        `morphotone.cable.brief.brief`.
+    cable, assumptions, nodes, series_MOhm, electrode
+        As for `clamp`.
+
+    Raises
+    ------
+    AssumptionError
+        When a conductance, a driving force, a time constant or the series resistance is none.
+
+    Notes
+    -----
+    The Volterra equation of `brief` with the clamped cell's impulse responses; all sites at once.
+    """
+    g_nS, driving_mV, rise_ms, decay_ms = synapses
+    check(g_nS, driving_mV)
+    if not len(nodes):
+        return ClampedSynapses(*np.empty((6, 0)))
+    grids = grids_for(rise_ms, decay_ms, slowest_ms(assumptions))
+    s = (MS_PER_S * grids.fine.line.s).tolist()
+    fraction, escape = _seen(cable, assumptions, nodes, s, series_MOhm, electrode)
+    curves = solved(grids, escape, fraction / GOHM_PER_MOHM, g_nS, driving_mV, rise_ms, decay_ms)
+    site, seen, finer_site, finer_seen = (read_off(grids.times, each, driving_mV) for each in curves)
+    ideal = g_nS * driving_mV
+    return ClampedSynapses(
+        finer_seen.peak_mV,
+        np.abs(finer_seen.peak_mV - seen.peak_mV),
+        np.divide(finer_seen.peak_mV, ideal, out=np.full(len(ideal), np.nan), where=ideal != 0.0),
+        finer_seen.time_to_peak_ms,
+        finer_site.peak_mV,
+        np.abs(finer_site.peak_mV - site.peak_mV),
     )
 
 

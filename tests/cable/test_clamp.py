@@ -6,7 +6,7 @@ from scipy.integrate import solve_ivp
 from scipy.optimize import minimize_scalar
 
 from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.clamp import clamp, clamped_brief, clamped_steady
+from morphotone.cable.clamp import clamp, clamped_brief, clamped_steady, clamped_synapses
 from morphotone.cable.electrotonus import cases_of, solve_cables
 from morphotone.cable.pairs import coupling
 from morphotone.cable.synaptic import SynapticCurrent
@@ -177,6 +177,91 @@ def test_where_nothing_arrives_nothing_is_read_off():
     assert np.isnan(got.peak_fraction[0])
     assert np.isnan(got.time_to_peak_ms[0])
     assert got.escape_mV_per_pA[0] > 0
+
+
+# ---------------------------------------------------------------- brief conductances
+
+
+def alpha(t, rise):
+    return t / rise * np.exp(1 - t / rise)
+
+
+def one(*values):
+    return tuple(np.array([value]) for value in values)
+
+
+@pytest.mark.parametrize("synapse", [(2.0, 60.0, 0.5), (50.0, 60.0, 0.5), (5.0, -10.0, 2.0)])
+def test_brief_conductance_on_a_clamped_isopotential_cell(synapse):
+    """C dV/dt = −V/R − V/R_s + g(t)(E − V), by scipy."""
+    g, E, rise = synapse
+    C_pF, series = 4 * np.pi * 100 * 1e-2, 20.0
+    leak = (1 / R_SPHERE + 1 / series) * 1e3  # nS
+    solution = solve_ivp(
+        lambda t, V: (-leak * V + g * alpha(t, rise) * (E - V)) / C_pF,
+        (0, 30), [0.0], method="DOP853", rtol=1e-11, atol=1e-12, max_step=0.005,
+    )  # fmt: skip
+    k = np.abs(solution.y[0]).argmax()
+    V = solution.y[0, k]
+    got = clamped_synapses(cable(SPHERE), DEFAULTS, np.array([0]), one(g, E, rise, rise), series)
+    np.testing.assert_allclose(got.escape_mV, V, rtol=1e-5)
+    np.testing.assert_allclose(got.peak_seen_pA, 1e3 * V / series, rtol=1e-5)
+    np.testing.assert_allclose(got.peak_fraction, 1e3 * V / series / (g * E), rtol=1e-5)
+    np.testing.assert_allclose(got.time_to_peak_ms, solution.t[k], atol=0.006)
+    assert got.escape_error_mV[0] < 1e-5 * abs(V)
+
+
+@pytest.mark.parametrize("number", [3, 5])
+def test_brief_conductance_on_a_clamped_ball_and_stick_is_a_fine_mesh(number):
+    swc, series, (g, E, rise) = trees.ball_and_stick(), 10.0, (10.0, 60.0, 0.5)
+    fine = mesh(swc, Choices("sphere"), step=1.0, fastest=50.0)
+    conductance, at = fine.conductance.toarray(), fine.node[number]
+    conductance[0, 0] += 1 / series
+    inverse = np.linalg.inv(fine.capacity.toarray())
+    leak = -1e3 * inverse @ conductance
+
+    def jacobian(t, V):
+        matrix = leak.copy()
+        matrix[:, at] -= g * alpha(t, rise) * inverse[:, at]
+        return matrix
+
+    solution = solve_ivp(
+        lambda t, V: leak @ V + inverse[:, at] * g * alpha(t, rise) * (E - V[at]),
+        (0, 10), np.zeros(len(leak)), method="Radau", jac=jacobian, rtol=1e-7, atol=1e-9, max_step=0.02,
+    )  # fmt: skip
+    cell = cable(swc)
+    got = clamped_synapses(cell, DEFAULTS, cell.node[[number - 1]], one(g, E, rise, rise), series)
+    np.testing.assert_allclose(got.peak_seen_pA, 1e3 * solution.y[0].max() / series, rtol=1e-4)
+    np.testing.assert_allclose(got.escape_mV, solution.y[at].max(), rtol=1e-4)
+
+
+def test_a_weak_conductance_under_a_clamp_is_a_current():
+    cell, nodes = cable(trees.comb()), np.array([1, 4, 9])
+    weak = tuple(np.full(3, value) for value in (1e-9, 60.0, 0.3, 3.0))
+    got = clamped_synapses(cell, DEFAULTS, nodes, weak, 5.0, 4)
+    expected = clamped_brief(cell, DEFAULTS, nodes, SynapticCurrent(0.3, 3.0), 5.0, 4)
+    np.testing.assert_allclose(got.peak_fraction, expected.peak_fraction, rtol=1e-5)
+    np.testing.assert_allclose(got.escape_mV / 60e-9, expected.escape_mV_per_pA, rtol=1e-5)
+    np.testing.assert_allclose(got.time_to_peak_ms, expected.time_to_peak_ms, rtol=1e-3)
+
+
+def test_a_perfect_clamp_at_the_synapse_sees_the_very_conductance():
+    got = clamped_synapses(cable(trees.comb()), DEFAULTS, np.array([4]), one(20.0, 60.0, 0.4, 3.0), 0.0, 4)
+    np.testing.assert_allclose(got.peak_seen_pA, 1200.0, rtol=1e-5)
+    assert got.escape_mV[0] == 0.0
+
+
+def test_no_sites():
+    nobody, nothing = np.array([], np.int64), np.array([])
+    cell = cable(SPHERE)
+    assert clamp(cell, DEFAULTS, nobody, [0.0]).fraction.shape == (0, 1)
+    assert clamped_brief(cell, DEFAULTS, nobody, SynapticCurrent(1.0, 1.0)).peak_fraction.shape == (0,)
+    assert clamped_synapses(cell, DEFAULTS, nobody, (nothing,) * 4).escape_mV.shape == (0,)
+
+
+def test_no_conductance_is_not_seen():
+    got = clamped_synapses(cable(SPHERE), DEFAULTS, np.array([0]), one(0.0, 60.0, 0.4, 3.0))
+    assert got.peak_seen_pA[0] == 0.0
+    assert np.isnan(got.peak_fraction[0])
 
 
 # ---------------------------------------------------------------- refusals
