@@ -113,7 +113,8 @@ def brief(
 
     Notes
     -----
-    About as long as 150 sweeps of one case, and 1 ms a site.
+    Two to four times as long as `morphotone.cable.transients.transients` at as many sites: the kernel needs
+    higher frequencies than a current does.
     """
     check(g_nS, driving_mV)
     if not len(nodes):
