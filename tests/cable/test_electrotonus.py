@@ -50,3 +50,19 @@ def test_assumptions_that_give_different_trees_are_refused():
     rec = read(trees.with_axon())
     with pytest.raises(AssumptionError, match="trees of different nodes"):
         solve(rec, [Assumptions(), Assumptions(axon="left out")])
+
+
+@pytest.mark.parametrize("radius", ["1e-308", "0.00005", "2e6", "1e99"])
+def test_a_radius_no_cable_has_is_refused_with_its_line(radius):
+    rec = read(f"1 3 0 0 0 1 -1\n2 3 50 0 0 {radius} 1\n")
+    with pytest.raises(
+        ReadingError, match=r"line 2: radius .* of sample 2, expected 0.0001 to 1e\+06 um"
+    ) as caught:
+        solve(rec)
+    assert caught.value.reason == "radius_absurd"
+
+
+def test_a_correction_that_eats_the_radius_is_named():
+    rec = read("1 3 0 0 0 1 -1\n2 3 50 0 0 0.2 1\n")
+    with pytest.raises(ReadingError, match=r"radius 0.2 um, -0.05 um after the correction of diameters"):
+        solve(rec, Assumptions(diameter_offset_um=-0.5))
