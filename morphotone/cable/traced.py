@@ -151,13 +151,12 @@ def _corrected_radius(rec: Reconstruction, assumptions: Assumptions) -> Real:
     wrong = np.flatnonzero(~((radius >= _SMALLEST_UM) & (radius <= _LARGEST_UM)))
     if len(wrong):
         at = wrong[0]
-        corrected = (
-            "" if radius[at] == rec.radius[at] else f", {radius[at]:g} um after the correction of diameters,"
-        )
+        same = radius[at] == rec.radius[at]
+        corrected = "" if same else f", {radius[at]:g} um after the correction of diameters,"
         raise ReadingError(
-            f"{rec.file}: line {rec.line[at]}: radius {rec.radius[at]:g} um{corrected} of sample {rec.number[at]}, "
-            f"expected {_SMALLEST_UM:g} to {_LARGEST_UM:g} um ({len(wrong)} such samples); mend the radii, or change "
-            "the unit or the correction",
+            f"{rec.file}: line {rec.line[at]}: radius {rec.radius[at]:g} um{corrected} of sample "
+            f"{rec.number[at]}, expected {_SMALLEST_UM:g} to {_LARGEST_UM:g} um ({len(wrong)} such samples); "
+            "mend the radii, or change the unit or the correction",
             "radius_absurd",
         )
     return radius
