@@ -13,8 +13,8 @@ from morphotone.reading.soma import Soma, find_soma, reroot
 
 AXON = 2  # type code of the SWC standard
 
-# An atom, and a metre: outside, no double holds the conductances of a cable, and none is meant.
-_SMALLEST_UM, _LARGEST_UM = 1e-4, 1e6
+# Far outside what any cable has, and inside what double precision holds when radii are squared.
+_SMALLEST_UM, _LARGEST_UM = 1e-9, 1e6
 
 # Rules whose soma ends at the sphere of its area; with the others it ends one radius from the parent sample.
 _SPHERES = ("sphere", "outline")

@@ -52,11 +52,11 @@ def test_assumptions_that_give_different_trees_are_refused():
         solve(rec, [Assumptions(), Assumptions(axon="left out")])
 
 
-@pytest.mark.parametrize("radius", ["1e-308", "0.00005", "2e6", "1e99"])
+@pytest.mark.parametrize("radius", ["1e-308", "0.0000000005", "2e6", "1e99"])
 def test_a_radius_no_cable_has_is_refused_with_its_line(radius):
     rec = read(f"1 3 0 0 0 1 -1\n2 3 50 0 0 {radius} 1\n")
     with pytest.raises(
-        ReadingError, match=r"line 2: radius .* of sample 2, expected 0.0001 to 1e\+06 um"
+        ReadingError, match=r"line 2: radius .* of sample 2, expected 1e-09 to 1e\+06 um"
     ) as caught:
         solve(rec)
     assert caught.value.reason == "radius_absurd"
