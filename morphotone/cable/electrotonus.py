@@ -8,16 +8,19 @@ import numpy as np
 from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions, Membrane
-from morphotone.cable.forest import Column, Forest, Solved
-from morphotone.cable.frustum import Values
+from morphotone.cable.forest import Column, Forest, Solved, membrane_of
+from morphotone.cable.frustum import Values, electrotonic_lengths
 from morphotone.cable.tree import Cable, build
-from morphotone.errors import AssumptionError
+from morphotone.errors import AssumptionError, ReadingError
 from morphotone.reading.reconstruction import Reconstruction
 
 Real = NDArray[np.float64]
 
 
 DEFAULTS = Assumptions()
+
+# In space constants; what is left of a steady signal across it is e^-1000. No neuron's step is that long.
+_LONGEST_STEP = 1000.0
 
 
 class Case(NamedTuple):
@@ -133,7 +136,15 @@ def cases_of(many: Sequence[Assumptions], hz: Sequence[float] | None = None) -> 
 
 
 def build_cases(rec: Reconstruction, many: Sequence[Assumptions]) -> tuple[Cable, ...]:
-    """Return a reconstruction's cable under each of several assumptions, built once where geometry agrees."""
+    """Return a reconstruction's cable under each of several assumptions, built once where geometry agrees.
+
+    Raises
+    ------
+    ReadingError
+        As `morphotone.cable.tree.build`; or when a step is more than 1,000 λ long (reason ``step_endless``).
+    AssumptionError
+        When the assumptions give trees of different nodes.
+    """
     built: list[tuple[Assumptions, Cable]] = []
     cables = []
     for one in many:
@@ -147,8 +158,24 @@ def build_cases(rec: Reconstruction, many: Sequence[Assumptions]) -> tuple[Cable
                 f"{rec.file}: these assumptions give trees of different nodes (soma, axon or orphans "
                 "differ), expected the same tree in all cases; solve them one after the other"
             )
+        _refuse_endless_step(rec, cable, one)
         cables.append(cable)
     return tuple(cables)
+
+
+def _refuse_endless_step(rec: Reconstruction, cable: Cable, assumptions: Assumptions) -> None:
+    """Refuse a cell with a step so long that its ends have nothing to do with each other."""
+    R_i, leak, _ = membrane_of(cable.kind, assumptions)
+    L = electrotonic_lengths(cable.r_start, cable.r_end, cable.length, R_i, leak)
+    if L.max() > _LONGEST_STEP:
+        at = int(L.argmax())
+        sample = cable.sample[at]
+        raise ReadingError(
+            f"{rec.file}: line {rec.line[sample]}: the step to sample {rec.number[sample]} is "
+            f"{cable.length[at]:.4g} um or {L[at]:.4g} space constants long, expected at most "
+            f"{_LONGEST_STEP:,.0f}; mend the coordinates, or say the file's unit",
+            "step_endless",
+        )
 
 
 def solve_cables(cells: Sequence[Sequence[Cable]], cases: Sequence[Case]) -> list[Electrotonus]:

@@ -26,7 +26,9 @@ Real = NDArray[np.float64]
 # A frustum longer than this many λ is cut before it is solved: at 10 kHz λ is some 35 times shorter, and
 # across 700 λ the axial admittance, and with it every trace of the far end, is too small for a double.
 _LONGEST = 8.0
-_MOST_PIECES = 100_000  # the double of a length without meaning still gets an end
+_MOST_PIECES = (
+    1000  # 8,000 λ in one step is no neuron's; what is longer still has an end, but an infinite attenuation
+)
 
 
 class Column(NamedTuple):
@@ -132,8 +134,9 @@ class Forest:
         toward = pieces.end + pieces.axial * (far / (pieces.axial + far))
         toward[first_root:] = 0.0
         z_in = 1.0 / (looks.away + toward)
-        fall_from = (pieces.end + looks.away) / pieces.axial
-        fall_to = far / pieces.axial
+        with np.errstate(divide="ignore", over="ignore", invalid="ignore"):  # where nothing gets through
+            fall_from = (pieces.end + looks.away) / pieces.axial
+            fall_to = far / pieces.axial
         log_from = path_sums(self.plan, np.log1p(fall_from))
         log_to = path_sums(self.plan, np.log1p(fall_to))
         at_soma = z_in[self._root_of_place()]

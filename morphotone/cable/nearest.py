@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.spatial import cKDTree
 
-from morphotone.cable.traced import _SPHERES, Traced
+from morphotone.cable.traced import SPHERES, Traced
 from morphotone.cable.tree import Cable
 
 Index = NDArray[np.int64]
@@ -99,7 +99,7 @@ def _cones(cable: Cable) -> _Cones:
     position, above = traced.position, traced.parent[ends]
     tip = position[ends]
     origin = np.where(
-        traced.stem[ends, None] & (traced.soma.rule in _SPHERES), traced.soma.centre, position[above]
+        traced.stem[ends, None] & (traced.soma.rule in SPHERES), traced.soma.centre, position[above]
     )
     whole, span = traced.length[ends], np.linalg.norm(origin - tip, axis=1)
     start = np.where(traced.stem[ends, None], tip + (origin - tip) * (whole / span)[:, None], origin)

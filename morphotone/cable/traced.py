@@ -13,8 +13,11 @@ from morphotone.reading.soma import Soma, find_soma, reroot
 
 AXON = 2  # type code of the SWC standard
 
+# Far outside what any cable has, and inside what double precision holds when radii are squared.
+_SMALLEST_UM, _LARGEST_UM = 1e-9, 1e6
+
 # Rules whose soma ends at the sphere of its area; with the others it ends one radius from the parent sample.
-_SPHERES = ("sphere", "outline")
+SPHERES = ("sphere", "outline")
 
 Index = NDArray[np.int64]
 Real = NDArray[np.float64]
@@ -81,7 +84,7 @@ def trace(rec: Reconstruction, assumptions: Assumptions) -> Traced:
     Raises
     ------
     ReadingError
-        When a radius is not positive (reason ``radius_not_positive``), when there are orphans and the
+        When a radius is no cable's (reason ``radius_absurd``), when there are orphans and the
         assumptions refuse them (``orphans_refused``), or when nothing is left (``nothing_left``).
     """
     position = rec.position * np.asarray(assumptions.shrinkage)
@@ -126,7 +129,7 @@ def _frustum_lengths(position: Real, radius: Real, parent: Index, soma: Soma) ->
     in_soma = np.zeros(len(parent), bool)
     in_soma[soma.members] = True
     stem = in_soma[parent] & (parent >= 0) & ~in_soma
-    if soma.rule in _SPHERES:
+    if soma.rule in SPHERES:
         surface = np.linalg.norm(position - soma.centre, axis=1) - soma.radius
     else:
         surface = length - radius[parent]
@@ -145,14 +148,16 @@ def step_lengths(position: Real, parent: Index) -> Real:
 
 def _corrected_radius(rec: Reconstruction, assumptions: Assumptions) -> Real:
     radius = assumptions.diameter_factor * rec.radius + assumptions.diameter_offset_um / 2.0
-    wrong = np.flatnonzero(~(radius > 0))
+    wrong = np.flatnonzero(~((radius >= _SMALLEST_UM) & (radius <= _LARGEST_UM)))
     if len(wrong):
         at = wrong[0]
+        same = radius[at] == rec.radius[at]
+        corrected = "" if same else f", {radius[at]:g} um after the correction of diameters,"
         raise ReadingError(
-            f"{rec.file}: line {rec.line[at]}: radius {rec.radius[at]:g} um becomes {radius[at]:g} um after "
-            f"the diameter correction, expected a positive one ({len(wrong)} such samples); change the "
-            "correction, or mend the radii",
-            "radius_not_positive",
+            f"{rec.file}: line {rec.line[at]}: radius {rec.radius[at]:g} um{corrected} of sample "
+            f"{rec.number[at]}, expected {_SMALLEST_UM:g} to {_LARGEST_UM:g} um ({len(wrong)} such samples); "
+            "mend the radii, or change the unit or the correction",
+            "radius_absurd",
         )
     return radius
 

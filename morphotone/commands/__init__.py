@@ -27,6 +27,8 @@ Each command's own --help has units and examples. Results hold under the passive
 assumptions; they are for research, not for clinical or device decisions.
 """
 
+_RESUMED = ("survey",)  # commands with a ledger
+
 ALL_WELL, TURNED_AWAY, WRONG_USAGE, INTERRUPTED = 0, 1, 2, 130
 
 
@@ -53,7 +55,8 @@ def main(argv: Sequence[str] | None = None) -> int:
     try:
         return int(import_module(f"morphotone.commands.{chosen}").run(args))
     except KeyboardInterrupt:
-        print("interrupted; the same command goes on from here", file=sys.stderr)
+        goes_on = "; the same command goes on from here" if chosen in _RESUMED else ""
+        print(f"interrupted{goes_on}", file=sys.stderr)
         return INTERRUPTED
     except MorphotoneError as error:
         if args.debug:

@@ -3,8 +3,7 @@
 import numpy as np
 
 from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.clamp import clamp, clamped_brief, clamped_steady
-from morphotone.cable.synaptic import SynapticCurrent
+from morphotone.cable.clamp import clamp, clamped_steady, clamped_synapses
 from morphotone.questions.columns import Columns, hz_suffix
 from morphotone.questions.synapses import Placed, spread, with_course, with_synapse
 
@@ -23,7 +22,7 @@ def clamp_table(
     series_MOhm : float
         Series resistance, MΩ.
     synapses, brief : bool
-        Whether there are columns for steady conductances, and for brief currents.
+        Whether there are columns for steady and for brief conductances.
     """
     hz = [0.0, *assumptions.hz]
     view = clamp(placed.sited.cable, assumptions, placed.sited.node, hz, series_MOhm)
@@ -58,20 +57,19 @@ def _steady(placed: Placed, assumptions: Assumptions, series_MOhm: float) -> Col
 
 
 def _brief(placed: Placed, assumptions: Assumptions, series_MOhm: float) -> Columns:
-    """Return what is seen of a brief current with each synapse's rise and decay; alike ones at once."""
+    """Return what is seen of each conductance with its own course, alone."""
     sites, sited = placed.sites, placed.sited
+    rows = np.flatnonzero(with_course(sites))
+    synapses = (
+        sites.g_peak_nS[rows], sites.driving_force_mV[rows], sites.rise_ms[rows], sites.decay_ms[rows]
+    )  # fmt: skip
+    seen = clamped_synapses(sited.cable, assumptions, sited.node[rows], synapses, series_MOhm)
     columns = {
-        name: np.full(len(sites), np.nan)
-        for name in ("peak_seen_fraction", "time_to_peak_seen_ms", "peak_escape_mV_per_pA")
+        "peak_seen_pA": seen.peak_seen_pA,
+        "peak_seen_error_pA": seen.peak_seen_error_pA,
+        "peak_seen_fraction": seen.peak_fraction,
+        "time_to_peak_seen_ms": seen.time_to_peak_ms,
+        "peak_escape_mV": seen.escape_mV,
+        "peak_escape_error_mV": seen.escape_error_mV,
     }
-    timed = np.flatnonzero(with_course(sites))
-    courses = np.stack((sites.rise_ms[timed], sites.decay_ms[timed]), axis=1)
-    kinds, of = np.unique(courses, axis=0, return_inverse=True)
-    for kind, (rise_ms, decay_ms) in enumerate(kinds.tolist()):
-        rows = timed[of == kind]
-        current = SynapticCurrent(rise_ms, decay_ms)
-        seen = clamped_brief(sited.cable, assumptions, sited.node[rows], current, series_MOhm)
-        columns["peak_seen_fraction"][rows] = seen.peak_fraction
-        columns["time_to_peak_seen_ms"][rows] = seen.time_to_peak_ms
-        columns["peak_escape_mV_per_pA"][rows] = seen.escape_mV_per_pA
-    return columns
+    return {name: spread(values, rows, len(sites)) for name, values in columns.items()}

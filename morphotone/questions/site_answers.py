@@ -123,7 +123,9 @@ def headers(request: SiteRequest, others: Sequence[str]) -> dict[str, list[str]]
         dict.fromkeys(others, text),
     )  # fmt: skip
     file = FileOfCell("specimen", SPECIMEN, sites)
-    (answer,) = site_answers([file], replace(request, keep_unfit=True))
+    # Of the assumptions only the frequencies have columns; the others might turn the specimen away.
+    plain = replace(request, assumptions=Assumptions(hz=request.assumptions.hz), keep_unfit=True)
+    (answer,) = site_answers([file], plain)
     return {name: list(table) for name, table in answer.tables.items()}
 
 

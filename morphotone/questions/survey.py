@@ -138,7 +138,9 @@ def answers(files: Sequence[tuple[str, bytes | ReadingError]], request: Request)
 
 def headers(request: Request) -> dict[str, list[str]]:
     """Return the columns of the tables that `answers` gives to a request, without the leading names."""
-    (answer,) = answers([("specimen", SPECIMEN)], replace(request, keep_unfit=True))
+    # Of the assumptions only the frequencies have columns; the others might turn the specimen away.
+    plain = replace(request, assumptions=Assumptions(hz=request.assumptions.hz), keep_unfit=True)
+    (answer,) = answers([("specimen", SPECIMEN)], plain)
     tables = {"branches": answer.branches, "samples": answer.by_sample, "findings": answer.findings}
     columns = {name: list(table) for name, table in tables.items() if table is not None}
     return {"cells": list(answer.cell or {}), **columns}

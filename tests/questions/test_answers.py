@@ -173,7 +173,7 @@ def test_what_cannot_be_mended_is_turned_away_and_still_has_its_findings():
 @pytest.mark.parametrize(
     ("assumptions", "swc", "reason"),
     [
-        (Assumptions(diameter_offset_um=-2.5), trees.ball_and_stick(), "radius_not_positive"),
+        (Assumptions(diameter_offset_um=-2.5), trees.ball_and_stick(), "radius_absurd"),
         (
             Assumptions(orphans="refused"),
             trees.soma_chain() + "12 3 90 0 0 1 -1\n13 3 95 0 0 1 12\n",
@@ -188,7 +188,7 @@ def test_a_file_that_the_assumptions_leave_nothing_of_is_turned_away(assumptions
     )
     assert answer.reason == reason
     assert answer.sentence.startswith("x.swc: ")
-    assert (other.reason == "") == (reason != "radius_not_positive")
+    assert (other.reason == "") == (reason != "radius_absurd")
 
 
 def test_headers_are_the_columns_that_a_cell_gets(together):
@@ -209,6 +209,7 @@ def test_headers_are_the_columns_that_a_cell_gets(together):
         Assumptions(soma_rule="none"),
         Assumptions(domains={1: Membrane(1000.0), 3: Membrane(2000.0)}),
         Assumptions(unit_um=1e-6),
+        Assumptions(diameter_offset_um=-5.0),
     ],
 )
 def test_headers_can_be_had_under_any_assumptions(assumptions):

@@ -158,7 +158,7 @@ def test_the_clamps_view_by_hand():
     np.testing.assert_allclose(poor["steady_seen_fraction"][:2], seen[:2] / (1 + gR), rtol=1e-10)
     np.testing.assert_allclose(poor["steady_escape_mV"][:2], 70 * gR / (1 + gR), rtol=1e-10)
     assert (poor["peak_seen_fraction"][:2] < poor["seen_fraction"][:2]).all()
-    for name in ("steady_seen_pA", "peak_seen_fraction", "peak_escape_mV_per_pA"):
+    for name in ("steady_seen_pA", "peak_seen_fraction", "peak_escape_mV"):
         assert np.isnan(poor[name]).tolist() == [False, False, True]
 
 
