@@ -21,8 +21,6 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.sparse import csr_array
-from scipy.sparse.csgraph import depth_first_order
 
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.forest import Solved
@@ -151,9 +149,9 @@ def common_nodes(parent: Index, nodes: Index, seen: Index) -> Index:
     -----
     Linear in the tree's nodes and in the pairs.
     """
-    walk = _walk(parent)
-    entered = np.empty_like(walk)
-    entered[walk] = np.arange(len(walk))
+    entered = _entered(parent)
+    walk = np.empty_like(entered)
+    walk[entered] = np.arange(len(entered))
     at, which = np.unique(entered[np.append(nodes, seen)], return_inverse=True)
     above = entered[parent[walk[: at[-1] + 1]]] if len(at) else at
     lowest = np.minimum.reduceat(above, at[:-1] + 1) if len(at) > 1 else at[:0]
@@ -166,11 +164,21 @@ def common_nodes(parent: Index, nodes: Index, seen: Index) -> Index:
     return walk[meets[row[:, None], which[len(nodes) :]]]
 
 
-def _walk(parent: Index) -> Index:
-    """Return the nodes of a tree in the order in which a depth-first walk enters them."""
-    count = len(parent)
-    below = csr_array((np.ones(count - 1), (parent[1:], np.arange(1, count))), shape=(count, count))
-    return depth_first_order(below, 0, return_predecessors=False).astype(np.int64)
+def _entered(parent: Index) -> Index:
+    """Return when a depth-first walk enters each node of a tree.
+
+    A loop over the nodes: the library's walk goes through a node's children anew for each of them.
+    """
+    above = parent.tolist()
+    size = [1] * len(above)  # of the tree that hangs on each node
+    for node in range(len(above) - 1, 0, -1):
+        size[above[node]] += size[node]
+    entered, free = [0] * len(above), [1] * len(above)
+    for node in range(1, len(above)):
+        entered[node] = free[above[node]]
+        free[above[node]] += size[node]
+        free[node] = entered[node] + 1
+    return np.array(entered, np.int64)
 
 
 def _solved(cable: Cable, assumptions: Assumptions, s: complex) -> Solved:
