@@ -59,7 +59,7 @@ what is written into RESULTS:
   movers.csv             which sites change place most between two orders, from where to where
   pairs.csv, pairs.npz   with --pairs: transfer resistance, attenuation, delay between all sites of a cell
   together.csv           with --together: the synapses of each group of a cell active at once
-  clamp.csv              with --clamp-MOhm: what an electrode at the soma sees of each site
+  clamp.csv              with --clamp-MOhm: what a clamp at the soma (or at a site) sees of each site
   turned_away_sites.csv  one row per site not ranked, with the reason
   assumptions.toml       what was assumed, whole
   run.json               the record: versions, assumptions, counts, SHA-256 of the inputs, times
@@ -114,6 +114,11 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         type=float,
         help="write what a voltage clamp at the soma sees through this series resistance, in MOhm",
     )
+    parser.add_argument(
+        "--clamp-at",
+        metavar="SITE",
+        help="with --clamp-MOhm: the clamp is at the site of this label, in cells that have it",
+    )
     parser.add_argument("--keep-unfit", action="store_true", help="rank on files of grade unfit too")
 
 
@@ -130,6 +135,7 @@ def run(args: argparse.Namespace) -> int:
         between=args.between,
         together=args.together,
         clamp_MOhm=args.clamp_MOhm,
+        clamp_at=args.clamp_at,
         keep_unfit=args.keep_unfit,
         progress=progress_on(sys.stderr) if sys.stderr.isatty() else None,
     )
@@ -155,6 +161,7 @@ def rank(
     between: Sequence[str] | None = None,
     together: bool = False,
     clamp_MOhm: float | None = None,
+    clamp_at: str | None = None,
     keep_unfit: bool = False,
     progress: Progress | None = None,
 ) -> Ranking:
@@ -182,6 +189,8 @@ def rank(
         Work out what the synapses of each group of a cell do when all are active.
     clamp_MOhm : float, optional
         Work out what a voltage clamp at the soma sees through this series resistance, MΩ.
+    clamp_at : str, optional
+        With clamp_MOhm: label of a site; the clamp is there in every cell that has it.
     keep_unfit : bool
         Rank on files of grade unfit too.
     progress : Progress, optional
@@ -210,6 +219,7 @@ def rank(
         between=_groups_of(file.sites, pairs, between),
         together=together,
         clamp_MOhm=clamp_MOhm,
+        clamp_at=_clamped_site(file.sites, clamp_MOhm, clamp_at),
     )
     header = _checked_header(request, file.sites, by)
     listed = [paths] if isinstance(paths, str | os.PathLike) else list(paths)
@@ -252,6 +262,17 @@ def _kept(answers: Iterator[SiteAnswer], into: Path | None, pairs: str | None) -
 def _synapses(sites: Sites) -> tuple[bool, bool]:
     """Return whether any site has a conductance, and whether any has one with a course in time."""
     return bool(with_synapse(sites).any()), bool(with_course(sites).any())
+
+
+def _clamped_site(sites: Sites, clamp_MOhm: float | None, at: str | None) -> str | None:
+    """Return the label of the site to clamp, or refuse one that no cell has."""
+    if at is None:
+        return None
+    if clamp_MOhm is None:
+        raise MorphotoneError(f"a clamp at site {at!r} without a series resistance; give --clamp-MOhm too")
+    if at not in sites.site.tolist():
+        raise MorphotoneError(f"there is no site {at!r} to clamp; expected a label of the file of sites")
+    return at
 
 
 def _groups_of(sites: Sites, pairs: str | None, between: Sequence[str] | None) -> tuple[str, str] | None:

@@ -48,7 +48,9 @@ class SiteRequest:
     between : (str, str) or None
         The two groups whose pairs are given; those of all sites if None.
     clamp_MOhm : float or None
-        Series resistance of the voltage clamp at the soma whose view of each site is asked for, MΩ.
+        Series resistance of the voltage clamp whose view of each site is asked for, MΩ.
+    clamp_at : str or None
+        Label of the site at which the clamp is, in cells that have it; else it is at the soma.
     """
 
     assumptions: Assumptions
@@ -60,6 +62,7 @@ class SiteRequest:
     together: bool = False
     between: tuple[str, str] | None = None
     clamp_MOhm: float | None = None
+    clamp_at: str | None = None
 
     def __post_init__(self) -> None:
         for value, name, option in (
@@ -144,7 +147,7 @@ def _filled(answer: SiteAnswer, cell: Solved, request: SiteRequest) -> SiteAnswe
         tables |= {"together": together_table(placed, between), "veto": veto_table(placed, between)}
     if request.clamp_MOhm is not None:
         tables["clamp"] = clamp_table(
-            placed, assumptions, request.clamp_MOhm, request.synapses, request.brief
+            placed, assumptions, request.clamp_MOhm, request.clamp_at, request.synapses, request.brief
         )
     pairs = pairs_of(placed, assumptions, request.between) if request.pairs else None
     return replace(answer, tables=tables, pairs=pairs)

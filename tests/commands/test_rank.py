@@ -228,6 +228,18 @@ def test_pairs_between_two_groups(tmp_path, cells):
         morphotone.rank(cells, path, pairs="xls")
 
 
+def test_a_clamp_at_a_site(tmp_path, cells):
+    path = sites_file(tmp_path)
+    command_line = ("rank", cells, "--synapses", path, "--into", tmp_path / "out", "--clamp-MOhm", "5")
+    run(*command_line, "--clamp-at", "tip")
+    clamp = pd.read_csv(tmp_path / "out" / "clamp.csv")
+    assert set(clamp["electrode"][clamp["file"] == "b.swc"]) == {"tip"}
+    with pytest.raises(MorphotoneError, match="a clamp at site 'tip' without a series resistance"):
+        morphotone.rank(cells, path, clamp_at="tip")
+    with pytest.raises(MorphotoneError, match="there is no site 'nobody' to clamp"):
+        morphotone.rank(cells, path, clamp_MOhm=5.0, clamp_at="nobody")
+
+
 def test_a_fault_of_the_program_costs_the_sites_of_one_file(tmp_path, cells, monkeypatch):
     honest = command.site_answers
 

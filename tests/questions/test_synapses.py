@@ -243,3 +243,16 @@ def test_headers_are_those_of_the_tables():
 def test_requests_without_sense_are_refused(asked, sentence):
     with pytest.raises(AssumptionError, match=sentence):
         SiteRequest(Assumptions(), **asked)
+
+
+def test_a_clamp_at_a_site_is_perfect_there_and_sees_the_soma_by_reciprocity():
+    header, rows = "cell,site,sample,fraction", ["c,o,1,", "c,p,4,0.3", "c,q,5,"]
+    swc = trees.ball_and_stick()
+    at_site = answer_of(swc, rows, header, clamp_MOhm=5.0, clamp_at="p").tables["clamp"]
+    answer = answer_of(swc, rows, header, pairs=True)
+    R = answer.pairs.matrices["R_transfer_MOhm"]
+    assert at_site["electrode"] == ["p"] * 3
+    np.testing.assert_allclose(at_site["seen_fraction"], R[:, 1] / (R[1, 1] + 5.0), rtol=1e-10)
+    elsewhere = answer_of(swc, rows, header, clamp_MOhm=5.0, clamp_at="nobody").tables["clamp"]
+    assert elsewhere["electrode"] == ["soma"] * 3
+    np.testing.assert_allclose(elsewhere["seen_fraction"], R[:, 0] / (R[0, 0] + 5.0), rtol=1e-10)
