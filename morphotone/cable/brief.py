@@ -15,11 +15,11 @@ from numpy.typing import NDArray
 from morphotone.cable import neighbours
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.circuit import check
-from morphotone.cable.contour import Complex
+from morphotone.cable.contour import Complex, by_rows
 from morphotone.cable.spectrum import forest_of, places_of, slowest_ms, spectra
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.cable.tree import Cable
-from morphotone.cable.volterra import Panels, by_rows, doublings, line_for, panels, respond
+from morphotone.cable.volterra import Panels, doublings, line_for, panels, respond
 from morphotone.units import MICROSIEMENS_PER_NANOSIEMENS, MS_PER_S
 
 Index = NDArray[np.int64]

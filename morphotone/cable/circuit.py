@@ -25,7 +25,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from morphotone.cable.volterra import by_rows
+from morphotone.cable.contour import by_rows
 from morphotone.errors import AssumptionError
 from morphotone.units import MICROSIEMENS_PER_NANOSIEMENS
 

@@ -23,13 +23,12 @@ from morphotone.cable import neighbours
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.brief import grids_for, read_off, solved
 from morphotone.cable.circuit import check
-from morphotone.cable.contour import Complex
+from morphotone.cable.contour import Complex, by_rows
 from morphotone.cable.pairs import common_nodes
 from morphotone.cable.spectrum import forest_of, slowest_ms, spectra
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.cable.transients import GOHM_PER_MOHM, Window
 from morphotone.cable.tree import Cable
-from morphotone.cable.volterra import by_rows
 from morphotone.errors import AssumptionError
 from morphotone.units import MICROSIEMENS_PER_NANOSIEMENS, MS_PER_S
 

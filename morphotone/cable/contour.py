@@ -105,3 +105,17 @@ def contour(first: float, last: float, precision: float) -> Contour:
         mu * (1.0 + np.sin(1j * u - alpha)),
         h / np.pi * 1j * mu * np.cos(1j * u - alpha),
     )
+
+
+def by_rows(rows: Real | Complex, matrix: Real, at_once: int = 2) -> Real:
+    """Return rows (complex ones as pairs) times a matrix, the same bits for any number of threads.
+
+    Threads share out the rows of a large product, and the last rows of each share are rounded differently:
+    ``at_once`` rows are too few to be shared.
+    """
+    flat = np.ascontiguousarray(rows).view(np.float64)
+    missing = -len(flat) % at_once
+    whole = np.concatenate((flat, np.zeros((missing, flat.shape[1])))) if missing else flat
+    stacks = whole.reshape(len(whole) // at_once, at_once, flat.shape[1])
+    product: Real = (stacks @ matrix).reshape(len(whole), matrix.shape[1])[: len(flat)]
+    return np.ascontiguousarray(product)

@@ -27,7 +27,7 @@ from numpy.typing import NDArray
 
 from morphotone.cable import neighbours
 from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.contour import Complex, Contour, contour
+from morphotone.cable.contour import Complex, Contour, by_rows, contour
 from morphotone.cable.spectrum import forest_of, places_of, slowest_ms, spectra
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.cable.tree import Cable
@@ -49,7 +49,6 @@ _PRECISION = 1e-10
 _REFERENCE = 1e-13  # precision of the hyperbola that ρ is measured against
 _STEP = 0.04  # of ln t, between the times at which responses are looked at
 _ROWS = 1000  # evaluated at a time, so that they stay in the processor's cache
-_STACK = 4  # rows of one matrix product, too few for several threads to share
 _UNRESOLVED = 1e-3  # a response less certain than this, relative to its peak, is not given
 
 
@@ -210,7 +209,7 @@ def potentials(
     line = contour(float(times.min()), float(times.max()), _PRECISION)
     (along,) = _solved([cable], assumptions, line, None if nodes is None else [nodes])
     kernel = line.kernel(times, current.transform(line.s)) * (current.charge_fC * GOHM_PER_MOHM)
-    return Potentials(times, _pairs(along.Z_in[1:]) @ kernel, _pairs(along.Z_transfer[1:]) @ kernel)
+    return Potentials(times, _evaluated(along.Z_in[1:], kernel), _evaluated(along.Z_transfer[1:], kernel))
 
 
 @dataclass(frozen=True, eq=False)
@@ -278,22 +277,9 @@ def _single_poles(
     return _evaluated(modes, line.kernel(times, transform)), slope, _evaluated(modes, peak)
 
 
-def _pairs(values: Complex) -> Real:
-    """Return complex rows as pairs of real and imaginary parts."""
-    return np.ascontiguousarray(values).view(np.float64)
-
-
 def _evaluated(Z: Complex, kernel: Real) -> Real:
-    """Return the product of complex rows, as pairs, with a kernel: the same bits for any number of threads.
-
-    Threads share out the rows of a large product, and the last rows of each share are rounded differently.
-    """
-    pairs = _pairs(Z)
-    missing = -len(pairs) % _STACK
-    whole = np.concatenate((pairs, np.zeros((missing, pairs.shape[1])))) if missing else pairs
-    stacks = whole.reshape(len(whole) // _STACK, _STACK, -1)
-    product: Real = (stacks @ kernel).reshape(len(whole), -1)[: len(pairs)]
-    return product
+    """Return the product of complex rows, as pairs, with a kernel."""
+    return by_rows(Z, kernel, at_once=4)
 
 
 class _Along(NamedTuple):

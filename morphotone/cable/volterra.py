@@ -20,7 +20,7 @@ import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
-from morphotone.cable.contour import Complex, Contour, contour
+from morphotone.cable.contour import Complex, Contour, by_rows, contour
 
 Real = NDArray[np.float64]
 
@@ -38,7 +38,6 @@ _MEAN = np.linalg.solve(_AT ** np.array([[0.5], [1.0], [1.5]]), 1.0 / np.array([
 _PRECISION = 1e-9  # of the hyperbola
 _LARGE = 40.0  # |v| from where on a moment's closed form loses no digit
 _RULE = legendre.leggauss(48)  # exact up to there
-_STACK = 2  # rows of one matrix product, too few for several threads to share
 
 
 @dataclass(frozen=True, eq=False)
@@ -142,19 +141,6 @@ def respond(grid: Panels, Z_in: Complex, Z_out: Complex, g_uS: Real, driving_mV:
         local[:, k], elsewhere[:, k] = V, so_far_out + np.einsum("mnj,mj->mn", A_out, f)
         past = past * grid.decay[k] + by_rows(f, grid.gain[k]).view(np.complex128)
     return local, elsewhere
-
-
-def by_rows(rows: Real | Complex, matrix: Real) -> Real:
-    """Return rows (complex ones as pairs) times a matrix, the same bits for any number of threads.
-
-    Threads share out the rows of a large product, and the last rows of each share are rounded differently.
-    """
-    flat = np.ascontiguousarray(rows).view(np.float64)
-    missing = -len(flat) % _STACK
-    whole = np.concatenate((flat, np.zeros((missing, flat.shape[1])))) if missing else flat
-    stacks = whole.reshape(len(whole) // _STACK, _STACK, flat.shape[1])
-    product: Real = (stacks @ matrix).reshape(len(whole), matrix.shape[1])[: len(flat)]
-    return np.ascontiguousarray(product)
 
 
 def _panel(line: Contour, length: float, near: float) -> tuple[Complex, Real, Real, Real]:

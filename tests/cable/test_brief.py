@@ -10,11 +10,12 @@ from scipy.optimize import brentq, minimize_scalar
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.brief import brief, conductance
 from morphotone.cable.circuit import alone
+from morphotone.cable.contour import by_rows
 from morphotone.cable.pairs import coupling
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.cable.transients import transients
 from morphotone.cable.tree import build
-from morphotone.cable.volterra import POINTS, by_rows, doublings, line_for, panels
+from morphotone.cable.volterra import POINTS, doublings, line_for, panels
 from morphotone.errors import AssumptionError
 from morphotone.reading.reconstruction import reconstruct
 from tests import trees
