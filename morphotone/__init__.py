@@ -16,7 +16,7 @@ if TYPE_CHECKING:
     from morphotone.cable.assumptions import Assumptions, Membrane
     from morphotone.cable.delays import Delays, delays
     from morphotone.cable.electrotonus import Electrotonus, solve
-    from morphotone.cable.modes import Modes, time_constants
+    from morphotone.cable.modes import Modes, amplitudes_by_node, time_constants
     from morphotone.cable.response import FrequencyResponse, frequency_response, half_power_hz
     from morphotone.cable.synaptic import SynapticCurrent
     from morphotone.cable.transients import Transients, potentials, transients
@@ -36,6 +36,7 @@ _HOMES = {
     "Delays": "morphotone.cable.delays",
     "delays": "morphotone.cable.delays",
     "Modes": "morphotone.cable.modes",
+    "amplitudes_by_node": "morphotone.cable.modes",
     "time_constants": "morphotone.cable.modes",
     "FrequencyResponse": "morphotone.cable.response",
     "frequency_response": "morphotone.cable.response",
@@ -76,6 +77,7 @@ __all__ = [
     "Survey",
     "SynapticCurrent",
     "Transients",
+    "amplitudes_by_node",
     "build",
     "delays",
     "frequency_response",

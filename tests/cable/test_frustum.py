@@ -61,7 +61,7 @@ def test_two_parts_joined_are_the_whole(r_start: float, r_end: float) -> None:
 
 def test_walked_the_other_way_start_and_end_change_places() -> None:
     there, back = pi(1.5, 0.4, 120.0), pi(0.4, 1.5, 120.0)
-    assert there.reversed() == back
+    assert Pi(there.axial, there.end, there.start) == back
 
 
 @pytest.mark.parametrize(("r_start", "r_end"), [(0.5, 0.45), (0.45, 0.5)])
