@@ -15,7 +15,7 @@ import pandas as pd
 from morphotone.cable.assumptions import Assumptions
 from morphotone.commands.options import add_assumption_options, assumptions_of
 from morphotone.errors import MorphotoneError, ReadingError, ResultsError
-from morphotone.night.folder import Found, find_files
+from morphotone.night.folder import Found, find_files, written_name
 from morphotone.night.ledger import FILE as LEDGER
 from morphotone.night.progress import Progress, Silent, Step, progress_on
 from morphotone.night.results import atomic
@@ -113,7 +113,7 @@ def files_of(paths: Sequence[str | os.PathLike[str]]) -> Iterator[Found]:
             for file in find_files(path):
                 yield file if len(paths) == 1 else replace(file, name=f"{path.as_posix()}/{file.name}")
         elif path.exists():
-            yield Found(path, str(path), path.stat().st_size)
+            yield Found(path, written_name(path), path.stat().st_size)
         else:
             raise MorphotoneError(f"{path}: there is no such file or folder; check the spelling")
 

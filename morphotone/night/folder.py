@@ -4,15 +4,18 @@ from __future__ import annotations
 
 import os
 import stat
+import unicodedata
 from collections import deque
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from fnmatch import fnmatchcase
-from pathlib import Path
+from pathlib import Path, PurePath
 
 from morphotone.errors import MorphotoneError
 
 PATTERNS = ("*.swc", "*.swc.gz")
+_UNSEEN = frozenset({"Cc", "Cf", "Cs", "Co", "Cn", "Zl", "Zp"})  # Unicode's controls, formats and line ends
+_FORMULA = frozenset("=+-@")
 
 
 @dataclass(frozen=True)
@@ -66,9 +69,9 @@ def find_files(
     for path, error in _walk(top, exclude):
         if error is not None:
             sentence = f"this folder cannot be listed ({error.strerror}), so that what it holds is unknown"
-            found.append(Found(path, _name(path, top) + "/", 0, sentence))
+            found.append(Found(path, written_name(path.relative_to(top)) + "/", 0, sentence))
         elif any(fnmatchcase(path.name.lower(), pattern) for pattern in wanted):
-            found.append(_look_at(path, _name(path, top)))
+            found.append(_look_at(path, written_name(path.relative_to(top))))
         else:
             others += 1
     if not found:
@@ -112,9 +115,25 @@ def _walk(top: Path, exclude: str | os.PathLike[str] | None) -> Iterator[tuple[P
         yield from ((Path(error.filename), error) for error in errors)
 
 
-def _name(path: Path, top: Path) -> str:
-    r"""Path below the top as text that UTF-8 can hold; a byte that is no UTF-8 is written as \xNN."""
-    return os.fsencode(path.relative_to(top).as_posix()).decode("utf-8", "backslashreplace")
+def written_name(path: PurePath) -> str:
+    r"""Return a path as one line of text that every table can hold.
+
+    A byte that is no UTF-8 is written as \xNN. Written as \uNNNN: what breaks lines, hides or turns text, a
+    first character that has spreadsheets take the name for a formula, and the backslash itself, so that
+    no two names become one.
+    """
+    text = os.fsencode(path.as_posix()).decode("utf-8", "surrogateescape")
+    kept = [not (unicodedata.category(character) in _UNSEEN or character == "\\") for character in text]
+    if unicodedata.normalize("NFKC", text[0]) in _FORMULA:  # normalised: a full-width = is one too
+        kept[0] = False
+    return "".join(c if keep else _escaped(c) for c, keep in zip(text, kept, strict=True))
+
+
+def _escaped(character: str) -> str:
+    code = ord(character)
+    if 0xDC80 <= code <= 0xDCFF:  # what surrogateescape makes of a byte that is no UTF-8
+        return f"\\x{code - 0xDC00:02x}"
+    return f"\\u{code:04x}" if code <= 0xFFFF else f"\\U{code:08x}"
 
 
 def _look_at(path: Path, name: str) -> Found:

@@ -52,9 +52,40 @@ def test_other_patterns(tmp_path: Path) -> None:
 
 @no_links
 def test_odd_names_are_kept(tmp_path: Path) -> None:
-    odd = ["two words.swc", "no#1.swc", "new\nline.swc", "back\\slash.swc", '"quoted".swc', "=sum(a).swc"]
+    odd = ["two words.swc", "no#1.swc", '"quoted".swc', "a=b.swc", "ångström.swc", "sub/=x.swc"]
     lay(tmp_path, *odd)
     assert sorted(names(find_files(tmp_path))) == sorted(odd)
+
+
+@no_links
+@pytest.mark.parametrize(
+    ("given", "written"),
+    [
+        ("new\nline.swc", r"new\u000aline.swc"),
+        ("back\\slash.swc", r"back\u005cslash.swc"),
+        ("=sum(a).swc", r"\u003dsum(a).swc"),
+        ("+1.swc", r"\u002b1.swc"),
+        ("-1.swc", r"\u002d1.swc"),
+        ("@a.swc", r"\u0040a.swc"),
+        ("\tx.swc", r"\u0009x.swc"),
+        ("\uff1dx.swc", r"\uff1dx.swc"),
+        ("\u202ecws.a.swc", r"\u202ecws.a.swc"),
+        ("\u2028.swc", r"\u2028.swc"),
+        ("\U000e0041.swc", r"\U000e0041.swc"),
+        ("=sub/a.swc", r"\u003dsub/a.swc"),
+    ],
+)
+def test_a_name_is_one_line_that_no_spreadsheet_runs(tmp_path: Path, given: str, written: str) -> None:
+    lay(tmp_path, given)
+    (file,) = find_files(tmp_path)
+    assert file.name == written
+    assert file.path == tmp_path / given
+
+
+@no_links
+def test_escaped_names_stay_apart(tmp_path: Path) -> None:
+    lay(tmp_path, "=a.swc", r"\u003da.swc", r"\x3da.swc")
+    assert len(set(names(find_files(tmp_path)))) == 3
 
 
 @pytest.mark.skipif(sys.platform != "linux", reason="other systems refuse such names")
