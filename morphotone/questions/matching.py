@@ -28,15 +28,14 @@ def matched(
     files : sequence of (str, path)
         Name and place of each file found.
     """
-    whole, parts = _spellings(files)
     verdicts: dict[int, tuple[str, str]] = {}
     at = np.full(len(sites), -1)
-    for row, cell in enumerate(sites.cell.tolist()):
-        candidates = whole.get(cell) or parts.get(cell) or []
-        if len(candidates) == 1:
-            at[row] = candidates[0]
+    cells = sites.cell.tolist()
+    for row, (cell, possible) in enumerate(zip(cells, candidates(cells, files), strict=True)):
+        if len(possible) == 1:
+            at[row] = possible[0]
         else:
-            verdicts[row] = _verdict(cell, [files[index][0] for index in candidates])
+            verdicts[row] = _verdict(cell, [files[index][0] for index in possible])
     for row in _labelled_twice(at, sites):
         at[row] = -1
         verdicts[row] = (
@@ -48,6 +47,25 @@ def matched(
     away = np.flatnonzero(at < 0)
     reasons, sentences = ([verdicts[row][part] for row in away.tolist()] for part in (0, 1))
     return per_file, sites.at(away).turned_away(reasons, sentences)
+
+
+def candidates(cells: Sequence[str], files: Sequence[tuple[str, PurePath]]) -> list[list[int]]:
+    """Return for each cell's name the files it can stand for, by their index: one where all is well.
+
+    Parameters
+    ----------
+    cells : sequence of str
+        Names as read; see `matched` for how a cell may be named.
+    files : sequence of (str, path)
+        Name and place of each file.
+    """
+    whole, parts = _spellings(files)
+    return [whole.get(cell) or parts.get(cell) or [] for cell in cells]
+
+
+def several(names: Sequence[str]) -> str:
+    """Return the first few names for a sentence."""
+    return ", ".join(names[:_SHOWN]) + (", …" if len(names) > _SHOWN else "")
 
 
 def _spellings(files: Sequence[tuple[str, PurePath]]) -> tuple[dict[str, list[int]], dict[str, list[int]]]:
@@ -63,19 +81,18 @@ def _spellings(files: Sequence[tuple[str, PurePath]]) -> tuple[dict[str, list[in
     return whole, parts
 
 
-def _verdict(cell: str, candidates: Sequence[str]) -> tuple[str, str]:
+def _verdict(cell: str, possible: Sequence[str]) -> tuple[str, str]:
     """Return reason and sentence for a cell's name that does not stand for one file."""
-    if not candidates:
+    if not possible:
         return (
             "cell_unknown",
             f"read cell {cell!r}, expected the name of one of the files, with or without folder and ending; "
             "check the spelling, or give the folder that holds the file",
         )
-    shown = ", ".join(candidates[:_SHOWN]) + (", …" if len(candidates) > _SHOWN else "")
     return (
         "cell_ambiguous",
-        f"read cell {cell!r}, which can be any of {len(candidates)} files ({shown}), expected one; write "
-        "the folder too",
+        f"read cell {cell!r}, which can be any of {len(possible)} files ({several(possible)}), expected one; "
+        "write the folder too",
     )
 
 

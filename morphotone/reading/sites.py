@@ -2,9 +2,7 @@
 
 from __future__ import annotations
 
-import csv
 import hashlib
-import io
 import os
 from collections.abc import Sequence
 from dataclasses import dataclass, fields, replace
@@ -14,7 +12,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from morphotone.errors import ReadingError
-from morphotone.reading.diagnosis import quote
+from morphotone.reading.records import decoded, fitted, records, refuse_twice, shown
 from morphotone.reading.site_rows import (
     COORDINATES,
     KNOWN,
@@ -150,12 +148,12 @@ def parse_sites(data: bytes, file: str) -> SitesFile:
     -----
     Lines without any text between their commas are no rows.
     """
-    header, lines, records = _records(_decoded(data, file), file)
+    header, lines, found = records(decoded(data, file), file)
     _check_header(header, lines.pop(0), file)
     width = len(header)
-    rows = Rows(pd.DataFrame([_fitted(record, width) for record in records], columns=header, dtype=object))
+    rows = Rows(pd.DataFrame([fitted(record, width) for record in found], columns=header, dtype=object))
     rows.turn_away(
-        [i for i, record in enumerate(records) if any(field.strip() for field in record[width:])],
+        [i for i, record in enumerate(found) if any(field.strip() for field in record[width:])],
         "fields_extra",
         f"more than {width} fields",
         f"{width} as in the header; put quotation marks around text with commas",
@@ -195,62 +193,14 @@ def _sites(
     )
 
 
-def _decoded(data: bytes, file: str) -> str:
-    try:
-        return data.decode("utf-8-sig")
-    except UnicodeDecodeError as error:
-        line = data[: error.start].count(b"\n") + 1
-        raise ReadingError(
-            f"{file}: line {line}: read the byte {data[error.start]:#04x}, expected text in UTF-8; save the "
-            "table as CSV in UTF-8",
-            "not_utf8",
-        ) from error
-
-
-def _records(text: str, file: str) -> tuple[list[str], list[int], list[list[str]]]:
-    """Return the header's names, the lines on which header and rows start, and the rows' fields."""
-    reader = csv.reader(io.StringIO(text, newline=""), strict=True)
-    lines, records, starts = [], [], 1
-    try:
-        for record in reader:
-            if any(field.strip() for field in record):
-                lines.append(starts)
-                records.append(record)
-            starts = reader.line_num + 1
-    except csv.Error as error:
-        raise ReadingError(
-            f"{file}: line {starts}: read fields that cannot be told apart ({error}), expected quotation "
-            'marks in pairs around a field, "" for one inside it; mend the line',
-            "quotes",
-        ) from error
-    if not records:
-        raise ReadingError(f"{file}: read no line with text, expected a header and rows", "empty")
-    header = [name.strip() for name in records[0]]
-    while header and not header[-1]:
-        header.pop()
-    return header, lines, records[1:]
-
-
 def _check_header(header: list[str], line: int, file: str) -> None:
-    shown = quote(",".join(header).encode())
     missing = [name for name in ("cell", "site") if name not in header]
     given = any(set(columns) <= set(header) for columns in NEEDED.values())
     if missing or not given:
         expected = "cell, site, and sample, or x_um, y_um and z_um, or branch and along_um"
         raise ReadingError(
-            f"{file}: line {line}: read the columns {shown!r}, expected {expected}, separated by commas; "
-            "name the columns so in the first line with text",
+            f"{file}: line {line}: read the columns {shown(header)!r}, expected {expected}, separated by "
+            "commas; name the columns so in the first line with text",
             "columns_missing",
         )
-    twice = [name or "without a name" for name in dict.fromkeys(header) if header.count(name) > 1 or not name]
-    if twice:
-        raise ReadingError(
-            f"{file}: line {line}: read the columns {shown!r}, expected each under a name of its own; rename "
-            f"the column {twice[0]}",
-            "columns_twice",
-        )
-
-
-def _fitted(record: list[str], width: int) -> list[str]:
-    """Return as many fields as the header has; a short row ends in empty ones."""
-    return record[:width] + [""] * (width - len(record))
+    refuse_twice(header, line, file)
