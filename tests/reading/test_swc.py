@@ -267,6 +267,16 @@ def test_what_grows_too_large_when_decompressed_is_unreadable(monkeypatch):
     assert caught.value.reason == "unreadable"
 
 
+def test_a_bomb_is_not_blown_up():
+    bomb = gzip.compress(b"\n" * 50_000_000)
+    assert len(bomb) < 100_000
+    with pytest.raises(
+        ReadingError, match="it decompresses to more than 10,000,000 bytes, which no"
+    ) as caught:
+        parse(bomb, "a.swc.gz")
+    assert caught.value.reason == "unreadable"
+
+
 def test_bytes_are_read_as_they_are(tmp_path):
     path = tmp_path / "cell # 7.SWC"
     path.write_bytes(PLAIN)
