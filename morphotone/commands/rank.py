@@ -21,7 +21,7 @@ from morphotone.night.folder import Found
 from morphotone.night.ledger import FILE as LEDGER
 from morphotone.night.progress import Progress, Silent, Step, progress_on
 from morphotone.night.record import record_of, write_record
-from morphotone.night.results import atomic
+from morphotone.night.results import atomic, atomic_bytes
 from morphotone.questions.collected import Ranking, collected
 from morphotone.questions.matching import matched
 from morphotone.questions.placing import FARTHEST_UM
@@ -38,7 +38,7 @@ from morphotone.questions.synapses import with_course, with_synapse
 from morphotone.reading.sites import Sites, read_sites
 from morphotone.reading.swc import read_bytes
 from morphotone.showing.pairs import pairs_file
-from morphotone.showing.tables import LINE_END
+from morphotone.showing.tables import csv_table
 
 Paths = str | os.PathLike[str] | Sequence[str | os.PathLike[str]]
 
@@ -379,5 +379,5 @@ def _write(ranking: Ranking, into: Path) -> None:
     for field in fields(Ranking):
         table = getattr(ranking, field.name)
         if isinstance(table, pd.DataFrame):
-            with atomic(into / f"{names.get(field.name, field.name)}.csv") as stream:
-                table.to_csv(stream, index=False, lineterminator=LINE_END)
+            with atomic_bytes(into / f"{names.get(field.name, field.name)}.csv") as stream:
+                stream.write(csv_table(table))

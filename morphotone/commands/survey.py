@@ -215,9 +215,9 @@ def _is_known(content: bytes | ReadingError, sha256: str | None) -> bool:
     return sha256 is not None and isinstance(content, bytes) and hashlib.sha256(content).hexdigest() == sha256
 
 
-def _parts(given: Sequence[Answer]) -> dict[str, dict[str, str]]:
+def _parts(given: Sequence[Answer]) -> dict[str, dict[str, bytes]]:
     """Return per file its CSV lines for each table."""
-    parts: dict[str, dict[str, str]] = {answer.name: {} for answer in given}
+    parts: dict[str, dict[str, bytes]] = {answer.name: {} for answer in given}
     tables: dict[str, list[tuple[Answer, Columns | None]]] = {
         "cells": [(answer, _one_row(answer.cell)) for answer in given],
         "branches": [(answer, answer.branches) for answer in given],
@@ -236,7 +236,7 @@ def _one_row(row: dict[str, Any] | None) -> Columns | None:
     return None if row is None else {name: [value] for name, value in row.items()}
 
 
-def _outcome(answer: Answer, parts: dict[str, str]) -> Outcome:
+def _outcome(answer: Answer, parts: dict[str, bytes]) -> Outcome:
     status: Status = "turned away" if answer.reason else "analysed"
     return Outcome(answer.name, status, answer.sha256, answer.samples, parts, answer.reason, answer.sentence)
 

@@ -18,7 +18,7 @@ from morphotone.errors import MorphotoneError, ReadingError, ResultsError
 from morphotone.night.folder import Found, find_files, written_name
 from morphotone.night.ledger import FILE as LEDGER
 from morphotone.night.progress import Progress, Silent, Step, progress_on
-from morphotone.night.results import atomic
+from morphotone.night.results import atomic_bytes
 from morphotone.questions.columns import Columns
 from morphotone.questions.survey import cell_name
 from morphotone.questions.trust import findings_table
@@ -26,6 +26,7 @@ from morphotone.reading.findings import CATALOGUE
 from morphotone.reading.reconstruction import reconstruct
 from morphotone.reading.swc import read_bytes
 from morphotone.reading.vetting import vet_reconstruction
+from morphotone.showing.tables import csv_table
 
 NAME = "vet"
 NOT_READ = "not read"
@@ -183,8 +184,8 @@ def run(args: argparse.Namespace) -> int:
                 f"{args.into} holds a survey, whose findings.csv would be lost; choose another --into"
             )
         for name, table in (("findings", trust.findings), ("grades", trust.files)):
-            with atomic(args.into / f"{name}.csv") as stream:
-                table.to_csv(stream, index=False, lineterminator="\r\n")
+            with atomic_bytes(args.into / f"{name}.csv") as stream:
+                stream.write(csv_table(table))
     return int(trust.files["grade"].isin(["unfit", NOT_READ]).any())
 
 

@@ -21,7 +21,7 @@ from morphotone.errors import ResultsError
 from morphotone.night.outcome import Outcome
 
 FILE = "ledger.sqlite"
-VERSION = 1  # of the tables below; a ledger with another one is refused
+VERSION = 2  # of the tables below; a ledger with another one is refused
 
 _TABLES = """
 create table if not exists meta(key text primary key, value text not null);
@@ -29,7 +29,7 @@ create table if not exists outcomes(
     name text primary key, status text not null, sha256 text not null, samples integer not null,
     finished_at text not null);
 create table if not exists parts(
-    name text not null, table_name text not null, text text not null, primary key (name, table_name));
+    name text not null, table_name text not null, text blob not null, primary key (name, table_name));
 """
 
 _WAYS_OUT = {
@@ -117,7 +117,7 @@ class Ledger:
         with self._said_plainly(), self._connection:
             self._delete(names)
 
-    def rows(self, table: str, names: Iterable[str]) -> Iterator[tuple[str, str]]:
+    def rows(self, table: str, names: Iterable[str]) -> Iterator[tuple[str, bytes]]:
         """Yield name and CSV lines of one table, in the order of `names`; those without are left out."""
         query = "select text from parts where name = ? and table_name = ?"
         for name in names:

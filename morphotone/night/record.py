@@ -16,7 +16,7 @@ from morphotone.night.ledger import Ledger
 from morphotone.night.results import atomic
 from morphotone.night.runner import Tally
 
-PACKAGES = ("morphotone", "numpy", "scipy", "pandas", "joblib")
+PACKAGES = ("morphotone", "numpy", "scipy", "pandas", "orjson", "joblib")
 
 
 def run_record(

@@ -81,7 +81,7 @@ def export(ledger: Ledger, names: Sequence[str], tables: Mapping[str, str]) -> N
     """
     with ExitStack() as unfinished:
         for table, header in tables.items():
-            stream = unfinished.enter_context(atomic(ledger.folder / f"{table}.csv"))
+            stream = unfinished.enter_context(atomic_bytes(ledger.folder / f"{table}.csv"))
             _write(stream, header, (text for _, text in ledger.rows(table, names)))
 
 
@@ -105,7 +105,7 @@ def export_each(ledger: Ledger, names: Sequence[str], table: str, header: str) -
     places = {name: folder / f"{file}.csv" for name, file in file_names(ledger.known()).items()}
     written = set()
     for name, text in ledger.rows(table, names):
-        with atomic(places[name]) as stream:
+        with atomic_bytes(places[name]) as stream:
             _write(stream, header, [text])
         written.add(places[name])
     for name in places:
@@ -132,8 +132,8 @@ def file_names(names: Iterable[str]) -> dict[str, str]:
     return {name: file if often[file.casefold()] == 1 else _marked_file(name) for name, file in plain.items()}
 
 
-def _write(stream: TextIO, header: str, texts: Iterable[str]) -> None:
-    stream.write(header + LINE_END)
+def _write(stream: BinaryIO, header: str, texts: Iterable[bytes]) -> None:
+    stream.write((header + LINE_END).encode())
     stream.writelines(texts)
 
 

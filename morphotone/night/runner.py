@@ -272,7 +272,7 @@ def _refuse(entries: Mapping[str, Entry], ledger: Ledger) -> None:
     names = [name for name, entry in entries.items() if entry.status == "turned away"]
     for _, row in ledger.rows(TURNED_AWAY, names):
         raise TurnedAwayError(
-            f"stopped at the first file turned away (file, reason, sentence): {row.strip()}"
+            f"stopped at the first file turned away (file, reason, sentence): {row.decode().strip()}"
         )
 
 

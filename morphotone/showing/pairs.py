@@ -3,16 +3,16 @@
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
-from typing import TextIO
+from typing import BinaryIO
 from zipfile import ZipFile
 
 import numpy as np
-import pandas as pd
 
-from morphotone.night.results import atomic, atomic_bytes
+from morphotone.night.outcome import csv_line
+from morphotone.night.results import atomic_bytes
 from morphotone.questions.pair_table import Pairs
 from morphotone.questions.survey import cell_name
-from morphotone.showing.tables import LINE_END
+from morphotone.showing.tables import csv_texts
 
 #: Takes a file's name and its pairs.
 Writer = Callable[[str, Pairs], None]
@@ -22,19 +22,21 @@ Writer = Callable[[str, Pairs], None]
 def pairs_file(into: Path, kind: str) -> Iterator[Writer]:
     """Open ``pairs.csv`` (kind "csv") or ``pairs.npz`` ("npy"), which takes its place when all is written."""
     if kind == "csv":
-        with atomic(into / "pairs.csv") as stream:
+        with atomic_bytes(into / "pairs.csv") as stream:
             yield _rows_to(stream)
     else:
-        with atomic_bytes(into / "pairs.npz") as binary, ZipFile(binary, "w") as archive:
+        with atomic_bytes(into / "pairs.npz") as stream, ZipFile(stream, "w") as archive:
             yield _arrays_to(archive)
 
 
-def _rows_to(stream: TextIO) -> Writer:
+def _rows_to(stream: BinaryIO) -> Writer:
     """Return what writes one row per pair, the header before the first."""
 
     def write(file: str, pairs: Pairs) -> None:
-        rows = pd.DataFrame({"file": file, "cell": cell_name(file)} | pairs.table())
-        rows.to_csv(stream, index=False, header=not stream.tell(), lineterminator=LINE_END)
+        table = pairs.table()
+        if not stream.tell():
+            stream.write(csv_line("file", "cell", *table).encode())
+        stream.writelines(csv_texts([table], [[file, cell_name(file)]]))
 
     return write
 

@@ -11,7 +11,7 @@ import time
 from dataclasses import replace
 from pathlib import Path
 
-from morphotone.night.outcome import LINE_END, Item, Outcome, csv_line
+from morphotone.night.outcome import Item, Outcome, csv_line
 
 TABLES = {"roots": "file,number,root", "turned_away": "file,reason,sentence"}
 
@@ -29,9 +29,9 @@ def root_of(item: Item) -> Outcome:
             sha256,
             len(numbers),
             reason="negative",
-            sentence=f"{min(numbers)} has no root",
+            sentence=f"no root of {min(numbers)}",
         )
-    text = "".join(csv_line(item.name, repr(number), repr(number**0.5)) for number in numbers)
+    text = "".join(csv_line(item.name, repr(number), repr(number**0.5)) for number in numbers).encode()
     return Outcome(item.name, "analysed", sha256, len(numbers), {"roots": text})
 
 
@@ -80,7 +80,7 @@ def roots_slow(batch: list[Item], diary: Path) -> list[Outcome]:
 
 def roots_large(batch: list[Item]) -> list[Outcome]:
     """Hand back more than a pipe holds, so that a worker waits for someone to take it."""
-    return [replace(out, parts={**out.parts, "ballast": "0\r\n" * 1_000_000}) for out in roots(batch)]
+    return [replace(out, parts={**out.parts, "ballast": b"0\r\n" * 1_000_000}) for out in roots(batch)]
 
 
 def roots_forgetful(batch: list[Item]) -> list[Outcome]:
@@ -95,10 +95,13 @@ def roots_unfounded(batch: list[Item]) -> list[Outcome]:
 
 def roots_unended(batch: list[Item]) -> list[Outcome]:
     """Leave out the line end."""
-    return [Outcome(item.name, "analysed", "", 1, {"roots": "1,1" + LINE_END[1]}) for item in batch]
+    return [Outcome(item.name, "analysed", "", 1, {"roots": b"1,1\n"}) for item in batch]
 
 
 def roots_with_threads(batch: list[Item]) -> list[Outcome]:
     """Tell what the worker's environment allows the linear algebra."""
     text = os.environ.get("OPENBLAS_NUM_THREADS", "any")
-    return [Outcome(item.name, "analysed", "", 1, {"roots": csv_line(item.name, text, "")}) for item in batch]
+    return [
+        Outcome(item.name, "analysed", "", 1, {"roots": csv_line(item.name, text, "").encode()})
+        for item in batch
+    ]

@@ -16,25 +16,25 @@ from morphotone.night.outcome import Outcome
 CONDITIONS = {"R_m_ohm_cm2": 20000.0, "hz": (0, 100), "axon": {"kept": True}}
 
 
-def outcome(name: str, text: str = "1\r\n", **changes: object) -> Outcome:
+def outcome(name: str, text: bytes = b"1\r\n", **changes: object) -> Outcome:
     values = {"status": "analysed", "sha256": f"hash of {name}", "samples": 3, "parts": {"cells": text}}
     return Outcome(name, **{**values, **changes})  # type: ignore[arg-type]
 
 
 def test_what_was_recorded_is_there_when_the_ledger_is_opened_again(tmp_path: Path) -> None:
     with Ledger(tmp_path / "new" / "results", CONDITIONS) as ledger:
-        ledger.record([outcome("b"), outcome("a", "2,3\r\n4,5\r\n")])
+        ledger.record([outcome("b"), outcome("a", b"2,3\r\n4,5\r\n")])
     with Ledger(tmp_path / "new" / "results", CONDITIONS) as ledger:
         assert ledger.known() == {
             "a": Entry("analysed", "hash of a", 3),
             "b": Entry("analysed", "hash of b", 3),
         }
-        assert list(ledger.rows("cells", ["a", "b"])) == [("a", "2,3\r\n4,5\r\n"), ("b", "1\r\n")]
+        assert list(ledger.rows("cells", ["a", "b"])) == [("a", b"2,3\r\n4,5\r\n"), ("b", b"1\r\n")]
 
 
 def test_rows_come_in_the_order_asked_for(tmp_path: Path) -> None:
     with Ledger(tmp_path, {}) as ledger:
-        ledger.record([outcome(name, f"{name}\r\n") for name in "abc"])
+        ledger.record([outcome(name, b"1\r\n") for name in "abc"])
         assert [name for name, _ in ledger.rows("cells", ["c", "nobody", "a"])] == ["c", "a"]
         assert list(ledger.rows("branches", ["a"])) == []
 
@@ -45,7 +45,7 @@ def test_a_new_outcome_takes_the_place_of_all_of_the_old_one(tmp_path: Path) -> 
         ledger.record([outcome("a", status="turned away", parts={}, reason="r", sentence="s, t")])
         assert ledger.known()["a"].status == "turned away"
         assert list(ledger.rows("cells", ["a"])) == []
-        assert list(ledger.rows("turned_away", ["a"])) == [("a", 'a,r,"s, t"\r\n')]
+        assert list(ledger.rows("turned_away", ["a"])) == [("a", b'a,r,"s, t"\r\n')]
 
 
 def test_forgetting(tmp_path: Path) -> None:
@@ -60,9 +60,9 @@ def test_a_batch_is_entered_whole_or_not_at_all(tmp_path: Path) -> None:
     with Ledger(tmp_path, {}) as ledger:
         ledger.record([outcome("a")])
         with pytest.raises(sqlite3.IntegrityError, match="UNIQUE"):
-            ledger.record([outcome("a", "new\r\n"), outcome("b"), outcome("b")])
+            ledger.record([outcome("a", b"new\r\n"), outcome("b"), outcome("b")])
         assert list(ledger.known()) == ["a"]
-        assert list(ledger.rows("cells", ["a", "b"])) == [("a", "1\r\n")]
+        assert list(ledger.rows("cells", ["a", "b"])) == [("a", b"1\r\n")]
 
 
 def test_other_conditions_are_refused_with_their_differences(tmp_path: Path) -> None:
@@ -93,7 +93,7 @@ def test_another_version_of_the_ledger_is_refused(tmp_path: Path) -> None:
     with connection:
         connection.execute("update meta set value = '0' where key = 'version'")
     connection.close()
-    with pytest.raises(ResultsError, match="conditions: the ledger's version was 0, is 1; choose"):
+    with pytest.raises(ResultsError, match="conditions: the ledger's version was 0, is 2; choose"):
         Ledger(tmp_path, CONDITIONS)
 
 
@@ -112,7 +112,7 @@ from pathlib import Path
 from morphotone.night.ledger import Ledger
 from morphotone.night.outcome import Outcome
 ledger = Ledger(Path(sys.argv[1]), {})
-ledger.record([Outcome("a", "analysed", "hash", 1, {"cells": "1\\r\\n"})])
+ledger.record([Outcome("a", "analysed", "hash", 1, {"cells": b"1\\r\\n"})])
 print("open", flush=True)
 time.sleep(60)
 """
@@ -128,7 +128,7 @@ def test_a_killed_process_leaves_its_rows_and_no_lock(tmp_path: Path) -> None:
             Ledger(tmp_path, {})
         os.kill(holder.pid, signal.SIGKILL)
     with Ledger(tmp_path, {}) as ledger:
-        assert list(ledger.rows("cells", ["a"])) == [("a", "1\r\n")]
+        assert list(ledger.rows("cells", ["a"])) == [("a", b"1\r\n")]
 
 
 def test_a_folder_with_tables_of_somebody_else_is_refused(tmp_path: Path) -> None:
@@ -162,5 +162,5 @@ def test_a_full_disk_is_said_plainly_and_costs_only_the_batch(tmp_path: Path) ->
         pages = ledger._connection.execute("pragma page_count").fetchone()[0]
         ledger._connection.execute(f"pragma max_page_count = {pages}")
         with pytest.raises(ResultsError, match=r"the disk is full; make room and start again"):
-            ledger.record([outcome("b", "x" * 100_000 + "\r\n")])
+            ledger.record([outcome("b", b"x" * 100_000 + b"\r\n")])
         assert list(ledger.known()) == ["a"]

@@ -18,7 +18,7 @@ from morphotone.night.results import atomic, atomic_bytes, export, export_each, 
 
 def fill(ledger: Ledger, *names: str) -> None:
     ledger.record(
-        [Outcome(name, "analysed", "hash", 1, {"cells": csv_line(name, "1")}) for name in names],
+        [Outcome(name, "analysed", "hash", 1, {"cells": csv_line(name, "1").encode()}) for name in names],
     )
 
 

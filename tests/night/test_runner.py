@@ -76,7 +76,7 @@ def test_every_file_is_accounted_for(found: Callable[[], list[Found]], tmp_path:
     table = pd.read_csv(tmp_path / "out" / "roots.csv")
     assert list(table["file"].unique()) == [file.name for file in found() if file.name != "b/07.swc"]
     assert (table["root"] == table["number"] ** 0.5).all()
-    assert turned_away(tmp_path / "out") == {"b/07.swc": "negative: -1.0 has no root"}
+    assert turned_away(tmp_path / "out") == {"b/07.swc": "negative: no root of -1.0"}
 
 
 def test_the_same_bytes_for_any_number_of_workers(found: Callable[[], list[Found]], tmp_path: Path) -> None:
@@ -135,7 +135,7 @@ def test_a_fault_of_the_program_costs_one_file(
     [
         (roots.roots_forgetful, r"RuntimeError: outcomes are for \[\], expected \['a/00.swc'\]"),
         (roots.roots_unfounded, r"RuntimeError: a/00.swc is called unchanged, but its hash is not the known"),
-        (roots.roots_unended, r"ValueError: a/00.swc: part 'roots' ends with '1\\n'"),
+        (roots.roots_unended, r"ValueError: a/00.swc: part 'roots' ends with b'1\\n'"),
     ],
 )
 def test_a_function_that_breaks_its_word_loses_nothing_in_silence(
@@ -182,7 +182,7 @@ def test_a_worker_has_one_thread_of_linear_algebra(found: Callable[[], list[Foun
 def test_strict_stops_at_the_first_file_turned_away(
     found: Callable[[], list[Found]], tmp_path: Path, workers: int
 ) -> None:
-    expected = r"stopped at the first file turned away .*: b/07\.swc,negative,-1\.0 has no root"
+    expected = r"stopped at the first file turned away .*: b/07\.swc,negative,no root of -1\.0"
     # the second time, when the ledger knows the file already, all the same
     for _ in range(2):
         with pytest.raises(MorphotoneError, match=expected):
