@@ -129,18 +129,19 @@ def _frustum_lengths(position: Real, radius: Real, parent: Index, soma: Soma) ->
     in_soma = np.zeros(len(parent), bool)
     in_soma[soma.members] = True
     stem = in_soma[parent] & (parent >= 0) & ~in_soma
+    stems = np.flatnonzero(stem)
     if soma.rule in SPHERES:
-        surface = np.linalg.norm(position - soma.centre, axis=1) - soma.radius
+        surface = np.linalg.norm(position[stems] - soma.centre, axis=1) - soma.radius
     else:
-        surface = length - radius[parent]
-    length = np.where(stem, np.maximum(surface, 0.0), length)
+        surface = length[stems] - radius[parent[stems]]
+    length[stems] = np.maximum(surface, 0.0)
     length[in_soma] = 0.0
     return stem, length
 
 
 def step_lengths(position: Real, parent: Index) -> Real:
     """Return the distance of each sample from its parent, µm, 0 at roots."""
-    steps = position - position[parent]
+    steps = position - position.take(parent, axis=0)  # a root's parent -1 gives any row
     steps[parent < 0] = 0.0
     lengths: Real = np.sqrt(np.einsum("ij,ij->i", steps, steps))
     return lengths

@@ -154,7 +154,9 @@ def prepare(name: str, content: bytes | ReadingError, request: Request) -> Prepa
         return Answer(name, "", 0, nothing, reason=content.reason, sentence=str(content))
     sha256 = hashlib.sha256(content).hexdigest()
     try:
-        rec = reconstruct(content, file=name, cell=cell_name(name), unit_um=assumptions.unit_um)
+        rec = reconstruct(
+            content, file=name, cell=cell_name(name), unit_um=assumptions.unit_um, sha256=sha256
+        )
     except ReadingError as error:
         return Answer(name, sha256, 0, nothing, reason=error.reason, sentence=str(error))
     vetting = _in_view_of(assumptions, vet_reconstruction(rec, assumptions.thresholds))

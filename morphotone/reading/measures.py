@@ -35,40 +35,55 @@ class Tally:
 
     Attributes
     ----------
-    radius : (k,) float64, ascending, um
-    count : (k,) int64
+    ordered : (m,) float64
+        The positive radii of the samples, ascending, um.
     """
 
-    radius: Floats
-    count: Integers
+    ordered: Floats
 
     @property
     def total(self) -> int:
         """Number of samples tallied."""
-        return int(self.count.sum())
+        return len(self.ordered)
+
+    @cached_property
+    def starts(self) -> Integers:
+        """Where in `ordered` each of the k different radii first stands, shape (k,)."""
+        return np.flatnonzero(np.diff(self.ordered, prepend=0.0))
 
     @property
-    def commonest(self) -> tuple[float, float]:
-        """The radius that occurs most often (um), and its share of the samples; zeros for none."""
-        if not len(self.count):
-            return 0.0, 0.0
+    def radius(self) -> Floats:
+        """The different radii, shape (k,), ascending, um."""
+        return self.ordered[self.starts]
+
+    @cached_property
+    def count(self) -> Integers:
+        """How often each of the different radii occurs, shape (k,)."""
+        return np.diff(self.starts, append=self.total)
+
+    @cached_property
+    def commonest(self) -> tuple[float, int]:
+        """The radius that occurs most often (um), the least of several; and how often. Zeros for none."""
+        if not self.total:
+            return 0.0, 0
         best = int(self.count.argmax())
-        return float(self.radius[best]), float(self.count[best] / self.count.sum())
+        return float(self.ordered[self.starts[best]]), int(self.count[best])
+
+    @property
+    def share(self) -> float:
+        """Share of the samples that have the commonest radius; 0 for none."""
+        return self.commonest[1] / max(self.total, 1)
 
     @property
     def median(self) -> float:
         """The (lower) median radius, um; 0 for none."""
-        if not len(self.count):
-            return 0.0
-        ranks = self.count.cumsum()
-        return float(self.radius[np.searchsorted(ranks, (ranks[-1] + 1) // 2)])
+        return float(self.ordered[(self.total - 1) // 2]) if self.total else 0.0
 
 
 def tally(radius: Floats) -> Tally:
     """Count the positive values of an array of radii, shape (n,), um."""
-    ordered = np.sort(radius[radius > 0])
-    starts = np.flatnonzero(np.diff(ordered, prepend=-np.inf))
-    return Tally(ordered[starts], np.diff(starts, append=len(ordered)))
+    ordered = np.sort(radius)
+    return Tally(ordered[np.searchsorted(ordered, 0.0, "right") :])
 
 
 @dataclass(frozen=True)
@@ -129,9 +144,14 @@ class Measures:
         return np.ascontiguousarray(self.rec.position.T)
 
     @cached_property
+    def leg(self) -> Floats:
+        """Vector from the parent, shape (3, n), um; zero at a root."""
+        return self.axes - self.axes.take(self.parent, axis=1)
+
+    @cached_property
     def distance(self) -> Floats:
         """Straight distance to the parent, um; zero at a root."""
-        x, y, z = self.axes - self.axes[:, self.parent]
+        x, y, z = self.leg
         distance: Floats = np.sqrt(x * x + y * y + z * z)
         return distance
 
@@ -159,10 +179,20 @@ class Measures:
         return int(np.count_nonzero(self.neurite & (self.children == 0)))
 
     @cached_property
+    def moved(self) -> Mask:
+        """Whether a step within a neurite ends at the sample that is not zero."""
+        moved: Mask = self.inner & (self.distance > 0)
+        return moved
+
+    @cached_property
+    def step_count(self) -> int:
+        """Number of `steps`, m."""
+        return int(np.count_nonzero(self.moved))
+
+    @cached_property
     def steps(self) -> Floats:
         """Lengths of the steps within neurites that are not zero, shape (m,), um."""
-        lengths = self.distance[self.inner]
-        return lengths[lengths > 0]
+        return self.distance[self.moved]
 
     @cached_property
     def median_step(self) -> float:
@@ -198,11 +228,7 @@ class Measures:
     @cached_property
     def neurite_radii(self) -> Tally:
         """Radii of all neurites."""
-        radius = np.concatenate((self.axon_radii.radius, self.dendrite_radii.radius))
-        merged, place = np.unique(radius, return_inverse=True)
-        count = np.zeros(len(merged), dtype=np.int64)
-        np.add.at(count, place, np.concatenate((self.axon_radii.count, self.dendrite_radii.count)))
-        return Tally(merged, count)
+        return tally(self.rec.radius[self.neurite])
 
     def first(self, mask: Mask) -> Place:
         """Return the place, in the order of the file, of the first of the samples that a mask (n,) marks."""

@@ -46,12 +46,12 @@ def unusable_severity(share: float, limits: Thresholds) -> Severity:
 def constant(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
     """Yield radius_constant: unfit in a branched tracing of some size, doubtful in less."""
     radii = measures.neurite_radii
-    radius, share = radii.commonest
     if not _is_constant(measures, limits):
         return
+    radius, _ = radii.commonest
     place = measures.first(measures.neurite & (measures.rec.radius == radius))
     tracing = radii.total > limits.constant_samples and measures.traced(limits)
-    which = "All" if share == 1 else f"{place.count:,} of"
+    which = "All" if radii.share == 1 else f"{place.count:,} of"
     yield Finding(
         "radius_constant",
         f"{which} {counted(radii.total, 'neurite sample')} have the same radius, {number(radius)} µm "
@@ -65,7 +65,8 @@ def constant(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
 
 def placeholder(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
     """Yield radius_placeholder: one radius for nearly all of the axon, or of the other neurites."""
-    if _is_constant(measures, limits):
+    most = measures.neurite_radii.commonest[1]  # so many at least must be a group's share of its samples
+    if most / max(limits.placeholder_samples, 1) < limits.placeholder_share or _is_constant(measures, limits):
         return
     marked: Mask = np.zeros(len(measures.soma), dtype=bool)
     seen = []
@@ -74,10 +75,10 @@ def placeholder(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
         ("dendrite", measures.neurite & ~measures.axon, measures.dendrite_radii),
     )
     for name, group, radii in groups:
-        radius, share = radii.commonest
-        if radii.total >= limits.placeholder_samples and share >= limits.placeholder_share:
+        if radii.total >= limits.placeholder_samples and radii.share >= limits.placeholder_share:
+            radius, _ = radii.commonest
             marked |= group & (measures.rec.radius == radius)
-            seen.append(f"{percent(share)} of the {name}'s samples have radius {number(radius)} µm")
+            seen.append(f"{percent(radii.share)} of the {name}'s samples have radius {number(radius)} µm")
     if not seen:
         return
     place, weight = measures.first(marked), measures.membrane_share(marked)
@@ -159,4 +160,4 @@ def jumps(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
 def _is_constant(measures: Measures, limits: Thresholds) -> bool:
     """Whether one radius holds nearly everywhere in a file large enough to tell."""
     radii = measures.neurite_radii
-    return radii.total >= limits.few_samples and radii.commonest[1] >= limits.constant_share
+    return radii.total >= limits.few_samples and radii.share >= limits.constant_share

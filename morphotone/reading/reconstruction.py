@@ -74,7 +74,9 @@ def read(path: str | os.PathLike[str], *, unit_um: float = 1.0, cell: str | None
     return reconstruct(read_bytes(path), file=os.fspath(path), cell=cell, unit_um=unit_um)
 
 
-def reconstruct(data: bytes, *, file: str, cell: str, unit_um: float = 1.0) -> Reconstruction:
+def reconstruct(
+    data: bytes, *, file: str, cell: str, unit_um: float = 1.0, sha256: str | None = None
+) -> Reconstruction:
     """Build a reconstruction from the bytes of an SWC file.
 
     Parameters
@@ -85,6 +87,8 @@ def reconstruct(data: bytes, *, file: str, cell: str, unit_um: float = 1.0) -> R
         Names of the file (for messages) and of the cell.
     unit_um : float, optional
         Length of the file's unit in um; positions and radii are multiplied with it.
+    sha256 : str, optional
+        Of the data, hexadecimal, where it is known already.
 
     Returns
     -------
@@ -103,7 +107,7 @@ def reconstruct(data: bytes, *, file: str, cell: str, unit_um: float = 1.0) -> R
     return Reconstruction(
         cell=cell,
         file=file,
-        sha256=hashlib.sha256(data).hexdigest(),
+        sha256=hashlib.sha256(data).hexdigest() if sha256 is None else sha256,
         number=table.number[order],
         kind=table.kind[order],
         position=table.position[order] * unit_um,
@@ -169,6 +173,8 @@ def trees(parent: NDArray[np.int64]) -> NDArray[np.int64]:
         Number of each sample's piece, from 0.
     """
     root = parent < 0
+    if np.count_nonzero(root) == 1:
+        return np.zeros(len(parent), dtype=np.int64)
     top = np.where(root, np.arange(len(parent)), parent)
     while not root[top].all():
         top = top[top]

@@ -4,10 +4,9 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
 from morphotone.reading.findings import Finding, Severity
-from morphotone.reading.measures import Floats, Measures
+from morphotone.reading.measures import Floats, Integers, Mask, Measures
 from morphotone.reading.thresholds import Thresholds
 from morphotone.reading.wording import counted, number, percent
 
@@ -29,28 +28,21 @@ def unit(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
 
 def _absurd_sizes(measures: Measures, limits: Thresholds) -> list[str]:
     """Describe what is too large or too small for any neuron, one phrase each."""
-    step, radii, largest = measures.median_step, measures.neurite_radii, float(measures.rec.radius.max())
-    traced = measures.traced(limits)
-    wide = measures.extent.max() > limits.unit_extent_um
-    many_steps = len(measures.steps) >= limits.few_samples
-    many_radii = radii.total >= limits.few_samples
-    half = "half of the neurite samples have a radius of"
-    phrases = (
-        (
-            wide and traced and many_steps and step > limits.unit_step_um,
-            f"half of all steps are longer than {number(step)} µm",
-        ),
-        (wide and largest > limits.unit_largest_radius_um, f"the largest radius is {number(largest)} µm"),
-        (
-            traced and many_radii and radii.median > limits.unit_typical_radius_um,
-            f"{half} {number(radii.median)} µm or more",
-        ),
-        (
-            many_radii and radii.median < limits.unit_thinnest_radius_um,
-            f"{half} {number(radii.median)} µm or less",
-        ),
-    )
-    return [phrase for seen, phrase in phrases if seen]
+    radii, median, phrases = measures.neurite_radii, measures.neurite_radii.median, []
+    if measures.extent.max() > limits.unit_extent_um:
+        many, step = measures.step_count >= limits.few_samples, measures.median_step
+        if many and step > limits.unit_step_um and measures.traced(limits):
+            phrases.append(f"half of all steps are longer than {number(step)} µm")
+        largest = float(measures.rec.radius.max())
+        if largest > limits.unit_largest_radius_um:
+            phrases.append(f"the largest radius is {number(largest)} µm")
+    if radii.total >= limits.few_samples:
+        half = f"half of the neurite samples have a radius of {number(median)} µm or"
+        if median > limits.unit_typical_radius_um and measures.traced(limits):
+            phrases.append(f"{half} more")
+        if median < limits.unit_thinnest_radius_um:
+            phrases.append(f"{half} less")
+    return phrases
 
 
 def pieces(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
@@ -126,7 +118,7 @@ def coincident(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
 
 def long_steps(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
     """Yield step_long: steps that stand out of the file's own."""
-    if len(measures.steps) < limits.few_samples:
+    if measures.step_count < limits.few_samples or measures.distance.max() <= limits.step_least_um:
         return
     limit = max(limits.step_ratio * measures.median_step, limits.step_least_um)
     mask = measures.inner & (measures.distance > limit)
@@ -160,50 +152,66 @@ def flat(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
 
 def depth_zigzag(measures: Measures, limits: Thresholds) -> Iterator[Finding]:
     """Yield depth_zigzag: paths that turn back steeply in z far more often than in x and y."""
-    if len(measures.steps) < limits.zigzag_samples:
+    if measures.step_count < limits.zigzag_samples:
         return
-    turns = (_turning_back(measures, stride) for stride in (1, limits.zigzag_stride))
-    worst = max(turns, key=lambda turn: turn.deep)
-    if worst.deep >= limits.zigzag_share and worst.deep >= limits.zigzag_ratio * worst.lateral:
+    paths = [_paths(measures, stride) for stride in (1, limits.zigzag_stride)]
+    shares = [path.turning_back(DEPTH) for path in paths]
+    deep = max(shares)
+    if deep < limits.zigzag_share:
+        return
+    path = paths[shares.index(deep)]
+    lateral = max(path.turning_back(axis) for axis in range(DEPTH))
+    if deep >= limits.zigzag_ratio * lateral:
         yield Finding(
             "depth_zigzag",
-            f"Over {counted(worst.stride, 'sample')} to either side the depth turns back steeply at "
-            f"{percent(worst.deep)} of the samples, against {percent(worst.lateral)} in x or y.",
+            f"Over {counted(path.stride, 'sample')} to either side the depth turns back steeply at "
+            f"{percent(deep)} of the samples, against {percent(lateral)} in x or y.",
         )
 
 
 @dataclass(frozen=True)
-class _Turns:
-    """At which share of the samples a path turns back steeply."""
+class _Paths:
+    """All pairs of legs, of some samples each, that meet on the path from a sample toward the root.
 
-    stride: int  #: length of each leg, samples
-    deep: float  #: share along z
-    lateral: float  #: the larger of the shares along x and y
-
-
-def _turning_back(measures: Measures, stride: int) -> _Turns:
-    """Return how often the path turns back steeply.
-
-    Two legs of `stride` samples meet at a place; the path turns back steeply there if both run within 45° of
-    the same axis, in opposite senses. Legs that reach into the soma or past the root are left out.
+    Attributes
+    ----------
+    stride : int
+        Length of each leg, samples.
+    middle : (n,) int64
+        Where the leg that ends at the sample starts, and the one before it ends.
+    inside : (n,) bool
+        Whether both legs lie in neurites; those that reach into the soma or past the root are left out.
+    leg : (3, n) float64
+        The leg that ends at the sample, um.
+    square : (n,) float64
+        Its length squared, um2.
     """
+
+    stride: int
+    middle: Integers
+    inside: Mask
+    leg: Floats
+    square: Floats
+
+    def turning_back(self, axis: int) -> float:
+        """Return the share of the pairs that turn back: both within 45° of the axis, in opposite senses."""
+        leg = self.leg[axis]
+        steep = 2 * (leg * leg) > self.square
+        onward, back = steep & (leg > 0), steep & (leg < 0)
+        turns = (onward & back[self.middle]) | (back & onward[self.middle])
+        return int(np.count_nonzero(turns & self.inside)) / max(int(np.count_nonzero(self.inside)), 1)
+
+
+def _paths(measures: Measures, stride: int) -> _Paths:
+    """Return the pairs of legs of a stride."""
     middle = measures.parent
     for _ in range(stride - 1):
         middle = measures.parent[middle]
     start = middle[middle]
     inside = measures.neurite & measures.neurite[start] & (start != middle)
-    heading = _heading(measures.axes - measures.axes[:, middle])
-    turns = (heading * heading[:, middle] < 0) & inside
-    x, y, z = (int(np.count_nonzero(axis)) / max(int(np.count_nonzero(inside)), 1) for axis in turns)
-    return _Turns(stride, z, max(x, y))
-
-
-def _heading(leg: Floats) -> NDArray[np.int8]:
-    """Return for legs (3, n) the sense, 1 or -1, in which they run along an axis within 45° of it; else 0."""
-    squares = leg * leg
-    steep = 2 * squares > squares[0] + squares[1] + squares[2]
-    heading: NDArray[np.int8] = np.sign(leg).astype(np.int8) * steep
-    return heading
+    leg = measures.leg if stride == 1 else measures.axes - measures.axes.take(middle, axis=1)
+    x, y, z = leg
+    return _Paths(stride, middle, inside, leg, x * x + y * y + z * z)
 
 
 def domains(measures: Measures, limits: Thresholds) -> Iterator[Finding]:

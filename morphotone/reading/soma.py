@@ -118,7 +118,7 @@ def reroot(parent: NDArray[np.int64], new_root: int) -> NDArray[np.int64]:
 def _main_lump(kind: NDArray[np.int64], parent: NDArray[np.int64]) -> NDArray[np.int64]:
     """Return the samples of the main group of connected type-1 samples, its head first."""
     soma = np.flatnonzero(kind == SOMA)
-    if not len(soma):
+    if len(soma) < 2:
         return soma
     local = _local_parents(soma, parent)
     head = np.where(local < 0, np.arange(len(soma)), local)

@@ -21,7 +21,15 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from morphotone.errors import Fault, ReadingError
-from morphotone.reading.diagnosis import COLUMNS, LARGEST_LENGTH, LARGEST_WHOLE, NUMBER, diagnose, quote
+from morphotone.reading.diagnosis import (
+    COLUMNS,
+    LARGEST_LENGTH,
+    LARGEST_WHOLE,
+    NUMBER,
+    WHOLE_COLUMNS,
+    diagnose,
+    quote,
+)
 from morphotone.reading.findings import Finding
 
 # The largest reconstructions hold some million samples, about 100 MB of text. Twenty times that is no
@@ -36,6 +44,8 @@ _GZIP_SIGNATURE = b"\x1f\x8b"
 _UTF8_MARK = b"\xef\xbb\xbf"
 _DOS_END = b"\x1a"  # end-of-file character that programs of the DOS age wrote
 _UTF16_MARKS = (b"\xff\xfe", b"\xfe\xff")
+
+_WHOLE = [COLUMNS.index(name) for name in WHOLE_COLUMNS]
 
 _HEADER = re.compile(rb"(?:[ \t]*(?:#[^\r\n]*)?(?:\r\n|\r|\n))*")
 _COMMENT = re.compile(rb"#([^\r\n]*)")
@@ -165,16 +175,16 @@ def _healthy_table(text: bytes, start: int) -> SwcTable | None:
     columns = _columns(body)
     if columns is None or not _columns_make_sense(columns):
         return None
-    number, parent_number = columns[0].astype(np.int64), columns[6].astype(np.int64)
+    number, kind, parent_number = columns[_WHOLE].astype(np.int64)
     parent = _rows_of_parents(number, parent_number)
     line = _lines(text[:start], body, len(number))
     if parent is None or line is None:
         return None
     return SwcTable(
         number=number,
-        kind=columns[1].astype(np.int64),
-        position=np.stack(columns[2:5], axis=1),
-        radius=columns[5],
+        kind=kind,
+        position=np.ascontiguousarray(columns[2:5].T),
+        radius=columns[5].copy(),  # a view would hold all seven columns in memory
         parent=parent,
         line=line,
         comments=_comments(text, start),
@@ -201,8 +211,8 @@ def _diagnosed_table(text: bytes, start: int, name: str) -> SwcTable:
     )
 
 
-def _columns(body: bytes) -> list[NDArray[np.float64]] | None:
-    """Parse seven columns of numbers in C; None if the text is anything else.
+def _columns(body: bytes) -> NDArray[np.float64] | None:
+    """Parse seven columns of numbers in C, shape (7, n); None if the text is anything else.
 
     The first sample is looked at beforehand: seven numbers there exclude what the C parser would
     take in silence (an eighth column as row labels, a column of truth values as 1 and 0).
@@ -219,8 +229,8 @@ def _columns(body: bytes) -> list[NDArray[np.float64]] | None:
                 sep=separator,
                 comment="#",
                 header=None,
-                names=COLUMNS,
-                dtype="float64",
+                names=range(len(COLUMNS)),
+                dtype=float,
                 na_filter=False,
                 quoting=csv.QUOTE_NONE,
                 engine="c",
@@ -229,39 +239,45 @@ def _columns(body: bytes) -> list[NDArray[np.float64]] | None:
             )
         except ValueError:  # the parser's errors are ValueErrors too
             continue
-        return [frame[column].to_numpy() for column in COLUMNS]
+        return frame.to_numpy().T  # the frame's own block: nothing is copied
     return None
 
 
-def _columns_make_sense(columns: list[NDArray[np.float64]]) -> bool:
+def _columns_make_sense(columns: NDArray[np.float64]) -> bool:
     """Check that all is finite (NaN fails too) and that numbers, types and parents are whole."""
-    whole = (columns[0], columns[1], columns[6])
-    return (
-        all((np.abs(column) < LARGEST_LENGTH).all() for column in columns)
-        and all((np.rint(column) == column).all() for column in whole)
-        and all((np.abs(column) < LARGEST_WHOLE).all() for column in whole)
+    whole = columns[_WHOLE]
+    return bool(
+        columns.min() > -LARGEST_LENGTH
+        and columns.max() < LARGEST_LENGTH
+        and whole.min() > -LARGEST_WHOLE
+        and whole.max() < LARGEST_WHOLE
+        and (np.rint(whole) == whole).all()
         and columns[0].min() >= 0
     )
 
 
 def _rows_of_parents(number: NDArray[np.int64], parent_number: NDArray[np.int64]) -> NDArray[np.int64] | None:
     """Return the row of every parent, -1 for a root; None if numbers or parents are faulty."""
-    order = np.argsort(number, kind="stable")
-    ordered = number[order]
-    place = np.searchsorted(ordered, parent_number)
-    row = order[np.minimum(place, len(order) - 1)]
+    rows = np.arange(len(number))
     root = parent_number < 0
-    repeated = (ordered[1:] == ordered[:-1]).any()
-    absent = ((number[row] != parent_number) & ~root).any()
+    if (number == number[0] + rows).all():  # as nearly every file is numbered: no search is needed
+        row, repeated = parent_number - number[0], False
+        absent = ((row < 0) | (row >= len(rows))) & ~root
+    else:
+        order = np.argsort(number, kind="stable")
+        ordered = number[order]
+        row = order[np.minimum(np.searchsorted(ordered, parent_number), len(order) - 1)]
+        repeated = bool((ordered[1:] == ordered[:-1]).any())
+        absent = (number[row] != parent_number) & ~root
     itself = (parent_number == number).any()
-    return None if repeated or absent or itself else np.where(root, -1, row)
+    return None if repeated or absent.any() or itself else np.where(root, -1, row)
 
 
 def _lines(header: bytes, body: bytes, samples: int) -> NDArray[np.int64] | None:
     """Return the 1-based line of every sample; None if lines and samples do not match."""
     before = len(header.splitlines())
     codes = np.frombuffer(body, dtype=np.uint8)
-    ends = _line_ends(codes)
+    ends = _line_ends(body)
     if np.count_nonzero(ends) + (not ends[-1]) == samples:  # every line of the body is a sample
         return np.arange(before + 1, before + 1 + samples)
     starts = np.concatenate(([0], np.flatnonzero(ends[:-1]) + 1))
@@ -271,11 +287,12 @@ def _lines(header: bytes, body: bytes, samples: int) -> NDArray[np.int64] | None
     return lines if len(lines) == samples else None
 
 
-def _line_ends(codes: NDArray[np.uint8]) -> NDArray[np.bool_]:
+def _line_ends(body: bytes) -> NDArray[np.bool_]:
     """Mark the last character of every line end: LF, CR LF or CR."""
+    codes = np.frombuffer(body, dtype=np.uint8)
     ends: NDArray[np.bool_] = codes == ord("\n")
-    returns = codes == ord("\r")
-    if returns.any():
+    if b"\r" in body:
+        returns = codes == ord("\r")
         returns[:-1] &= ~ends[1:]
         ends |= returns
     return ends
