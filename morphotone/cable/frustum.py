@@ -25,19 +25,23 @@ Every coefficient is a sum of positive terms at 0 Hz, so nothing cancels, howeve
 however slight the taper: one form serves both "nearly a cylinder" and "strongly tapered", and there is
 no seam between a Bessel form and a safe form.  The series converges like δ^k; a piece that is long
 (Θ > 1) or halves its radius is cut into pieces of equal radius ratio, whose πs are joined exactly.
-A true cylinder has its closed form.  The Bessel functions I1, K1 of THEORY are what the sum is equal
-to; the tests compare with them at 50 digits.
+A true cylinder has its closed form.  Short frusta of slight taper, nearly all there are, take the same
+solution as a series of the π itself (`morphotone.cable.short`).  The Bessel functions I1, K1 of THEORY are
+what the sum is equal to; the tests compare with them at 50 digits.
 """
 
+from collections.abc import Iterator
 from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
-from morphotone.units import MICROSIEMENS_PER_UM_OHM_CM, PER_UM_PER_CM
+from morphotone.cable.short import OTHER, class_of, coefficients, factors
+from morphotone.units import MICROSIEMENS_PER_S_CM2_UM2, MICROSIEMENS_PER_UM_OHM_CM, PER_UM_PER_CM
 
 Real = NDArray[np.float64]
 Values = NDArray[Any]  # float64 at 0 Hz, complex128 at a frequency
+Rows = slice | NDArray[np.int64]
 
 
 class Pi(NamedTuple):
@@ -54,7 +58,7 @@ class Shape(NamedTuple):
     ratio: Real
     taper: Real
 
-    def rows(self, which: "slice | NDArray[np.int64]") -> "Shape":
+    def rows(self, which: "Rows") -> "Shape":
         """Return the chosen rows."""
         return Shape(self.ratio[which], self.taper[which])
 
@@ -66,11 +70,11 @@ class Shape(NamedTuple):
 # A row's series has as many terms as the corner of its class needs for 1e-17 of the sums (a test finds the
 # numbers again): the class is the first bound of taper and the first bound of |Θ²| that the row stays below.
 # It depends on that row alone, and so does the result.
-_TAPERS = (0.01, 0.04, 0.1, 0.2, 0.35, 0.5)
-_THETAS2 = (1e-4, 1e-2, 1.0)
-_TERMS = (8, 10, 18, 10, 12, 19, 13, 15, 21, 18, 20, 25, 25, 29, 35, 37, 43, 50)  # taper by taper
+_TAPERS = (0.1, 0.2, 0.35, 0.5)
+_THETAS2 = (1e-2, 1.0)
+_TERMS = (15, 21, 20, 25, 29, 35, 43, 50)  # taper by taper
 _WIDEST_TAPER, _LARGEST_THETA = _TAPERS[-1], _THETAS2[-1] ** 0.5
-_ROWS_AT_ONCE = 2048  # as many as stay in the processor's nearest cache
+_ROWS_AT_ONCE = 4096  # as many as stay in the processor's nearest cache
 _MOST_PIECES = 4096  # beyond, exp(-X) is zero in double precision and the two ends do not see each other
 
 
@@ -83,9 +87,9 @@ def pi_of_frusta(r_start: Values, r_end: Values, length: Values, R_i: Values, g:
         Radii of the two ends, µm, positive.
     length : ndarray, shape (n, 1) or (n, cases)
         Length along the axis, µm, positive.
-    R_i : ndarray, shape (1 or n, cases)
+    R_i : ndarray, shape (1 or n, 1 or cases)
         Axial resistivity, ohm cm.
-    g : ndarray, shape (1 or n, cases)
+    g : ndarray, shape (1 or n, 1 or cases)
         Membrane admittance density, S/cm2, 1/R_m + s·C_m with the spine factor in it; real or complex.
 
     Returns
@@ -98,6 +102,67 @@ def pi_of_frusta(r_start: Values, r_end: Values, length: Values, R_i: Values, g:
     Relative error below 1e-13 against the Bessel form at 50 digits for L from 1e-6 to 5, radius ratios
     to 20, 0 Hz to 10 kHz (tests/cable/test_against_definitions.py).
     """
+    cases = np.broadcast_shapes(r_start.shape, R_i.shape, g.shape)[1]
+    R_i, g = (np.broadcast_to(values, (len(values), cases)) for values in (R_i, g))
+    if r_start.shape[1] > 1:  # a geometry for each case
+        each = [
+            pi_of_frusta(*(v[:, c : c + 1] for v in (r_start, r_end, length, R_i, g))) for c in range(cases)
+        ]
+        return Pi(*(np.concatenate(parts, axis=1) for parts in zip(*each, strict=True)))
+    out = Pi(*(np.empty((len(length), cases), g.dtype) for _ in range(3)))
+    geometry = _geometry(r_start[:, 0], r_end[:, 0], length[:, 0])
+    kind = class_of(geometry.stretch * np.abs(R_i * g).max(axis=1), np.abs(geometry.taper))
+    for which in np.flatnonzero(np.bincount(kind - OTHER)) + OTHER:
+        mask = kind == which
+        if which != OTHER:
+            for block in _blocks(mask):
+                _put_short(out, block, geometry, int(which), R_i, g)
+            continue
+        rows = _rows(mask)
+        constants = (values if len(values) == 1 else values[rows] for values in (R_i, g))
+        _put(out, rows, _pi_of_others(r_start[rows], r_end[rows], length[rows], *constants))
+    return out
+
+
+class _Geometry(NamedTuple):
+    """What the shape of frusta gives to their series in Q (`morphotone.cable.short`), shape (n,)."""
+
+    taper: Real  # ε
+    stretch: Real  # Q over R_i·g
+    conductance: Real  # what 1 + Σ a_j·Q^j is multiplied with, times R_i
+    at_start: Real  # what 1 + Σ b_j·Q^j is multiplied with, over g
+    at_end: Real
+
+
+def _geometry(r_start: Real, r_end: Real, length: Real) -> _Geometry:
+    both, step = r_start + r_end, r_end - r_start
+    slant = np.sqrt(length * length + step * step)  # h·σ
+    area = (MICROSIEMENS_PER_S_CM2_UM2 * np.pi) * slant
+    return _Geometry(
+        step / both,
+        (4.0 * PER_UM_PER_CM) * slant * length / both,
+        (MICROSIEMENS_PER_UM_OHM_CM * np.pi) * r_start * r_end / length,
+        area * r_start,
+        area * r_end,
+    )
+
+
+def _put_short(out: Pi, rows: Rows, geometry: _Geometry, kind: int, R_i: Values, g: Values) -> None:
+    """Put the πs of short frusta of one class into their rows (`morphotone.cable.short`)."""
+    here = _Geometry(*(values[rows] for values in geometry))
+    powers = coefficients(here.taper, kind)
+    for case in range(out.axial.shape[1]):
+        resistivity, density = (
+            values[0, case] if len(values) == 1 else values[rows, case] for values in (R_i, g)
+        )
+        axial, start, end = factors(powers, here.stretch * (resistivity * density))
+        out.axial[rows, case] = here.conductance / resistivity * axial
+        out.start[rows, case] = here.at_start * density * start
+        out.end[rows, case] = here.at_end * density * end
+
+
+def _pi_of_others(r_start: Real, r_end: Real, length: Real, R_i: Values, g: Values) -> Pi:
+    """Return the πs of frusta of any length and taper."""
     thick = np.maximum(r_start, r_end)
     taper = np.abs(r_start - r_end) / thick
     slant = np.hypot(1.0, (r_start - r_end) / length)
@@ -132,7 +197,8 @@ def electrotonic_lengths(r_start: Real, r_end: Real, length: Real, R_i: Real, le
     R_i, leak : ndarray
         Axial resistivity, ohm cm; F/R_m, S/cm2; broadcast against the others.
     """
-    slant = np.hypot(length, r_end - r_start)  # h·σ
+    step = r_end - r_start
+    slant = np.sqrt(length * length + step * step)  # h·σ
     roots = np.sqrt(r_start) + np.sqrt(r_end)
     lengths: Real = 2.0 / roots * np.sqrt(2.0 * PER_UM_PER_CM * R_i * leak * slant * length)
     return lengths
@@ -280,11 +346,19 @@ def _endless(conductance: Values, shape: Shape, theta: Values) -> Pi:
     return Pi(np.zeros_like(theta), thick, thin)
 
 
-def _rows(mask: NDArray[np.bool_]) -> slice | NDArray[np.int64]:
+def _rows(mask: NDArray[np.bool_]) -> Rows:
     """Return the chosen rows as a slice when they are all of them, which spares copies."""
     return slice(None) if mask.all() else np.flatnonzero(mask)
 
 
-def _put(out: Pi, rows: slice | NDArray[np.int64], values: Pi) -> None:
+def _blocks(mask: NDArray[np.bool_]) -> Iterator[Rows]:
+    """Yield the chosen rows, as many at a time as stay in the processor's nearest cache."""
+    rows = _rows(mask)
+    for first in range(0, int(np.count_nonzero(mask)), _ROWS_AT_ONCE):
+        block = slice(first, first + _ROWS_AT_ONCE)
+        yield block if isinstance(rows, slice) else rows[block]
+
+
+def _put(out: Pi, rows: Rows, values: Pi) -> None:
     for target, value in zip(out, values, strict=True):
         target[rows] = value
