@@ -27,6 +27,7 @@ if TYPE_CHECKING:
     from morphotone.errors import AssumptionError, MorphotoneError, ReadingError, ResultsError
     from morphotone.questions.collected import Ranking
     from morphotone.reading.reconstruction import Reconstruction, read
+    from morphotone.showing.mesh import area_check, membrane_mesh, mesh_bytes
 
 _HOMES = {
     "Assumptions": "morphotone.cable.assumptions",
@@ -58,6 +59,9 @@ _HOMES = {
     "ResultsError": "morphotone.errors",
     "Reconstruction": "morphotone.reading.reconstruction",
     "read": "morphotone.reading.reconstruction",
+    "area_check": "morphotone.showing.mesh",
+    "membrane_mesh": "morphotone.showing.mesh",
+    "mesh_bytes": "morphotone.showing.mesh",
 }
 
 __all__ = [
@@ -78,10 +82,13 @@ __all__ = [
     "SynapticCurrent",
     "Transients",
     "amplitudes_by_node",
+    "area_check",
     "build",
     "delays",
     "frequency_response",
     "half_power_hz",
+    "membrane_mesh",
+    "mesh_bytes",
     "potentials",
     "rank",
     "read",

@@ -4,7 +4,6 @@ import io
 import json
 import subprocess
 import sys
-from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -15,7 +14,17 @@ from morphotone.cable.tree import build
 from morphotone.errors import ReadingError
 from morphotone.reading.reconstruction import reconstruct
 from morphotone.showing.mesh import BEND_ERROR, MESH_KINDS, area_check, membrane_mesh, mesh_bytes
-from morphotone.showing.tubes import CABLE, FACET_UM, LEAST_SIDES, MOST_SIDES, SOMA, inner_share, sides
+from morphotone.showing.placed import frusta_of
+from morphotone.showing.tubes import (
+    CABLE,
+    FACET_UM,
+    HIDDEN,
+    LEAST_SIDES,
+    MOST_SIDES,
+    SOMA,
+    inner_share,
+    sides,
+)
 from tests import trees
 
 BALLS = [name for name, (_, rule) in trees.FAMILIES.items() if rule not in ("none", "chain")]
@@ -52,7 +61,12 @@ def area_of(mesh, part):
 
 
 def read_back(mesh, kind):
-    return trimesh.load_mesh(io.BytesIO(mesh_bytes(mesh, kind)), file_type=kind, process=False)
+    options = {"skip_materials": True} if kind == "glb" else {}  # with one, trimesh drops vertex colours
+    return trimesh.load_mesh(io.BytesIO(mesh_bytes(mesh, kind)), file_type=kind, process=False, **options)
+
+
+def in_ply(mesh, element, name):
+    return read_back(mesh, "ply").metadata["_ply_raw"][element]["data"][name].ravel()
 
 
 def head_of_glb(data):
@@ -87,10 +101,8 @@ def test_every_body_is_closed_and_faces_outwards(name):
         assert body.is_winding_consistent
         assert body.volume > 0
     np.testing.assert_allclose(np.linalg.norm(mesh.vertex_normals, axis=1), 1.0, rtol=1e-12)
-    broad = mesh.area_faces > 1e-6  # the normal of a sliver is rounding
-    facing = np.einsum("fcx,fx->fc", mesh.vertex_normals[mesh.faces[broad]], mesh.face_normals[broad])
-    assert facing.min() > -0.75  # a corner of a flat end looks across it
-    assert np.mean(facing > 0.5) > 0.6
+    facing = np.einsum("fcx,fx->fc", mesh.vertex_normals[mesh.faces], mesh.face_normals)
+    assert np.mean(facing > 0.5) > 0.6  # corners of flat ends look across them
 
 
 def test_a_mirrored_cell_still_faces_outwards():
@@ -150,18 +162,13 @@ def test_a_whole_cell_has_its_area_but_for_facets_and_bends(name):
     check = area_check(mesh, cable)
     assert check.cable_um2 == pytest.approx(sum(part.sum() for part in cable.areas()))
     assert check.agrees
-    missing = mesh.copy()
-    missing.face_attributes = {
-        "part": np.where(np.arange(len(mesh.faces)) % 50, mesh.face_attributes["part"], 0)
-    }
-    missing.metadata = mesh.metadata
-    assert not area_check(missing, cable).agrees
+    assert not area_check(mesh.copy().apply_scale(0.99), cable).agrees
 
 
 @pytest.mark.parametrize("key", range(6))
 def test_bends_and_tapers_together_stay_within_their_bound(key):
     rng = np.random.default_rng(key)
-    steps = rng.normal(size=(400, 3)) + [2.0, 0, 0]
+    steps = rng.normal(loc=(2.0, 0.0, 0.0), size=(400, 3))
     radii = np.exp(np.cumsum(rng.normal(scale=0.1, size=400)))
     cable, mesh = drawn(polyline(np.cumsum(steps, axis=0), np.clip(radii, 0.05, 4.0)))
     check = area_check(mesh, cable)
@@ -191,8 +198,8 @@ def test_without_a_soma_none_is_drawn():
     assert area_of(family("comb")[1], SOMA) == 0
 
 
-def test_a_cell_of_one_sample_is_its_soma():
-    cable, mesh = drawn("1 1 5 5 5 8 -1\n")
+def test_a_cell_that_is_but_a_soma_is_a_ball():
+    cable, mesh = drawn("1 1 5 5 5 8 -1\n2 1 5 5 5 8 1\n")
     assert mesh.area == pytest.approx(4 * np.pi * 64, rel=1e-12)
     assert np.allclose(mesh.centroid, 5)
     assert area_check(mesh, cable).agrees
@@ -204,25 +211,27 @@ def test_samples_in_one_place_without_a_soma_cannot_be_drawn():
     assert raised.value.reason == "nothing_to_draw"
 
 
+def in_wedges(frusta):
+    """Return points between the end of a frustum and the start of the next, where they bend apart."""
+    next_one = np.flatnonzero(frusta.follows >= 0)
+    before = frusta.follows[next_one]
+    around = np.random.default_rng(1).normal(size=(40, 1, 3))
+    around *= 0.6 / np.linalg.norm(around, axis=2, keepdims=True)
+    least = np.minimum(frusta.r_end[before], frusta.r_start[next_one])
+    past_end = (around * frusta.along[before]).sum(axis=2) >= 0
+    not_begun = (around * frusta.along[next_one]).sum(axis=2) <= 0
+    return (frusta.start[next_one] + around * least[:, None])[past_end & not_begun]
+
+
 @pytest.mark.parametrize("name", [*trees.FAMILIES, *ODD_PATHS])
 def test_nothing_gapes(name):
-    """Around every node between frusta, and along every stem into the soma, all is inside some body."""
+    """Where frusta bend apart, and along every link from the soma to its stems, all is inside some body."""
     cable, mesh = drawn(polyline(*ODD_PATHS[name])) if name in ODD_PATHS else family(name)
-    traced = cable.traced
-    inner = [node for node in np.unique(cable.parent[1:]) if node > 0]
-    points = [traced.position[cable.sample[inner]]]
-    radii = [cable.r_end[inner]]
-    if len(traced.soma.members):
-        stems = cable.sample[1:][traced.stem[cable.sample[1:]]]
-        share = np.linspace(0.05, 0.95, 8)[:, None, None]
-        heart = traced.position[traced.parent[stems]] if traced.soma.rule == "chain" else traced.soma.centre
-        reach = (heart + share * (traced.position[stems] - heart)).reshape(-1, 3)
-        points.append(reach)
-        radii.append(np.tile(traced.radius[stems], len(share)) * 0.0)
-    rng = np.random.default_rng(1)
-    ball = rng.normal(size=(12, 1, 3))
-    ball *= 0.8 / np.linalg.norm(ball, axis=2, keepdims=True)
-    probes = (np.concatenate(points) + ball * np.concatenate(radii)[:, None]).reshape(-1, 3)
+    frusta = frusta_of(cable)
+    links = frusta.take(frusta.part == HIDDEN)
+    share = np.linspace(0.02, 0.98, 9)[:, None, None]
+    axes = links.start + share * (links.end - links.start)
+    probes = np.concatenate((in_wedges(frusta), axes.reshape(-1, 3)))
     inside = np.zeros(len(probes), bool)
     for body in bodies(mesh):
         near = ((probes >= body.bounds[0]) & (probes <= body.bounds[1])).all(axis=1) & ~inside
@@ -259,12 +268,9 @@ def test_each_vertex_has_the_value_of_its_place(name):
     assert set(node) == set(range(len(cable.parent))) - ({0} if name == "none" else set())
     place = cable.traced.position[cable.sample[node]]
     far = np.linalg.norm(mesh.vertices - place, axis=1)
-    widest = np.maximum(cable.r_end, np.zeros(len(node := cable.r_end)))
-    for child, up in enumerate(cable.parent[1:].tolist(), 1):
-        widest[up] = max(widest[up], cable.r_start[child])
-    at_soma = mesh.vertex_attributes["value"] == 0
-    of = mesh.vertex_attributes["value"].astype(int)[~at_soma]
-    assert (far[~at_soma] <= 1.5 * widest[of] + 1e-9).all()
+    widest = cable.r_end.copy()
+    np.maximum.at(widest, cable.parent[1:], cable.r_start[1:])
+    assert (far <= 1.3 * widest[node] + 1e-9)[node > 0].all()
 
 
 def test_colours_go_from_the_least_value_to_the_greatest_or_as_given():
@@ -294,27 +300,26 @@ def test_a_file_reads_back(shown, kind):
     assert np.array_equal(back.faces, mesh.faces)
     np.testing.assert_allclose(back.vertices, mesh.vertices, rtol=1e-6, atol=1e-6)
     assert back.volume == pytest.approx(mesh.volume, rel=1e-5)
-    np.testing.assert_allclose(back.vertex_normals, mesh.vertex_normals, atol=1e-5)
 
 
 def test_ply_holds_value_part_and_colour(shown):
     _, mesh = shown
-    back = read_back(mesh, "ply")
-    assert np.array_equal(back.vertex_attributes["value"], mesh.vertex_attributes["value"])
-    assert np.array_equal(back.visual.vertex_colors, mesh.visual.vertex_colors)
-    head = mesh_bytes(mesh, "ply").split(b"end_header")[0].decode()
+    data = mesh_bytes(mesh, "ply")
+    assert np.array_equal(in_ply(mesh, "vertex", "value"), mesh.vertex_attributes["value"])
+    np.testing.assert_allclose(in_ply(mesh, "vertex", "nz"), mesh.vertex_normals[:, 2], atol=1e-6)
+    assert np.array_equal(in_ply(mesh, "face", "part"), mesh.face_attributes["part"])
+    assert np.array_equal(read_back(mesh, "ply").visual.vertex_colors, mesh.visual.vertex_colors)
+    head = data.split(b"end_header")[0].decode()
     assert "comment value is ln attenuation to the soma\n" in head
     assert "comment unit um\n" in head
-    raw = trimesh.load(io.BytesIO(mesh_bytes(mesh, "ply")), file_type="ply", process=False)
-    part = raw.metadata["_ply_raw"]["face"]["data"]["part"]
-    assert np.array_equal(part, mesh.face_attributes["part"])
 
 
 def test_glb_holds_value_and_colour_in_linear_light(shown):
     _, mesh = shown
     back = read_back(mesh, "glb")
-    np.testing.assert_allclose(back.vertex_attributes["_VALUE"], mesh.vertex_attributes["value"], rtol=1e-6)
-    colour = np.asarray(back.visual.vertex_attributes["color"])[:, :3] / 255.0
+    value = back.vertex_attributes["_VALUE"].ravel()
+    np.testing.assert_allclose(value, mesh.vertex_attributes["value"], rtol=1e-6)
+    colour = np.asarray(back.visual.vertex_colors)[:, :3] / 255.0
     screen = np.where(colour <= 0.0031308, 12.92 * colour, 1.055 * colour ** (1 / 2.4) - 0.055)
     np.testing.assert_allclose(screen, np.asarray(mesh.visual.vertex_colors)[:, :3] / 255.0, atol=0.03)
     extras = head_of_glb(mesh_bytes(mesh, "glb"))["meshes"][0]["extras"]
@@ -335,13 +340,13 @@ def test_a_place_without_a_value_is_grey_and_no_nan_in_glb():
     mesh = membrane_mesh(cable, value)
     data = mesh_bytes(mesh, "glb")
     extras = head_of_glb(data)["meshes"][0]["extras"]
-    back = read_back(mesh, "glb").vertex_attributes["_VALUE"]
+    back = read_back(mesh, "glb").vertex_attributes["_VALUE"].ravel()
     none = np.isnan(mesh.vertex_attributes["value"])
     assert none.any()
     assert (back[none] == np.float32(extras["no_value"])).all()
     assert (back[~none] == np.finfo(np.float32).max).all()
     assert (np.ptp(np.asarray(mesh.visual.vertex_colors)[none][:, :3], axis=1) == 0).all()
-    assert np.isnan(read_back(mesh, "ply").vertex_attributes["value"][none]).all()
+    assert np.isnan(in_ply(mesh, "vertex", "value")[none]).all()
 
 
 def test_the_same_cell_gives_the_same_bytes_in_any_process():
@@ -386,7 +391,7 @@ def test_faces_grow_with_the_samples_and_calls_do_not():
     n = int(sides(np.array(1.0)))
     assert [count - 2 * n for count in faces] == [2 * n * (len(cable.parent) - 1) for cable in cables]
     made = [calls(membrane_mesh, *case) for case in zip(cables, values, strict=True)]
-    assert all(more - few < 40 for few, more in pairwise(made))
+    assert made[2] < 1.1 * made[0]
 
 
 @pytest.mark.slow
