@@ -8,6 +8,7 @@ import re
 import tomllib
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field, replace
+from functools import cached_property
 from numbers import Integral
 from typing import Any, Self
 
@@ -129,6 +130,11 @@ class Assumptions:
     def of(self, kind: int) -> Membrane:
         """Return the membrane of a domain, by its SWC code."""
         return self.domains.get(kind, self.membrane)
+
+    @cached_property
+    def geometry(self) -> "Assumptions":
+        """The same but for what no cable's shape depends on: membrane, frequencies and the soma's shunt."""
+        return replace(self, membrane=Membrane(), domains={}, hz=(), soma_shunt_nS=0.0)
 
     @property
     def warnings(self) -> tuple[str, ...]:

@@ -1,13 +1,13 @@
 """What is read off the two sweeps: input and transfer impedance, attenuation both ways, X, λ."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass, fields, replace
+from dataclasses import dataclass, fields
 from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
-from morphotone.cable.assumptions import Assumptions, Membrane
+from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.forest import Column, Forest, Solved, membrane_of
 from morphotone.cable.frustum import Values, electrotonic_lengths
 from morphotone.cable.tree import Cable, build
@@ -148,11 +148,10 @@ def build_cases(rec: Reconstruction, many: Sequence[Assumptions]) -> tuple[Cable
     built: list[tuple[Assumptions, Cable]] = []
     cables = []
     for one in many:
-        geometry = replace(one, membrane=Membrane(), domains={}, hz=(), soma_shunt_nS=0.0)
-        cable = next((cable for known, cable in built if known == geometry), None)
+        cable = next((cable for known, cable in built if known.geometry == one.geometry), None)
         if cable is None:
-            cable = build(rec, geometry)
-            built.append((geometry, cable))
+            cable = build(rec, one)
+            built.append((one, cable))
         if not np.array_equal(cable.node, built[0][1].node):
             raise AssumptionError(
                 f"{rec.file}: these assumptions give trees of different nodes (soma, axon or orphans "

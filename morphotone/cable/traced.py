@@ -87,10 +87,10 @@ def trace(rec: Reconstruction, assumptions: Assumptions) -> Traced:
         When a radius is no cable's (reason ``radius_absurd``), when there are orphans and the
         assumptions refuse them (``orphans_refused``), or when nothing is left (``nothing_left``).
     """
-    position = rec.position * np.asarray(assumptions.shrinkage)
+    position = _corrected_position(rec, assumptions)
     radius = _corrected_radius(rec, assumptions)
     soma = find_soma(rec.kind, rec.parent, rec.position, rec.radius, assumptions.soma_rule)
-    if not (np.array_equal(position, rec.position) and np.array_equal(radius, rec.radius)):
+    if position is not rec.position or radius is not rec.radius:
         # By the rule that fits the coordinates as traced: a correction must not make a chain of three points.
         soma = find_soma(rec.kind, rec.parent, position, radius, soma.rule)
     main = rec.tree[soma.members[0]] if len(soma.members) else _longest_tree(position, rec)
@@ -142,15 +142,24 @@ def _frustum_lengths(position: Real, radius: Real, parent: Index, soma: Soma) ->
 def step_lengths(position: Real, parent: Index) -> Real:
     """Return the distance of each sample from its parent, µm, 0 at roots."""
     steps = position - position.take(parent, axis=0)  # a root's parent -1 gives any row
-    steps[parent < 0] = 0.0
+    steps[np.flatnonzero(parent < 0)] = 0.0
     lengths: Real = np.sqrt(np.einsum("ij,ij->i", steps, steps))
     return lengths
 
 
+def _corrected_position(rec: Reconstruction, assumptions: Assumptions) -> Real:
+    if assumptions.shrinkage == (1.0, 1.0, 1.0):
+        return rec.position
+    corrected: Real = rec.position * np.asarray(assumptions.shrinkage)
+    return corrected
+
+
 def _corrected_radius(rec: Reconstruction, assumptions: Assumptions) -> Real:
-    radius = assumptions.diameter_factor * rec.radius + assumptions.diameter_offset_um / 2.0
-    wrong = np.flatnonzero(~((radius >= _SMALLEST_UM) & (radius <= _LARGEST_UM)))
-    if len(wrong):
+    radius = rec.radius
+    if (assumptions.diameter_factor, assumptions.diameter_offset_um) != (1.0, 0.0):
+        radius = assumptions.diameter_factor * rec.radius + assumptions.diameter_offset_um / 2.0
+    if radius.min() < _SMALLEST_UM or radius.max() > _LARGEST_UM:
+        wrong = np.flatnonzero((radius < _SMALLEST_UM) | (radius > _LARGEST_UM))
         at = wrong[0]
         same = radius[at] == rec.radius[at]
         corrected = "" if same else f", {radius[at]:g} um after the correction of diameters,"

@@ -84,7 +84,7 @@ def find_soma(
     members = _main_lump(kind, parent) if rule != "none" else np.empty(0, dtype=np.int64)
     if not len(members):
         return Soma("none", members, 0.0, position[int(np.argmax(parent < 0))].copy(), 0.0)
-    local = _local_parents(members, parent)
+    local = _local_parents(members, parent) if len(members) > 1 else np.array([-1])
     place, size = position[members], np.maximum(radius[members], 0.0)
     used = _fitting_rule(local, place, size, rule)
     area, centre = _SHAPES[used](local, place, size)
@@ -143,6 +143,8 @@ def _fitting_rule(
     local: NDArray[np.int64], place: NDArray[np.float64], size: NDArray[np.float64], rule: str
 ) -> str:
     """Return the rule to use; a forced one stands if the members lie in more than one place."""
+    if len(place) == 1:
+        return "sphere"
     extent = np.linalg.norm(place - place[0], axis=1).max()
     if extent <= (COINCIDENT_SHARE * size.max() if rule == "auto" else 0.0):
         return "sphere"
