@@ -252,7 +252,9 @@ def test_what_is_no_swc_text_is_said_in_one_sentence(data, kind):
 
 
 @pytest.mark.parametrize(
-    "data", [gzip.compress(PLAIN)[:-9], gzip.compress(PLAIN)[:20], b"\x1f\x8b", b"no gzip at all", PLAIN]
+    "data",
+    [gzip.compress(PLAIN)[:-9], gzip.compress(PLAIN)[:20], b"\x1f\x8b", b"no gzip at all", PLAIN],
+    ids=["cut at the end", "cut in the middle", "signature alone", "text", "samples"],
 )
 def test_broken_gzip_is_unreadable(data):
     with pytest.raises(ReadingError, match=r"a.swc.gz: could not be read: broken gzip data") as caught:
