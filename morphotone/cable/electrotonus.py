@@ -97,9 +97,10 @@ class Electrotonus:
     def by_sample(self) -> "Electrotonus":
         """Return the same with one row per sample of the file instead of one per node."""
         node = self.cable.node
-        arrays = [getattr(self, field.name)[node] for field in fields(self)[2:]]
+        arrays = [getattr(self, field.name).take(node, axis=0) for field in fields(self)[2:]]
+        left_out = np.flatnonzero(node < 0)
         for values in arrays:
-            values[node < 0] = np.nan
+            values[left_out] = np.nan
         return Electrotonus(self.cable, self.cases, *arrays)
 
 

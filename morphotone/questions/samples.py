@@ -20,14 +20,14 @@ def sample_table(cell: Cell) -> Columns:
     traced, node = cell.cable.traced, cell.cable.node
     left_out = node < 0
     centre = traced.soma.centre if len(traced.soma.members) else traced.position[traced.root]
-    straight = np.linalg.norm(traced.position - centre, axis=1)
+    x, y, z = (traced.position - centre).T
+    straight = np.sqrt(x**2 + y**2 + z**2)
     straight[left_out] = np.nan
-    names = {kind: domain_name(kind) for kind in np.unique(rec.kind).tolist()}
     number = _blank(branches.of_node[node] + 1, left_out)
     order = _blank(np.append(branches.order, 0)[branches.of_node[node]], left_out)
     columns: Columns = {
         "sample": rec.number,
-        "domain": [names[kind] for kind in rec.kind.tolist()],
+        "domain": _domain_names(rec.kind),
         "diameter_um": 2.0 * traced.radius,
         "branch": number,
         "order": order,
@@ -52,8 +52,17 @@ def sample_table(cell: Cell) -> Columns:
         if not suffix:
             columns["charge_to_soma"] = np.exp(-from_soma)
     columns |= time_columns(cell.time)
-    in_file = np.argsort(rec.line, kind="stable")
-    return {name: np.asarray(values)[in_file] for name, values in columns.items()}
+    if (np.diff(rec.line) > 0).all():
+        return columns
+    in_file = np.argsort(rec.line)
+    return {name: values[in_file] for name, values in columns.items()}
+
+
+def _domain_names(kind: NDArray[np.int64]) -> NDArray[np.object_]:
+    """Return the name of each sample's domain; it is looked up once for each run of samples of one type."""
+    starts = np.flatnonzero(np.diff(kind, prepend=~kind[0]))
+    names = np.array([domain_name(code) for code in kind[starts].tolist()], object)
+    return np.repeat(names, np.diff(starts, append=len(kind)))
 
 
 def _blank(whole: NDArray[np.int64], where: NDArray[np.bool_]) -> NDArray[Any]:

@@ -33,7 +33,7 @@ def csv_texts(tables: Sequence[Columns], names: Sequence[Sequence[str]]) -> list
     if not tables:
         return []
     lengths = [len(next(iter(table.values()))) for table in tables]
-    prefixes = (csv_line(*leading).removesuffix(LINE_END).encode() for leading in names)
+    prefixes = (_leading(csv_line(*cells).removesuffix(LINE_END).encode()) for cells in names)
     leading = list(chain.from_iterable(map(repeat, prefixes, lengths)))
     text, starts = _rows(leading, [_together([table[column] for table in tables]) for column in tables[0]])
     bounds = [starts[row] for row in accumulate(lengths, initial=0)]
@@ -48,17 +48,17 @@ def csv_table(frame: pd.DataFrame) -> bytes:
         for _, column in frame.items()
     )
     first, *others = columns
-    leading = [orjson.dumps([_cell(value)])[1:-1] for value in _listed(first)]
+    leading = [_leading(orjson.dumps([_cell(value)])[1:-1]) for value in _listed(first)]
     return csv_line(*map(str, frame.columns)).encode() + _rows(leading, others)[0]
 
 
-def _rows(leading: Sequence[bytes], columns: Sequence[Any]) -> tuple[bytes, list[int]]:
+def _rows(leading: Sequence[orjson.Fragment], columns: Sequence[Any]) -> tuple[bytes, list[int]]:
     """Write rows, some at a time.
 
     Parameters
     ----------
-    leading : sequence of bytes
-        Per row what it starts with, as CSV.
+    leading : sequence of orjson.Fragment
+        Per row what it starts with, as `_leading` gives it.
     columns : sequence of ndarray or list
         What follows.
 
@@ -79,7 +79,9 @@ def _rows(leading: Sequence[bytes], columns: Sequence[Any]) -> tuple[bytes, list
     return b"".join(texts), np.concatenate(starts).tolist()
 
 
-def _written(leading: Sequence[bytes], columns: Sequence[list[Any]]) -> tuple[bytes, NDArray[np.int64]]:
+def _written(
+    leading: Sequence[orjson.Fragment], columns: Sequence[list[Any]]
+) -> tuple[bytes, NDArray[np.int64]]:
     """Return rows as text, and where each ends.
 
     JSON's numbers are CSV's, and orjson writes them about twenty times as fast as `repr`; what JSON writes in
@@ -87,16 +89,20 @@ def _written(leading: Sequence[bytes], columns: Sequence[list[Any]]) -> tuple[by
     """
     width = 1 + len(columns)
     cells: list[Any] = [None] * (len(leading) * width)
-    fragments = {text: orjson.Fragment(_ROW + text) for text in set(leading)}
-    cells[::width] = [fragments[text] for text in leading]
+    cells[::width] = leading
     for place, column in enumerate(columns, 1):
         cells[place::width] = column
-    cells.append(orjson.Fragment(_ROW))
+    cells.append(_leading(b""))
     text = np.frombuffer(bytearray(orjson.dumps(cells)), np.uint8)
     marks = np.flatnonzero(text == _ROW[0])
     # A comma and a mark stand between two rows: room for the line end.
     text[marks[1:] - 1], text[marks[1:]] = LINE_END.encode()
     return text[marks[0] + 1 : marks[-1] + 1].tobytes(), marks[1:] - marks[0]
+
+
+def _leading(text: bytes) -> orjson.Fragment:
+    """Return what a row starts with so that the row's place can be found."""
+    return orjson.Fragment(_ROW + text)
 
 
 def _together(columns: Sequence[Any]) -> Any:
@@ -115,7 +121,8 @@ def _cells(column: Any) -> list[Any]:
     """Return values as what orjson writes as CSV: numbers as they are, else fragments."""
     values: list[Any] = _listed(column)
     if isinstance(column, np.ndarray) and column.dtype.kind in "fiu":
-        for place in np.flatnonzero(~np.isfinite(column)).tolist():
+        finite = np.isfinite(column)
+        for place in () if finite.all() else np.flatnonzero(~finite).tolist():
             values[place] = _cell(values[place])
         return values
     if set(map(type, values)) == {str}:
