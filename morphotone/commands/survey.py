@@ -163,7 +163,8 @@ def write_survey(
     names = [file.name for file in found]
     columns = {table: ",".join(_LEADING + rest) for table, rest in headers(request).items()}
     by_sample = columns.pop("samples", None)
-    with Ledger(into, _fingerprint(request)) as ledger:
+    conditions = _fingerprint(request)
+    with Ledger(into, conditions) as ledger:
         tally = run_night(
             found,
             partial(outcomes, request=request),
@@ -180,7 +181,7 @@ def write_survey(
         details = {
             "folder": str(folder),
             "patterns": list(patterns),
-            **_fingerprint(request),
+            **conditions,
             "warnings": list(request.assumptions.warnings),
         }
         record = run_record(started=started, tally=tally, ledger=ledger, names=names, details=details)

@@ -39,21 +39,25 @@ def atomic(path: Path) -> Iterator[TextIO]:
 
 
 @contextmanager
-def atomic_bytes(path: Path) -> Iterator[BinaryIO]:
-    """Open a binary file that takes its place as a text file does with `atomic`."""
-    with _in_place_when_whole(path, partial(open, mode="wb")) as stream:
+def atomic_bytes(path: Path, *, wait: bool = True) -> Iterator[BinaryIO]:
+    """Open a binary file that takes its place as a text file does with `atomic`.
+
+    Without `wait` it may still be on its way to the disk then: what a power cut takes has to be somewhere else.
+    """
+    with _in_place_when_whole(path, partial(open, mode="wb"), wait) as stream:
         yield stream
 
 
 @contextmanager
-def _in_place_when_whole(path: Path, opened: Callable[[Path], Any]) -> Iterator[Any]:
+def _in_place_when_whole(path: Path, opened: Callable[[Path], Any], wait: bool = True) -> Iterator[Any]:
     unfinished = path.with_name(f".{path.name}.part")
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
         with opened(unfinished) as stream:
             yield stream
-            stream.flush()
-            os.fsync(stream.fileno())
+            if wait:
+                stream.flush()
+                os.fsync(stream.fileno())
         unfinished.replace(path)
     except OSError as error:
         raise ResultsError(
@@ -90,7 +94,8 @@ def export_each(ledger: Ledger, names: Sequence[str], table: str, header: str) -
 
     "sub/x.swc" becomes "sub/x.swc.csv" below the table's folder; see `file_names`. The file of an item
     that the ledger knows but that has no rows now (gone from the input, turned away) is deleted; files
-    that the ledger knows nothing of are left alone.
+    that the ledger knows nothing of are left alone. The disk is not waited for, file by file: what a power
+    cut takes can be exported again.
 
     Parameters
     ----------
@@ -105,7 +110,7 @@ def export_each(ledger: Ledger, names: Sequence[str], table: str, header: str) -
     places = {name: folder / f"{file}.csv" for name, file in file_names(ledger.known()).items()}
     written = set()
     for name, text in ledger.rows(table, names):
-        with atomic_bytes(places[name]) as stream:
+        with atomic_bytes(places[name], wait=False) as stream:
             _write(stream, header, [text])
         written.add(places[name])
     for name in places:
