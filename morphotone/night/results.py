@@ -42,7 +42,7 @@ def atomic(path: Path) -> Iterator[TextIO]:
 def atomic_bytes(path: Path, *, wait: bool = True) -> Iterator[BinaryIO]:
     """Open a binary file that takes its place as a text file does with `atomic`.
 
-    Without `wait` it may still be on its way to the disk then: what a power cut takes has to be somewhere else.
+    Without `wait` it may still be on its way to the disk then, and a power cut may take it.
     """
     with _in_place_when_whole(path, partial(open, mode="wb"), wait) as stream:
         yield stream
