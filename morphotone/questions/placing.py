@@ -78,8 +78,10 @@ def placed_on(
     node, fraction = places.node[kept], places.fraction[kept]
     traced = cable.traced
     centre = traced.soma.centre if len(traced.soma.members) else traced.position[traced.root]
-    straight = np.linalg.norm(positions(cable, node, fraction) - centre, axis=1)
-    placed = Placed(sites.at(kept), with_sites(cable, node, fraction), places.moved_um[kept], straight)
+    position = positions(cable, node, fraction)
+    straight = np.linalg.norm(position - centre, axis=1)
+    sited = with_sites(cable, node, fraction)
+    placed = Placed(sites.at(kept), sited, places.moved_um[kept], straight, position)
     return placed, sites.at(away).turned_away(reasons, sentences)
 
 

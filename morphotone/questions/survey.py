@@ -129,7 +129,7 @@ def answers(files: Sequence[tuple[str, bytes | ReadingError]], request: Request)
     ready = [each for each in prepared if isinstance(each, Prepared)]
     # Absurd files (kept although unfit) may overflow; their infinities stand in the table for what they are.
     with np.errstate(over="ignore", under="ignore", divide="ignore", invalid="ignore"):
-        cells = iter(_solved(ready, request))
+        cells = iter(cells_of(ready, request))
         return [
             _tabulated(each.name, next(cells), request) if isinstance(each, Prepared) else each
             for each in prepared
@@ -185,8 +185,8 @@ def _in_view_of(assumptions: Assumptions, vetting: Vetting) -> Vetting:
     return Vetting(findings, grade_of(findings))
 
 
-def _solved(ready: Sequence[Prepared], request: Request) -> list[Cell]:
-    """Solve cells as one forest, the time axis too where it is asked for."""
+def cells_of(ready: Sequence[Prepared], request: Request) -> list[Cell]:
+    """Solve prepared files as one forest, the time axis too where it is asked for."""
     solved = solve_cables([each.cables for each in ready], cases_of([request.assumptions]))
     cells = [Cell(each.rec, each.vetting, one) for each, one in zip(ready, solved, strict=True)]
     if request.time == TimeRequest():

@@ -35,12 +35,15 @@ class Placed:
     moved_um, straight_um : ndarray, shape (sites,)
         How far a site in space was moved to the cable's surface, 0 for the others; straight distance from
         the soma's centre; µm.
+    position : ndarray, shape (sites, 3)
+        Where they lie on the axis, µm, in the frame of ``sited.cable.traced``.
     """
 
     sites: Sites
     sited: Sited
     moved_um: Real
     straight_um: Real
+    position: Real
 
 
 @dataclass(frozen=True, eq=False)

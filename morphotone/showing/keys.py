@@ -1,0 +1,189 @@
+"""What explains a drawing: colour bar, key to the lines, numbers at sites, words for columns."""
+
+import re
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+from matplotlib.lines import Line2D
+from numpy.typing import NDArray
+
+from morphotone.questions.portrait import Portrait
+from morphotone.showing.colours import CONTINUOUS, INK, Scale, domain_style
+from morphotone.showing.panels import BACK, ENDLESS, LINE, domains_of
+from morphotone.showing.sheet import SMALL, Box, axes_at, factor_ticks, number_text, round_length
+
+Real = NDArray[np.float64]
+
+_NUMBERED, _NUMBERED_SMALL = 12, 8  # sites with a number, in boxes from 50 mm on and below; others have a dot
+_DISC = 1.45  # mm, radius of the disc that holds a number
+
+_WORDS = {
+    "sample": "sample number",
+    "diameter_um": "diameter (µm)",
+    "branch": "branch number",
+    "order": "branch order",
+    "path_um": "path from the soma (µm)",
+    "straight_um": "straight distance from the soma (µm)",
+    "lambda_um": "space constant λ (µm)",
+    "X": "electrotonic distance X",
+    "R_in_MOhm": "input resistance (MΩ)",
+    "R_transfer_MOhm": "transfer resistance to the soma (MΩ)",
+    "attenuation_to_soma": "attenuation toward the soma",
+    "attenuation_from_soma": "attenuation from the soma",
+    "log_attenuation_to_soma": "attenuation toward the soma",
+    "log_attenuation_from_soma": "attenuation from the soma",
+    "charge_to_soma": "share of the charge that reaches the soma",
+}
+_UNITS = {"um": "µm", "MOhm": "MΩ", "ms": "ms", "mV": "mV", "mV_per_pA": "mV/pA"}
+_AT_HZ = re.compile(r"_([\d.e+-]+)Hz\Z")
+
+
+def is_logarithmic(column: str) -> bool:
+    """Tell whether a column holds natural logarithms of attenuations, which a scale shows as attenuations."""
+    return column.startswith("log_attenuation")
+
+
+def column_words(column: str) -> str:
+    """Return a column of the table by sample in words, its unit and frequency with it."""
+    at = _AT_HZ.search(column)
+    name = column[: at.start()] if at else column
+    words = _WORDS.get(name)
+    if words is None:
+        unit = next((unit for unit in sorted(_UNITS, key=len, reverse=True) if name.endswith(f"_{unit}")), "")
+        words = name.removesuffix(f"_{unit}").replace("_", " ") + (f" ({_UNITS[unit]})" if unit else "")
+    return f"{words} at {at.group(1)} Hz" if at else words
+
+
+def draw_colour_bar(figure: Figure, box: Box, scale: Scale, logarithmic: bool) -> Axes:
+    """Draw the shades of a scale across a box 9 mm high: words, shades, ticks, from above."""
+    axes = axes_at(figure, box.inside(top=3.4, bottom=3.6))
+    axes.set_title(scale.label, fontsize=SMALL, loc="left", pad=2.0)
+    shades = np.linspace(0.0, 1.0, CONTINUOUS.N)[None, :]
+    least, greatest = scale.least, scale.greatest
+    axes.set_yticks([])
+    axes.spines[:].set_linewidth(0.4)
+    if not least < greatest:  # one value, or none
+        axes.imshow(np.full((1, 1), 0.5), cmap=CONTINUOUS, vmin=0, vmax=1, aspect="auto", extent=(0, 1, 0, 1))
+        value = np.exp(least) if logarithmic else least
+        axes.set_xticks([0.5], [number_text(float(value)) if np.isfinite(value) else "no value"])
+        return axes
+    axes.imshow(shades, cmap=CONTINUOUS, aspect="auto", extent=(0.0, 1.0, 0.0, 1.0))
+    most = max(2, int(box.width / 8.0))
+    places, labels = _ticks(least, greatest, logarithmic, most)
+    axes.set_xticks(scale.place(places), labels)
+    return axes
+
+
+def _ticks(least: float, greatest: float, logarithmic: bool, most: int) -> tuple[Real, list[str]]:
+    if logarithmic:
+        return factor_ticks(least, greatest, most)
+    step = round_length((greatest - least) / 2.0)
+    places = np.arange(np.ceil(least / step - 1e-9), np.floor(greatest / step + 1e-9) + 1) * step
+    while len(places) > most:
+        places = places[::2]
+    return places, [number_text(float(f"{place:.6g}")) for place in places]
+
+
+def draw_key(figure: Figure, box: Box, portrait: Portrait) -> None:
+    """Explain the lines of the courses and the trees, in one or two rows across a box."""
+    handles = [
+        Line2D([], [], lw=2 * LINE, label=name_of(domain), **domain_style(domain).line)
+        for domain in domains_of(portrait)
+    ]
+    handles.append(Line2D([], [], label="from the soma", **BACK))
+    if np.isfinite(portrait.endless.lambda_um):
+        stem = f"endless cable, λ {number_text(round(portrait.endless.lambda_um))} µm"
+        handles.append(Line2D([], [], label=stem, **ENDLESS))
+    axes = axes_at(figure, box)
+    axes.set_axis_off()
+    axes.legend(
+        handles=handles,
+        loc="upper left",
+        bbox_to_anchor=(0.0, 1.0),
+        ncols=max(1, min(len(handles), int(box.width / 24.0))),
+        fontsize=SMALL,
+        frameon=False,
+        borderpad=0.0,
+        borderaxespad=0.0,
+        handlelength=2.4,
+        handletextpad=0.5,
+        columnspacing=1.2,
+        labelspacing=0.3,
+    )
+
+
+def name_of(domain: str) -> str:
+    """Return a domain as a reader knows it."""
+    return f"type {domain}" if domain.lstrip("-").isdigit() else domain
+
+
+def mark_sites(axes: Axes, box: Box, places: Real, ranks: NDArray[np.int64]) -> None:
+    """Mark sites in axes that fill a box: a dot each, and beside the first in rank their numbers.
+
+    Parameters
+    ----------
+    axes : Axes
+        With its limits set.
+    box : Box
+        Where it is on the page.
+    places : ndarray, shape (sites, 2)
+        In the axes' data.
+    ranks : ndarray of int64, shape (sites,)
+        1 first.
+    """
+    if not len(places):
+        return
+    axes.plot(
+        *places.T,
+        ls="none",
+        marker="o",
+        ms=2.2,
+        mfc="white",
+        mec=INK,
+        mew=0.5,
+        gid="sites",
+        zorder=5,
+        clip_on=False,
+    )
+    (left, right), (bottom, top) = axes.get_xlim(), axes.get_ylim()
+    per_mm = np.array([(right - left) / box.width, (top - bottom) / box.height])
+    on_page = (places - [left, bottom]) / per_mm
+    order = np.argsort(ranks, kind="stable")
+    shown = order[: _NUMBERED if box.width >= 50.0 else _NUMBERED_SMALL]
+    for site, disc in zip(shown.tolist(), _free_places(on_page, shown, box), strict=True):
+        spot = disc * per_mm + [left, bottom]
+        axes.plot(*zip(places[site], spot, strict=True), color=INK, lw=0.3, zorder=4, clip_on=False)
+        disc_of = {"boxstyle": "circle,pad=0.15", "fc": "white", "ec": INK, "lw": 0.4}
+        axes.annotate(
+            str(ranks[site]),
+            (spot[0], spot[1]),
+            fontsize=SMALL,
+            ha="center",
+            va="center",
+            zorder=6,
+            bbox=disc_of,
+            annotation_clip=False,
+        )
+
+
+def _free_places(on_page: Real, shown: NDArray[np.int64], box: Box) -> list[Real]:
+    """Return for each numbered site, in mm, where its disc meets the fewest others and sites, near by."""
+    turns = np.linspace(0.0, 2.0 * np.pi, 12, endpoint=False) + np.pi / 4.0
+    ring = np.stack((np.cos(turns), np.sin(turns)), axis=1)
+    offsets = np.concatenate([ring * (factor * _DISC) for factor in (1.9, 2.9, 4.0, 5.5, 7.5)])
+    taken: list[Real] = []
+    for site in shown.tolist():
+        options = on_page[site] + offsets
+        outside = (options < _DISC).any(axis=1) | (options > [box.width - _DISC, box.height - _DISC]).any(
+            axis=1
+        )
+        overlap = np.zeros(len(options))
+        for other, clearance in [
+            *((disc, 2.2 * _DISC) for disc in taken),
+            *((dot, 1.4 * _DISC) for dot in on_page),
+        ]:
+            overlap += np.maximum(clearance - np.linalg.norm(options - other, axis=1), 0.0)
+        cost = overlap + 100.0 * outside + 0.05 * np.linalg.norm(offsets, axis=1)
+        taken.append(options[np.argmin(cost)])
+    return taken
