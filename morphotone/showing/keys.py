@@ -9,8 +9,8 @@ from matplotlib.lines import Line2D
 from numpy.typing import NDArray
 
 from morphotone.questions.portrait import Portrait
-from morphotone.showing.colours import CONTINUOUS, INK, Scale, domain_style
-from morphotone.showing.panels import BACK, ENDLESS, LINE, domains_of
+from morphotone.showing.colours import CONTINUOUS, INK, Scale
+from morphotone.showing.panels import BACK, ENDLESS, LINE, OTHER, styles_of
 from morphotone.showing.sheet import SMALL, Box, axes_at, factor_ticks, number_text, round_length
 
 Real = NDArray[np.float64]
@@ -88,8 +88,8 @@ def _ticks(least: float, greatest: float, logarithmic: bool, most: int) -> tuple
 def draw_key(figure: Figure, box: Box, portrait: Portrait) -> None:
     """Explain the lines of the courses and the trees, in one or two rows across a box."""
     handles = [
-        Line2D([], [], lw=2 * LINE, label=name_of(domain), **domain_style(domain).line)
-        for domain in domains_of(portrait)
+        Line2D([], [], lw=2 * LINE, label=_in_words(name, portrait), **style.line)
+        for name, style in styles_of(portrait).items()
     ]
     handles.append(Line2D([], [], label="from the soma", **BACK))
     if np.isfinite(portrait.endless.lambda_um):
@@ -113,9 +113,12 @@ def draw_key(figure: Figure, box: Box, portrait: Portrait) -> None:
     )
 
 
-def name_of(domain: str) -> str:
-    """Return a domain as a reader knows it."""
-    return f"type {domain}" if domain.lstrip("-").isdigit() else domain
+def _in_words(name: str, portrait: Portrait) -> str:
+    """Return a domain as a reader knows it, the type codes without a name as numbers."""
+    if name != OTHER:
+        return name
+    codes = sorted({run.domain for run in portrait.runs if run.domain.lstrip("-").isdigit()}, key=int)
+    return f"type {', '.join(codes[:4])}{', …' if len(codes) > 4 else ''}"
 
 
 def mark_sites(axes: Axes, box: Box, places: Real, ranks: NDArray[np.int64]) -> None:

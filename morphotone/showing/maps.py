@@ -112,8 +112,8 @@ def _one_column(inner: float, aspect: float) -> Layout:
 
 
 def _two_columns(inner: float, aspect: float) -> Layout:
-    if aspect < 0.8:
-        cell = Box(_EDGE, _TOP, inner, float(np.clip(inner * aspect, 35.0, 80.0)))
+    if aspect < 0.6:
+        cell = Box(_EDGE, _TOP, inner, float(np.clip(inner * aspect, 35.0, 62.0)))
         below = Box(_EDGE, cell.bottom, inner, _BELOW_CELL)
         key = Box(_EDGE, below.bottom + 2.0, inner, 4.0)
         courses = Box(_EDGE, key.bottom + _TITLE_MM, inner, 38.0)
@@ -127,8 +127,8 @@ def _two_columns(inner: float, aspect: float) -> Layout:
         courses = right.inside(top=6.0, bottom=_BELOW, left=_LEFT)
         frames = courses.rows(2, _BELOW + _TITLE_MM)
         bottom = left.bottom
-    trees = Box(_EDGE, bottom + 1.5 * _TITLE_MM, inner, 40.0)
-    flats = Box(_EDGE, trees.bottom + 1.2 * _TITLE_MM, inner, 38.0)
+    trees = Box(_EDGE, bottom + 1.5 * _TITLE_MM, inner, 38.0)
+    flats = Box(_EDGE, trees.bottom + 1.2 * _TITLE_MM, inner, 35.0)
     return Layout(
         cell, below, key, frames, trees.columns(4, _GAP), flats.columns(4, _GAP), flats.bottom + _BELOW + 1.0
     )
@@ -211,6 +211,7 @@ def _three(value: float) -> str:
 def _foot(portrait: Portrait) -> list[str]:
     """Return what was assumed and where the cell comes from, in phrases."""
     rec, assumed = portrait.cell.rec, portrait.cell.assumptions
+    rule = portrait.cell.cable.traced.soma.rule
     membrane = assumed.membrane
     shunt = f"soma shunt {number_text(assumed.soma_shunt_nS)} nS" if assumed.soma_shunt_nS else ""
     phrases = [
@@ -222,7 +223,7 @@ def _foot(portrait: Portrait) -> list[str]:
         *(_own_constants(domain_name(code), assumed.of(code), membrane) for code in assumed.domains),
         shunt,
         f"axon {assumed.axon}",
-        f"soma: {portrait.cell.cable.traced.soma.rule}",
+        f"soma: {rule}" if rule != "none" else "no soma: the root sample stands for it",
         "passive membrane, sealed ends",
         f"lines at least {THINNEST:g} points wide",
         f"{rec.file.rsplit('/', 1)[-1]}, SHA-256 {rec.sha256[:12]}…, {portrait.cell.vetting.grade}",

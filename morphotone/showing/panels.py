@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from morphotone.cable.traced import SPHERES
 from morphotone.questions.portrait import Portrait
-from morphotone.showing.colours import FAINT, INK, Scale, domain_style
+from morphotone.showing.colours import FAINT, INK, Scale, Style, domain_style
 from morphotone.showing.sheet import (
     MOST_VECTOR_LINES,
     POINTS_PER_MM,
@@ -29,6 +29,7 @@ Real = NDArray[np.float64]
 Plane = Literal["xy", "xz", "yz"]
 
 PLANES: dict[Plane, tuple[int, int, int]] = {"xy": (0, 1, 2), "xz": (0, 2, 1), "yz": (1, 2, 0)}
+OTHER = "other"
 THINNEST = 0.25  # points: a thinner line is lost in print
 LINE = 0.6  # points, of lines whose width means nothing
 MEASURES = {
@@ -232,7 +233,7 @@ def draw_course(figure: Figure, box: Box, portrait: Portrait, measure: Literal["
     axes.set_xlim(0.0, 1.02 * farthest)
     axes.set_ylim(0.0, 1.05 * greatest)
     axes.spines[["right", "top"]].set_visible(False)
-    axes.set_xlabel(MEASURES[measure] + (" from the soma" if measure == "path_um" else ""))
+    axes.set_xlabel("path from the soma (µm)" if measure == "path_um" else MEASURES[measure])
     axes.set_ylabel("attenuation (log scale)")
     _set_scale(axes, "x", measure, farthest, box.width)
     _set_scale(axes, "y", "to_soma", 1.05 * greatest, box.height)
@@ -254,11 +255,10 @@ def _set_scale(axes: Axes, which: Literal["x", "y"], measure: str, greatest: flo
 
 
 def _add_runs(axes: Axes, portrait: Portrait, lines: Sequence[Real]) -> None:
-    """Add lines of the cell's runs, one collection per domain, in its style."""
+    """Add lines of the cell's runs, one collection for all in one style."""
     dense = sum(len(line) for line in lines) > MOST_VECTOR_LINES
-    for domain in domains_of(portrait):
-        style = domain_style(domain)
-        some = [line for run, line in zip(portrait.runs, lines, strict=True) if run.domain == domain]
+    for name, style in styles_of(portrait).items():
+        some = [line for run, line in zip(portrait.runs, lines, strict=True) if _group(run.domain) == name]
         collection = LineCollection(
             some,
             colors=[style.colour],
@@ -266,12 +266,19 @@ def _add_runs(axes: Axes, portrait: Portrait, lines: Sequence[Real]) -> None:
             linestyles=[style.line["linestyle"]],
             capstyle="butt",
             rasterized=dense,
-            gid=domain,
+            gid=name,
         )
         axes.add_collection(collection, autolim=False)
 
 
-def domains_of(portrait: Portrait) -> list[str]:
-    """Return the domains that the cable has, the one with the most lines first."""
-    names = [run.domain for run in portrait.runs]
-    return sorted(set(names), key=lambda name: (-names.count(name), name))
+def styles_of(portrait: Portrait) -> dict[str, Style]:
+    """Return how the cell's domains are drawn, the one with the most lines first; one alone needs no dashes."""
+    names = [_group(run.domain) for run in portrait.runs]
+    ordered = sorted(set(names), key=lambda name: (-names.count(name), name))
+    styles = {name: domain_style(name) for name in ordered}
+    return styles if len(styles) > 1 else {name: Style(one.colour, ()) for name, one in styles.items()}
+
+
+def _group(domain: str) -> str:
+    """Return the domain, or "other" for all type codes without a name, which share a style."""
+    return OTHER if domain.lstrip("-").isdigit() else domain
