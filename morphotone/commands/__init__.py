@@ -15,6 +15,7 @@ from morphotone.errors import MorphotoneError, ReadingError, TurnedAwayError
 COMMANDS = {
     "vet": "which reconstructions can be trusted for cable work, and what is wrong with the others",
     "survey": "the night's run: every cell of a folder, to CSV tables",
+    "map": "what a person looks at of each cell: a figure of its attenuation, a thumbnail, a table",
     "rank": "which synapses are electrotonically far or weak, in what order",
     "assumptions": "print a commented assumptions file with the defaults, or check one",
 }
@@ -27,7 +28,7 @@ Each command's own --help has units and examples. Results hold under the passive
 assumptions; they are for research, not for clinical or device decisions.
 """
 
-_RESUMED = ("survey",)  # commands with a ledger
+_RESUMED = ("survey", "map")  # commands with a ledger
 
 ALL_WELL, TURNED_AWAY, WRONG_USAGE, INTERRUPTED = 0, 1, 2, 130
 

@@ -1,7 +1,6 @@
 """`morphotone survey`: the night's run over a folder, to CSV tables."""
 
 import argparse
-import hashlib
 import os
 import sys
 from collections.abc import Sequence
@@ -19,8 +18,8 @@ import pandas as pd
 
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.synaptic import SynapticCurrent
+from morphotone.commands.contents import content_of, is_known
 from morphotone.commands.options import add_assumption_options, assumptions_of
-from morphotone.errors import ReadingError
 from morphotone.night.folder import PATTERNS, find_files
 from morphotone.night.ledger import Ledger
 from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER, Item, Outcome, Status
@@ -32,7 +31,6 @@ from morphotone.night.runner import run as run_night
 from morphotone.questions.columns import Columns
 from morphotone.questions.survey import Answer, Request, answers, cell_name, headers
 from morphotone.questions.time_axis import TimeRequest
-from morphotone.reading.swc import read_bytes
 from morphotone.showing.tables import csv_texts
 
 NAME = "survey"
@@ -191,8 +189,8 @@ def write_survey(
 
 def outcomes(items: list[Item], request: Request) -> list[Outcome]:
     """Work on a batch of the night's items; a file whose bytes are known is left as it is."""
-    contents = {item.name: _content(item) for item in items}
-    unchanged = {item.name for item in items if _is_known(contents[item.name], item.known_sha256)}
+    contents = {item.name: content_of(item) for item in items}
+    unchanged = {item.name for item in items if is_known(contents[item.name], item.known_sha256)}
     given = answers([(name, content) for name, content in contents.items() if name not in unchanged], request)
     parts = _parts(given)
     worked = {answer.name: _outcome(answer, parts[answer.name]) for answer in given}
@@ -202,18 +200,6 @@ def outcomes(items: list[Item], request: Request) -> list[Outcome]:
         else worked[item.name]
         for item in items
     ]
-
-
-def _content(item: Item) -> bytes | ReadingError:
-    """Return a file's bytes, or the error that says why they cannot be had."""
-    try:
-        return read_bytes(item.path, name=item.name)
-    except ReadingError as error:
-        return error
-
-
-def _is_known(content: bytes | ReadingError, sha256: str | None) -> bool:
-    return sha256 is not None and isinstance(content, bytes) and hashlib.sha256(content).hexdigest() == sha256
 
 
 def _parts(given: Sequence[Answer]) -> dict[str, dict[str, bytes]]:

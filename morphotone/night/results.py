@@ -114,7 +114,7 @@ def export_each(ledger: Ledger, names: Sequence[str], table: str, header: str) -
             _write(stream, header, [text])
         written.add(places[name])
     for name in places:
-        for file in (_plain_file(name), _marked_file(name)):
+        for file in spellings(name):
             stale = folder / f"{file}.csv"
             if stale not in written:
                 stale.unlink(missing_ok=True)
@@ -135,6 +135,11 @@ def file_names(names: Iterable[str]) -> dict[str, str]:
     plain = {name: _plain_file(name) for name in names}
     often = Counter(file.casefold() for file in plain.values())
     return {name: file if often[file.casefold()] == 1 else _marked_file(name) for name, file in plain.items()}
+
+
+def spellings(name: str) -> tuple[str, str]:
+    """Return the paths that `file_names` may give a name, without and with a mark."""
+    return _plain_file(name), _marked_file(name)
 
 
 def _write(stream: BinaryIO, header: str, texts: Iterable[bytes]) -> None:

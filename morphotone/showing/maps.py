@@ -1,7 +1,7 @@
 """The map of one cell: its panels on one page, a thumbnail, and a colour bar to stand beside a mesh."""
 
 from importlib.metadata import version
-from typing import Literal, NamedTuple
+from typing import NamedTuple
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -46,7 +46,6 @@ _BELOW_CELL = 11.0  # its scale bar and the colour bar
 _LEFT, _BELOW = 9.0, 7.5  # what a course needs for its scales
 _GAP = 4.0
 _TOP = _EDGE + _HEAD + _TITLE_MM
-_COURSES: tuple[Literal["path_um"], Literal["X"]] = ("path_um", "X")
 _MEASURES = ("path_um", "X", "to_soma", "from_soma")
 
 
@@ -143,7 +142,7 @@ def _draw_panels(figure: Figure, layout: Layout, portrait: Portrait, scale: Scal
     if marks is not None:
         mark_sites(axes, layout.cell, marks.position[:, [across, up]], marks.rank)
     draw_key(figure, layout.key, portrait)
-    for box, measure in zip(layout.courses, _COURSES, strict=True):
+    for box, measure in zip(layout.courses, _MEASURES[:2], strict=True):
         axes = draw_course(figure, box, portrait, measure)
         if marks is not None:
             places = np.stack((getattr(marks.distances, measure), marks.distances.to_soma), axis=1)

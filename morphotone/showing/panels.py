@@ -212,7 +212,7 @@ def _elbows(portrait: Portrait, distance: Real) -> Iterator[Real]:
         yield line
 
 
-def draw_course(figure: Figure, box: Box, portrait: Portrait, measure: Literal["path_um", "X"]) -> Axes:
+def draw_course(figure: Figure, box: Box, portrait: Portrait, measure: str) -> Axes:
     """Draw attenuation against a distance, every branch as a line, over that of the endless cable."""
     axes = axes_at(figure, box)
     distances = portrait.distances
@@ -272,7 +272,7 @@ def _add_runs(axes: Axes, portrait: Portrait, lines: Sequence[Real]) -> None:
 
 
 def styles_of(portrait: Portrait) -> dict[str, Style]:
-    """Return how the cell's domains are drawn, the one with the most lines first; one alone needs no dashes."""
+    """Return how the cell's domains are drawn, that with the most lines first; one alone needs no dashes."""
     names = [_group(run.domain) for run in portrait.runs]
     ordered = sorted(set(names), key=lambda name: (-names.count(name), name))
     styles = {name: domain_style(name) for name in ordered}

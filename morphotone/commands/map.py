@@ -1,0 +1,385 @@
+"""`morphotone map`: what a person looks at of each cell: figure, thumbnail and table."""
+
+import argparse
+import os
+import sys
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass, replace
+from datetime import UTC, datetime
+from functools import partial
+from importlib.metadata import version
+from pathlib import Path, PurePath
+from typing import Any
+
+import joblib
+import pandas as pd
+from matplotlib.figure import Figure
+
+from morphotone.cable.assumptions import Assumptions
+from morphotone.commands.drawing import (
+    SITES_TABLE,
+    TABLE,
+    TABLE_COLUMNS,
+    Work,
+    delete_stale,
+    drawn,
+    incomplete,
+    outcomes,
+)
+from morphotone.commands.marked import sites_on
+from morphotone.commands.options import add_assumption_options, assumptions_of
+from morphotone.errors import ReadingError
+from morphotone.night.folder import PATTERNS, Found, find_files, written_name
+from morphotone.night.ledger import Ledger
+from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER, csv_line
+from morphotone.night.progress import Progress, progress_on
+from morphotone.night.record import run_record, write_record
+from morphotone.night.results import atomic, export, file_names
+from morphotone.night.runner import Tally
+from morphotone.night.runner import run as run_night
+from morphotone.questions.placing import FARTHEST_UM
+from morphotone.questions.portrait import COLOUR
+from morphotone.questions.survey import SPECIMEN, Answer, Request
+from morphotone.reading.swc import read_bytes
+from morphotone.showing.map_files import MapRequest
+from morphotone.showing.maps import WIDTHS_MM, map_figure
+from morphotone.showing.panels import PLANES, Plane
+from morphotone.showing.sheet import FORMATS
+
+NAME = "map"
+
+
+_EPILOG = """\
+the figure: the cell to scale, coloured by attenuation; attenuation against path and X, every branch a line,
+over that of an endless cable like the thickest stem; the morphoelectrotonic transform (directions kept,
+lengths replaced) by path, X, attenuation toward and from the soma; the same trees laid out flat.
+
+what is written into MAPS, one of each per cell:
+  figures/          the figure, 175 mm wide, or 85 mm without the trees laid out flat
+  thumbnails/       the cell alone, 320 dots wide
+  samples/          the table by sample, as `morphotone survey --samples` writes it
+and for all of them:
+  maps.csv          one row per cell drawn, with the paths of its files
+  turned_away.csv   one row per file not drawn, with the reason
+  turned_away_sites.csv  with --synapses: one row per site not marked, with the reason
+  assumptions.toml, run.json, ledger.sqlite  as of a survey: the same command again goes on from there
+
+example:
+  morphotone map sample_morphologies/spar_01.swc --into maps --synapses sample_morphologies/sites.csv
+
+exit code: 0 all drawn, 1 a file or a site was turned away, 2 wrong usage, unusable assumptions, column or
+folder, 130 interrupted
+"""
+
+
+@dataclass(frozen=True, eq=False)
+class Maps:
+    """What `draw_maps` wrote.
+
+    Attributes
+    ----------
+    maps : DataFrame
+        One row per cell drawn: ``file``, ``cell`` and the paths of its files below the folder, empty where
+        there is none.
+    turned_away : DataFrame
+        One row per file not drawn.
+    turned_away_sites : DataFrame
+        One row per site not marked; empty without sites.
+    sites : dict of str to int
+        ``sites`` = ``marked`` + ``turned_away`` + ``elsewhere`` (of other cells than a single one drawn);
+        empty without sites.
+    tally : Tally
+        Files found = drawn (``analysed``) + turned away.
+    """
+
+    maps: pd.DataFrame
+    turned_away: pd.DataFrame
+    turned_away_sites: pd.DataFrame
+    sites: dict[str, int]
+    tally: Tally
+
+
+def draw_map(
+    path: str | os.PathLike[str],
+    assumptions: Assumptions | None = None,
+    *,
+    synapses: str | os.PathLike[str] | None = None,
+    hz: float = 0.0,
+    colour: str | None = None,
+    width_mm: int = 175,
+    plane: Plane = "xy",
+    keep_unfit: bool = False,
+) -> Figure:
+    """Draw the map of one cell.
+
+    Parameters
+    ----------
+    path : path
+        The cell's file.
+    assumptions : Assumptions, optional
+        The defaults unless given.
+    synapses : path, optional
+        A file of sites, of which those of this cell are marked.
+    hz : float
+        The frequency to show.
+    colour : str, optional
+        The column of the table by sample that colours; log attenuation toward the soma unless given.
+    width_mm : {175, 85}
+        Two columns of a journal, or one.
+    plane : {"xy", "xz", "yz"}
+        Coordinates that go across and up.
+    keep_unfit : bool
+        Draw a file of grade unfit too.
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+        Bound to no window; its ``savefig`` writes it.
+
+    Raises
+    ------
+    ReadingError
+        The file, or that of the sites, cannot be read, or the cell is turned away.
+    MorphotoneError
+        There is no such numeric column.
+    """
+    content = read_bytes(path)
+    file = _one_file(Path(path))
+    shown = MapRequest(width_mm=width_mm, plane=plane, hz=hz, colour=colour)
+    request = Request(_with_hz(assumptions or Assumptions(), hz), keep_unfit)
+    work = Work(Path(), request, shown, {}, sites_on([file], synapses, alone=True).per_file)
+    portrait, _ = drawn(file.name, content, work)
+    if isinstance(portrait, Answer):
+        raise ReadingError(portrait.sentence, portrait.reason)
+    return map_figure(portrait, width_mm, plane)
+
+
+def draw_maps(
+    path: str | os.PathLike[str],
+    into: str | os.PathLike[str],
+    *,
+    assumptions: Assumptions | None = None,
+    synapses: str | os.PathLike[str] | None = None,
+    shown: MapRequest | None = None,
+    keep_unfit: bool = False,
+    farthest_um: float = FARTHEST_UM,
+    patterns: Sequence[str] = PATTERNS,
+    workers: int = 1,
+    strict: bool = False,
+    progress: Progress | None = None,
+) -> Maps:
+    """Draw the maps of a file or of all files of a folder, and write them.
+
+    Parameters
+    ----------
+    path : path
+        A file, or a folder that is searched at any depth.
+    into : path
+        The maps' folder. What an earlier run of the same kind drew there is kept where the cell's bytes are
+        the same and its files are still there; those of a single file stand beside the others.
+    assumptions : Assumptions, optional
+        The defaults unless given.
+    synapses : path, optional
+        A file of sites to be marked.
+    shown : MapRequest, optional
+        Formats, width, plane, frequency, colour and mesh.
+    keep_unfit : bool
+        Draw files of grade unfit too.
+    farthest_um : float
+        Sites in space farther than this from the cable are turned away, µm.
+    patterns : sequence of str
+        Which file names of a folder count.
+    workers : int
+        Number of processes; 0 for one per processor.
+    strict : bool
+        Stop at the first file turned away.
+    progress : Progress, optional
+        Told about each cell.
+
+    Raises
+    ------
+    MorphotoneError
+        There is no such path, no such file in it, or no such column to colour by.
+    ReadingError
+        The file of sites cannot be read as such.
+    TurnedAwayError
+        In strict mode, the first file turned away.
+    ResultsError
+        The folder holds something else or maps drawn otherwise, or cannot be written to.
+    """
+    started = datetime.now(UTC)
+    into, shown = Path(into), shown or MapRequest()
+    request = Request(_with_hz(assumptions or Assumptions(), shown.hz), keep_unfit)
+    _check(request, shown)
+    alone = Path(path).is_file()
+    found = [_one_file(Path(path))] if alone else find_files(path, patterns, exclude=into)
+    sites = sites_on(found, synapses, alone)
+    asked = {**_fingerprint(request, shown), "farthest_um": farthest_um, "sites_sha256": sites.sha256}
+    with Ledger(into, asked) as ledger:
+        before = ledger.known()
+        names = file_names({*before, *(file.name for file in found)})
+        work = Work(into, request, shown, names, sites.per_file, farthest_um)
+        ledger.forget(incomplete(_drawn_of(ledger, before), work))
+        tally = run_night(
+            found,
+            partial(outcomes, work=work),
+            ledger=ledger,
+            progress=progress,
+            workers=workers if workers > 0 else joblib.cpu_count(),
+            batch_bytes=1,  # one cell at a time: drawing it takes as long as a survey of many
+            strict=strict,
+        )
+        # A single file stands beside those drawn before; a folder is all there is.
+        listed = sorted({*before, *names} if alone else {file.name for file in found}, key=str.encode)
+        delete_stale(names, _drawn_of(ledger, listed), work)
+        away = sites.turned_away(ledger, listed)
+        _write(ledger, listed, request, away if sites.file else None)
+        details = {"path": str(path), "patterns": list(patterns), **asked}
+        details |= {"sites": sites.counts(away), "warnings": list(request.assumptions.warnings)}
+        record = run_record(started=started, tally=tally, ledger=ledger, names=listed, details=details)
+        write_record(into / "run.json", record)
+    tables = (_read(into / f"{name}.csv") for name in (TABLE, TURNED_AWAY))
+    return Maps(*tables, away, sites.counts(away), tally)
+
+
+def _one_file(path: Path) -> Found:
+    return Found(path, written_name(PurePath(path.name)), path.stat().st_size)
+
+
+def _drawn_of(ledger: Ledger, names: Iterable[str]) -> list[str]:
+    """Return those of the names whose cells are drawn."""
+    known = ledger.known()
+    return [name for name in names if name in known and known[name].status == "analysed"]
+
+
+def _with_hz(assumptions: Assumptions, hz: float) -> Assumptions:
+    """Return the assumptions with the frequency shown among theirs."""
+    if hz == 0.0 or hz in assumptions.hz:
+        return assumptions
+    return replace(assumptions, hz=(*assumptions.hz, hz))
+
+
+def _check(request: Request, shown: MapRequest) -> None:
+    """See before any work that what is asked for can be drawn, on a ball and stick."""
+    # Of the assumptions only the frequencies matter to that; the others might turn the specimen away.
+    plain = replace(request, assumptions=Assumptions(hz=request.assumptions.hz), keep_unfit=True)
+    drawn("specimen", SPECIMEN, Work(Path(), plain, shown))
+
+
+def _fingerprint(request: Request, shown: MapRequest) -> dict[str, Any]:
+    """Return all that the maps depend on besides the files of cells and of sites."""
+    return {
+        "morphotone": version("morphotone"),
+        "matplotlib": version("matplotlib"),
+        "keep_unfit": request.keep_unfit,
+        **shown.to_dict(),
+        "assumptions": request.assumptions.to_dict(),
+    }
+
+
+def _write(ledger: Ledger, listed: Sequence[str], request: Request, away: pd.DataFrame | None) -> None:
+    """Write what there is one of for all cells."""
+    export(ledger, listed, {TABLE: ",".join(TABLE_COLUMNS), TURNED_AWAY: TURNED_AWAY_HEADER})
+    if away is not None:
+        with atomic(ledger.folder / f"{SITES_TABLE}.csv") as stream:
+            stream.write(csv_line(*away.columns))
+            stream.writelines(csv_line(*map(str, row)) for row in away.itertuples(index=False))
+    with atomic(ledger.folder / "assumptions.toml") as stream:
+        stream.write(request.assumptions.to_toml())
+
+
+def _read(path: Path) -> pd.DataFrame:
+    """Read a table of words back, an empty cell as no text."""
+    table: pd.DataFrame = pd.read_csv(path, keep_default_na=False, dtype="str")
+    return table
+
+
+def add_arguments(parser: argparse.ArgumentParser) -> None:
+    """Add the command's arguments to its parser."""
+    parser.formatter_class = argparse.RawDescriptionHelpFormatter
+    parser.epilog = _EPILOG
+    parser.add_argument(
+        "path", metavar="FILE_OR_FOLDER", type=Path, help="a cell, or a folder searched at any depth"
+    )
+    parser.add_argument("--into", metavar="MAPS", type=Path, required=True, help="the maps' folder")
+    add_assumption_options(parser)
+    parser.add_argument(
+        "--hz",
+        metavar="HZ",
+        type=float,
+        nargs="+",
+        help="frequencies besides 0 Hz for the table, in Hz; the figure shows the first (0 Hz unless given)",
+    )
+    parser.add_argument(
+        "--colour",
+        metavar="COLUMN",
+        help=f"numeric column of the table by sample that colours (default: {COLOUR})",
+    )
+    parser.add_argument("--synapses", metavar="SITES.csv", type=Path, help="mark these sites by rank")
+    parser.add_argument(
+        "--farthest-um",
+        metavar="UM",
+        type=float,
+        default=FARTHEST_UM,
+        help="turn away sites in space farther than this from the cable, in um (default: %(default)g)",
+    )
+    parser.add_argument(
+        "--figure",
+        choices=FORMATS,
+        nargs="+",
+        default=["png"],
+        help="formats of the figure (default: %(default)s)",
+    )
+    parser.add_argument(
+        "--width", type=int, choices=WIDTHS_MM, default=WIDTHS_MM[-1], help="width of the figure, in mm"
+    )
+    parser.add_argument(
+        "--plane", choices=list(PLANES), default="xy", help="coordinates that go across and up"
+    )
+    parser.add_argument("--keep-unfit", action="store_true", help="draw files of grade unfit too")
+    parser.add_argument(
+        "--pattern",
+        metavar="GLOB",
+        nargs="+",
+        default=list(PATTERNS),
+        help="names of the files to take (default: %(default)s; upper and lower case alike)",
+    )
+    parser.add_argument(
+        "--workers", metavar="N", type=int, default=0, help="processes (default: one per processor)"
+    )
+    parser.add_argument("--strict", action="store_true", help="stop at the first file turned away")
+
+
+def run(args: argparse.Namespace) -> int:
+    """Draw, write, say how it went, and return the exit code."""
+    shown = MapRequest(
+        tuple(dict.fromkeys(args.figure)), args.width, args.plane, args.hz[0] if args.hz else 0.0, args.colour
+    )
+    made = draw_maps(
+        args.path,
+        args.into,
+        assumptions=assumptions_of(args),
+        synapses=args.synapses,
+        shown=shown,
+        keep_unfit=args.keep_unfit,
+        farthest_um=args.farthest_um,
+        patterns=args.pattern,
+        workers=args.workers,
+        strict=args.strict,
+        progress=progress_on(sys.stderr),
+    )
+    tally, sites = made.tally, made.sites
+    again = f" ({tally.unchanged} of them unchanged since an earlier run)" if tally.unchanged else ""
+    files = "file" if tally.found == 1 else "files"
+    print(f"{tally.found} {files} found = {tally.analysed} drawn + {tally.turned_away} turned away{again}")
+    if sites:
+        other = f" + {sites['elsewhere']} of other cells" if sites["elsewhere"] else ""
+        print(
+            f"{sites['sites']} sites = {sites['marked']} marked + {sites['turned_away']} turned away{other}"
+        )
+    print(f"maps: {args.into}")
+    if tally.turned_away:
+        print(f"why files were turned away: {args.into / 'turned_away.csv'}")
+    if sites and sites["turned_away"]:
+        print(f"why sites were turned away: {args.into / 'turned_away_sites.csv'}")
+    return int(tally.turned_away > 0 or bool(sites and sites["turned_away"]))

@@ -1,0 +1,114 @@
+"""The files that the map of one cell comes to, as bytes, and the places they have below the maps' folder."""
+
+from dataclasses import dataclass
+from typing import Any, Literal
+
+import numpy as np
+
+from morphotone.errors import ReadingError
+from morphotone.questions.portrait import Portrait
+from morphotone.showing.maps import map_figure, thumbnail
+from morphotone.showing.panels import Plane
+from morphotone.showing.sheet import Format, figure_bytes
+from morphotone.showing.tables import LINE_END, csv_texts
+
+MeshKind = Literal["glb", "ply", "obj"]
+
+#: Columns of ``maps.csv`` after the names, each the path of a file, empty where none was asked for.
+COLUMNS = ("figure", "thumbnail", "mesh", "colour_bar", "table")
+_THUMBNAIL_DPI = 96
+
+
+@dataclass(frozen=True)
+class MapRequest:
+    """What is asked of every cell's map.
+
+    Attributes
+    ----------
+    formats : tuple of {"png", "svg", "pdf"}
+        Of the figure; the first stands in ``maps.csv``.
+    width_mm : int
+        Of the figure.
+    plane : {"xy", "xz", "yz"}
+        Coordinates that go across and up.
+    hz : float
+        Frequency that is shown.
+    colour : str or None
+        Column of the table by sample that colours; log attenuation toward the soma if None.
+    mesh : {"glb", "ply", "obj"} or None
+        Kind of mesh, if one is wanted.
+    """
+
+    formats: tuple[Format, ...] = ("png",)
+    width_mm: int = 175
+    plane: Plane = "xy"
+    hz: float = 0.0
+    colour: str | None = None
+    mesh: MeshKind | None = None
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the request as JSON types."""
+        return {
+            "figure": list(self.formats),
+            "width_mm": self.width_mm,
+            "plane": self.plane,
+            "shown_hz": self.hz,
+            "colour": self.colour,
+            "mesh": self.mesh,
+        }
+
+
+def places(name: str, request: MapRequest) -> dict[str, list[str]]:
+    """Return the paths of a cell's files below the maps' folder, by column of ``maps.csv``.
+
+    Parameters
+    ----------
+    name : str
+        A safe relative path, as `morphotone.night.results.file_names` gives it.
+    request : MapRequest
+        What is asked.
+    """
+    return {
+        "figure": [f"figures/{name}.{kind}" for kind in request.formats],
+        "thumbnail": [f"thumbnails/{name}.png"],
+        "table": [f"samples/{name}.csv"],
+    }
+
+
+def contents(portrait: Portrait, file: str, request: MapRequest) -> dict[str, list[bytes]]:
+    """Return what these files hold, in the same order.
+
+    Parameters
+    ----------
+    portrait : Portrait
+        The cell.
+    file : str
+        The name its table is led by.
+    request : MapRequest
+        What is asked.
+
+    Raises
+    ------
+    ReadingError
+        Its distances are no finite numbers (reason ``not_drawable``).
+    """
+    if not all(np.isfinite(values).all() for values in portrait.distances):
+        raise ReadingError(
+            f"{file}: read sizes for which attenuation is no finite number, expected those of a neuron; "
+            "check the file's unit, and leave --keep-unfit out",
+            "not_drawable",
+        )
+    figure = map_figure(portrait, request.width_mm, request.plane)
+    return {
+        "figure": [figure_bytes(figure, kind) for kind in request.formats],
+        "thumbnail": [figure_bytes(thumbnail(portrait, request.plane), "png", _THUMBNAIL_DPI)],
+        "table": [_table(portrait, file)],
+    }
+
+
+def _table(portrait: Portrait, file: str) -> bytes:
+    """Return the table by sample as a survey writes it."""
+    names = {"file": file, "cell": portrait.cell.rec.cell}
+    (rows,) = csv_texts([portrait.table], [list(names.values())])
+    header = ",".join([*names, *portrait.table])
+    return f"{header}{LINE_END}{rows}".encode()
