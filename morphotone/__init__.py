@@ -21,12 +21,14 @@ if TYPE_CHECKING:
     from morphotone.cable.synaptic import SynapticCurrent
     from morphotone.cable.transients import Transients, potentials, transients
     from morphotone.cable.tree import Cable, build
+    from morphotone.commands.map import Maps, draw_map, draw_maps
     from morphotone.commands.rank import rank
     from morphotone.commands.survey import Survey, survey
     from morphotone.commands.vet import vet
     from morphotone.errors import AssumptionError, MorphotoneError, ReadingError, ResultsError
     from morphotone.questions.collected import Ranking
     from morphotone.reading.reconstruction import Reconstruction, read
+    from morphotone.showing.map_files import MapRequest
     from morphotone.showing.mesh import area_check, membrane_mesh, mesh_bytes
 
 _HOMES = {
@@ -49,6 +51,9 @@ _HOMES = {
     "Cable": "morphotone.cable.tree",
     "build": "morphotone.cable.tree",
     "Ranking": "morphotone.questions.collected",
+    "Maps": "morphotone.commands.map",
+    "draw_map": "morphotone.commands.map",
+    "draw_maps": "morphotone.commands.map",
     "rank": "morphotone.commands.rank",
     "Survey": "morphotone.commands.survey",
     "survey": "morphotone.commands.survey",
@@ -62,6 +67,7 @@ _HOMES = {
     "area_check": "morphotone.showing.mesh",
     "membrane_mesh": "morphotone.showing.mesh",
     "mesh_bytes": "morphotone.showing.mesh",
+    "MapRequest": "morphotone.showing.map_files",
 }
 
 __all__ = [
@@ -71,6 +77,8 @@ __all__ = [
     "Delays",
     "Electrotonus",
     "FrequencyResponse",
+    "MapRequest",
+    "Maps",
     "Membrane",
     "Modes",
     "MorphotoneError",
@@ -85,6 +93,8 @@ __all__ = [
     "area_check",
     "build",
     "delays",
+    "draw_map",
+    "draw_maps",
     "frequency_response",
     "half_power_hz",
     "membrane_mesh",

@@ -10,7 +10,7 @@ import pytest
 import morphotone
 from tests import trees
 
-HEAVY = {"numpy", "pandas", "scipy", "joblib", "sqlite3", "tqdm"}
+HEAVY = {"numpy", "pandas", "scipy", "joblib", "sqlite3", "tqdm", "matplotlib", "trimesh"}
 
 
 def loaded_after(code):
@@ -54,6 +54,10 @@ except SystemExit as left:
     assert left.code == 0
 """
     assert loaded_after(code) == set()
+
+
+def test_a_survey_does_not_wait_for_what_draws():
+    assert loaded_after("import morphotone.commands.survey").isdisjoint({"matplotlib", "trimesh"})
 
 
 def test_star_import_brings_the_public_names():

@@ -13,6 +13,7 @@ from morphotone.questions.site_answers import SiteRequest
 from morphotone.questions.site_answers import headers as site_headers
 from morphotone.questions.survey import Request, headers
 from morphotone.questions.time_axis import TimeRequest
+from morphotone.showing.map_files import COLUMNS as MAPS_COLUMNS
 
 README = (Path(__file__).parents[1] / "README.md").read_text(encoding="utf-8")
 DOMAINS = ("basal", "apical", "other")
@@ -67,6 +68,11 @@ def test_the_columns_of_ranking_are_those_explained(title: str) -> None:
     rows = re.findall(r"^\| ((?:`[^`]+`(?:, )?)+) \|", section(title), re.MULTILINE)
     explained = {name for row in rows for name in re.findall(r"`([^`]+)`", row)}
     assert explained == set(OF_SITES[title]) - {"file", "cell"}
+
+
+def test_every_column_of_maps_is_explained() -> None:
+    rows = re.findall(r"^\| ((?:`[^`]+`(?:, )?)+) \|", section("`maps.csv`"), re.MULTILINE)
+    assert [name for row in rows for name in re.findall(r"`([^`]+)`", row)] == list(MAPS_COLUMNS)
 
 
 def test_every_command_is_named() -> None:

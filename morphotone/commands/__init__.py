@@ -15,7 +15,7 @@ from morphotone.errors import MorphotoneError, ReadingError, TurnedAwayError
 COMMANDS = {
     "vet": "which reconstructions can be trusted for cable work, and what is wrong with the others",
     "survey": "the night's run: every cell of a folder, to CSV tables",
-    "map": "what a person looks at of each cell: a figure of its attenuation, a thumbnail, a table",
+    "map": "one cell or a folder to look at: figure of its attenuation, coloured mesh, table",
     "rank": "which synapses are electrotonically far or weak, in what order",
     "assumptions": "print a commented assumptions file with the defaults, or check one",
 }

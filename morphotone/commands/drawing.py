@@ -72,7 +72,7 @@ def _outcome(item: Item, work: Work) -> Outcome:
             with atomic_bytes(work.into / path) as stream:
                 stream.write(data)
     row = csv_line(item.name, rec.cell, *(next(iter(paths.get(column, [])), "") for column in COLUMNS))
-    parts = {TABLE: row, SITES_TABLE: site_lines(away)}
+    parts = {TABLE: row.encode(), SITES_TABLE: site_lines(away)}
     return Outcome(item.name, "analysed", rec.sha256, len(rec.number), parts)
 
 
@@ -112,9 +112,9 @@ def _turned_away(answer: Answer, work: Work) -> Outcome:
     )
 
 
-def site_lines(away: Iterable[TurnedAwaySite]) -> str:
+def site_lines(away: Iterable[TurnedAwaySite]) -> bytes:
     """Return sites turned away as CSV lines."""
-    return "".join(csv_line(*map(str, astuple(site))) for site in away)
+    return "".join(csv_line(*map(str, astuple(site))) for site in away).encode()
 
 
 def incomplete(names: Iterable[str], work: Work) -> list[str]:

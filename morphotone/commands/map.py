@@ -1,4 +1,4 @@
-"""`morphotone map`: what a person looks at of each cell: figure, thumbnail and table."""
+"""`morphotone map`: what a person looks at of each cell: figure, thumbnail, mesh and table."""
 
 import argparse
 import os
@@ -31,10 +31,10 @@ from morphotone.commands.options import add_assumption_options, assumptions_of
 from morphotone.errors import ReadingError
 from morphotone.night.folder import PATTERNS, Found, find_files, written_name
 from morphotone.night.ledger import Ledger
-from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER, csv_line
+from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER
 from morphotone.night.progress import Progress, progress_on
 from morphotone.night.record import run_record, write_record
-from morphotone.night.results import atomic, export, file_names
+from morphotone.night.results import atomic, atomic_bytes, export, file_names
 from morphotone.night.runner import Tally
 from morphotone.night.runner import run as run_night
 from morphotone.questions.placing import FARTHEST_UM
@@ -43,8 +43,10 @@ from morphotone.questions.survey import SPECIMEN, Answer, Request
 from morphotone.reading.swc import read_bytes
 from morphotone.showing.map_files import MapRequest
 from morphotone.showing.maps import WIDTHS_MM, map_figure
+from morphotone.showing.mesh import MESH_KINDS
 from morphotone.showing.panels import PLANES, Plane
 from morphotone.showing.sheet import FORMATS
+from morphotone.showing.tables import csv_table
 
 NAME = "map"
 
@@ -57,6 +59,7 @@ lengths replaced) by path, X, attenuation toward and from the soma; the same tre
 what is written into MAPS, one of each per cell:
   figures/          the figure, 175 mm wide, or 85 mm without the trees laid out flat
   thumbnails/       the cell alone, 320 dots wide
+  meshes/           with --mesh: the membrane in space, coloured, and its scale of colours as PNG
   samples/          the table by sample, as `morphotone survey --samples` writes it
 and for all of them:
   maps.csv          one row per cell drawn, with the paths of its files
@@ -238,8 +241,8 @@ def draw_maps(
         details |= {"sites": sites.counts(away), "warnings": list(request.assumptions.warnings)}
         record = run_record(started=started, tally=tally, ledger=ledger, names=listed, details=details)
         write_record(into / "run.json", record)
-    tables = (_read(into / f"{name}.csv") for name in (TABLE, TURNED_AWAY))
-    return Maps(*tables, away, sites.counts(away), tally)
+    table, turned_away = (_read(into / f"{name}.csv") for name in (TABLE, TURNED_AWAY))
+    return Maps(table, turned_away, away, sites.counts(away), tally)
 
 
 def _one_file(path: Path) -> Found:
@@ -281,9 +284,8 @@ def _write(ledger: Ledger, listed: Sequence[str], request: Request, away: pd.Dat
     """Write what there is one of for all cells."""
     export(ledger, listed, {TABLE: ",".join(TABLE_COLUMNS), TURNED_AWAY: TURNED_AWAY_HEADER})
     if away is not None:
-        with atomic(ledger.folder / f"{SITES_TABLE}.csv") as stream:
-            stream.write(csv_line(*away.columns))
-            stream.writelines(csv_line(*map(str, row)) for row in away.itertuples(index=False))
+        with atomic_bytes(ledger.folder / f"{SITES_TABLE}.csv") as table:
+            table.write(csv_table(away))
     with atomic(ledger.folder / "assumptions.toml") as stream:
         stream.write(request.assumptions.to_toml())
 
@@ -336,6 +338,9 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
         "--plane", choices=list(PLANES), default="xy", help="coordinates that go across and up"
     )
+    parser.add_argument(
+        "--mesh", choices=MESH_KINDS, help="write the membrane in space too, in um, the value at every vertex"
+    )
     parser.add_argument("--keep-unfit", action="store_true", help="draw files of grade unfit too")
     parser.add_argument(
         "--pattern",
@@ -353,7 +358,12 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 def run(args: argparse.Namespace) -> int:
     """Draw, write, say how it went, and return the exit code."""
     shown = MapRequest(
-        tuple(dict.fromkeys(args.figure)), args.width, args.plane, args.hz[0] if args.hz else 0.0, args.colour
+        formats=tuple(dict.fromkeys(args.figure)),
+        width_mm=args.width,
+        plane=args.plane,
+        hz=args.hz[0] if args.hz else 0.0,
+        colour=args.colour,
+        mesh=args.mesh,
     )
     made = draw_maps(
         args.path,

@@ -1,6 +1,7 @@
 """The file of sites that `morphotone map` marks: what of it lies where, and what is turned away."""
 
 import csv
+import io
 import os
 from collections.abc import Mapping, Sequence
 from dataclasses import astuple, dataclass
@@ -48,7 +49,7 @@ class SitesOn:
         if self.file:
             rows = [astuple(site) for site in (*self.file.turned_away, *self.unmatched)]
             for _, text in ledger.rows(SITES_TABLE, listed):
-                rows += list(csv.reader(text.splitlines()))
+                rows += list(csv.reader(io.StringIO(text.decode(), newline="")))
         table = pd.DataFrame(rows, columns=list(TURNED_AWAY_COLUMNS)).astype({"line": "int64"})
         return table.sort_values("line", kind="stable", ignore_index=True)
 

@@ -1,18 +1,19 @@
 """The files that the map of one cell comes to, as bytes, and the places they have below the maps' folder."""
 
 from dataclasses import dataclass
-from typing import Any, Literal
+from typing import Any
 
 import numpy as np
 
 from morphotone.errors import ReadingError
+from morphotone.night.outcome import csv_line
 from morphotone.questions.portrait import Portrait
-from morphotone.showing.maps import map_figure, thumbnail
+from morphotone.showing.keys import column_words, is_logarithmic
+from morphotone.showing.maps import colour_bar, map_figure, thumbnail
+from morphotone.showing.mesh import MeshKind, membrane_mesh, mesh_bytes
 from morphotone.showing.panels import Plane
 from morphotone.showing.sheet import Format, figure_bytes
-from morphotone.showing.tables import LINE_END, csv_texts
-
-MeshKind = Literal["glb", "ply", "obj"]
+from morphotone.showing.tables import csv_texts
 
 #: Columns of ``maps.csv`` after the names, each the path of a file, empty where none was asked for.
 COLUMNS = ("figure", "thumbnail", "mesh", "colour_bar", "table")
@@ -71,6 +72,8 @@ def places(name: str, request: MapRequest) -> dict[str, list[str]]:
     return {
         "figure": [f"figures/{name}.{kind}" for kind in request.formats],
         "thumbnail": [f"thumbnails/{name}.png"],
+        "mesh": [f"meshes/{name}.{request.mesh}"] if request.mesh else [],
+        "colour_bar": [f"meshes/{name}.scale.png"] if request.mesh else [],
         "table": [f"samples/{name}.csv"],
     }
 
@@ -90,7 +93,8 @@ def contents(portrait: Portrait, file: str, request: MapRequest) -> dict[str, li
     Raises
     ------
     ReadingError
-        Its distances are no finite numbers (reason ``not_drawable``).
+        Its distances are no finite numbers (reason ``not_drawable``), or there is nothing to make a mesh of
+        (``nothing_to_draw``).
     """
     if not all(np.isfinite(values).all() for values in portrait.distances):
         raise ReadingError(
@@ -101,14 +105,25 @@ def contents(portrait: Portrait, file: str, request: MapRequest) -> dict[str, li
     figure = map_figure(portrait, request.width_mm, request.plane)
     return {
         "figure": [figure_bytes(figure, kind) for kind in request.formats],
+        **_mesh(portrait, request.mesh),
         "thumbnail": [figure_bytes(thumbnail(portrait, request.plane), "png", _THUMBNAIL_DPI)],
         "table": [_table(portrait, file)],
     }
+
+
+def _mesh(portrait: Portrait, kind: MeshKind | None) -> dict[str, list[bytes]]:
+    """Return the mesh and the scale of its colours, where one is asked for."""
+    if kind is None:
+        return {}
+    label = column_words(portrait.column)
+    if is_logarithmic(portrait.column):
+        label = f"natural logarithm of {label}"
+    mesh = membrane_mesh(portrait.cell.cable, portrait.values, label=label)
+    return {"mesh": [mesh_bytes(mesh, kind)], "colour_bar": [figure_bytes(colour_bar(portrait), "png")]}
 
 
 def _table(portrait: Portrait, file: str) -> bytes:
     """Return the table by sample as a survey writes it."""
     names = {"file": file, "cell": portrait.cell.rec.cell}
     (rows,) = csv_texts([portrait.table], [list(names.values())])
-    header = ",".join([*names, *portrait.table])
-    return f"{header}{LINE_END}{rows}".encode()
+    return csv_line(*names, *portrait.table).encode() + rows

@@ -1,0 +1,203 @@
+"""`morphotone map` from its command line: what it writes, says and returns, and how it goes on."""
+
+import json
+
+import pytest
+from matplotlib.image import imread
+
+import morphotone
+from morphotone.errors import MorphotoneError, ReadingError, ResultsError
+from tests import trees
+from tests.commands.folders import SMALL, STUDY, called, examples, fill, rows, run
+
+SITES = """\
+cell,site,sample,x_um,y_um,z_um
+b,near,2,,,
+b,far,4,,,
+b,nowhere,,9000,0,0
+a,other,3,,,
+zz,unknown,1,,,
+"""
+
+
+def mapped(path, into, *options):
+    """Run `morphotone map` in this process."""
+    return run("map", path, "--into", into, "--workers", "1", *options)
+
+
+@pytest.fixture
+def small(tmp_path):
+    return fill(tmp_path / "cells", SMALL)
+
+
+@pytest.fixture
+def maps(tmp_path):
+    return tmp_path / "maps"
+
+
+def files(folder):
+    """Return the paths below a folder of all files but the record and the ledger."""
+    apart = ("run.json", "ledger.sqlite", "assumptions.toml")
+    return {path.relative_to(folder).as_posix() for path in folder.rglob("*") if path.is_file()} - set(apart)
+
+
+def test_the_example_of_the_help_works(beside_the_samples, capsys):
+    (line,) = examples(capsys, "map")
+    assert called(line, capsys) == 0
+    assert capsys.readouterr().out == (
+        "1 file found = 1 drawn + 0 turned away\n"
+        "90 sites = 10 marked + 0 turned away + 80 of other cells\n"
+        "maps: maps\n"
+    )
+
+
+def test_a_folder_gives_one_of_each_per_cell(small, maps, capsys):
+    assert mapped(small, maps, "--mesh", "ply", "--figure", "svg", "pdf") == 1
+    assert capsys.readouterr().out == (
+        f"5 files found = 3 drawn + 2 turned away\nmaps: {maps}\n"
+        f"why files were turned away: {maps / 'turned_away.csv'}\n"
+    )
+    drawn = ["a.swc", "b.swc", "deep/er/c.SWC"]
+    assert rows(maps / "maps.csv") == [
+        {
+            "file": name,
+            "cell": name[:-4],
+            "figure": f"figures/{name}.svg",
+            "thumbnail": f"thumbnails/{name}.png",
+            "mesh": f"meshes/{name}.ply",
+            "colour_bar": f"meshes/{name}.scale.png",
+            "table": f"samples/{name}.csv",
+        }
+        for name in drawn
+    ]
+    named = {path for row in rows(maps / "maps.csv") for path in list(row.values())[2:]}
+    assert files(maps) == named | {f"figures/{name}.pdf" for name in drawn} | {"maps.csv", "turned_away.csv"}
+    assert [row["reason"] for row in rows(maps / "turned_away.csv")] == ["not_a_number", "unfit"]
+    record = json.loads((maps / "run.json").read_text(encoding="utf-8"))
+    assert record["counts"].items() >= {"found": 5, "analysed": 3, "turned_away": 2}.items()
+    assert record["figure"] == ["svg", "pdf"]
+
+
+def test_the_table_is_the_surveys(small, maps, tmp_path):
+    mapped(small, maps, "--hz", "100")
+    run("survey", small, "--into", tmp_path / "results", "--samples", "--hz", "100", "--workers", "1")
+    for name in ("a.swc", "deep/er/c.SWC"):
+        table = f"samples/{name}.csv"
+        assert (maps / table).read_bytes() == (tmp_path / "results" / table).read_bytes()
+
+
+def test_the_same_command_goes_on_and_draws_what_is_missing(small, maps, capsys):
+    mapped(small, maps)
+    before = {path: (maps / path).stat().st_mtime_ns for path in files(maps)}
+    (maps / "figures/b.swc.png").unlink()
+    (small / "a.swc").write_text(trees.soma_chain(), encoding="utf-8")
+    (small / "deep/er/c.SWC").unlink()
+    capsys.readouterr()
+    assert mapped(small, maps) == 1
+    assert "4 files found = 2 drawn + 2 turned away (2 of them unchanged" in capsys.readouterr().out
+    assert [row["file"] for row in rows(maps / "maps.csv")] == ["a.swc", "b.swc"]
+    assert files(maps) == {path for path in before if "c.SWC" not in path}
+    changed = {path for path in files(maps) if (maps / path).stat().st_mtime_ns != before[path]}
+    assert {"figures/a.swc.png", "figures/b.swc.png"} <= changed
+    assert mapped(small, maps) == 1
+    assert "(4 of them unchanged" in capsys.readouterr().out
+
+
+@pytest.mark.slow
+def test_any_number_of_workers_gives_the_same_bytes(small, tmp_path):
+    contents = []
+    for workers in ("1", "2"):
+        into = tmp_path / workers
+        mapped(small, into, "--mesh", "obj", "--figure", "pdf", "--workers", workers)
+        contents.append({path: (into / path).read_bytes() for path in files(into)})
+    assert contents[0] == contents[1]
+
+
+def test_single_cells_stand_beside_each_other(small, maps):
+    assert mapped(small / "a.swc", maps) == 0
+    assert mapped(small / "b.swc", maps) == 0
+    assert [row["file"] for row in rows(maps / "maps.csv")] == ["a.swc", "b.swc"]
+    assert len(imread(maps / "figures/a.swc.png")) > 100
+    assert mapped(small / "deep/broken.swc", maps) == 1
+    assert [row["file"] for row in rows(maps / "turned_away.csv")] == ["broken.swc"]
+
+
+@pytest.mark.parametrize(
+    ("options", "said"),
+    [
+        (["--width", "85"], "width_mm was 175, is 85"),
+        (["--hz", "50"], "shown_hz was 0.0, is 50.0"),
+        (["--colour", "X"], 'colour was null, is "X"'),
+        (["--keep-unfit"], "keep_unfit was false, is true"),
+    ],
+)
+def test_maps_made_otherwise_are_refused_with_the_difference(small, maps, capsys, options, said):
+    mapped(small / "b.swc", maps)
+    assert mapped(small / "b.swc", maps, *options) == 2
+    assert said in capsys.readouterr().err
+
+
+def test_a_folder_of_other_tables_is_refused(small, capsys):
+    fill(small, {"results/mine.csv": "a,b\n"})
+    assert mapped(small, small / "results") == 2
+    assert "holds mine.csv but no ledger.sqlite" in capsys.readouterr().err
+
+
+@pytest.mark.parametrize("column", ["domain", "attenuation_to_soma_100Hz", "shoe_size"])
+def test_a_column_that_cannot_colour_is_refused_before_any_work(small, maps, capsys, column):
+    assert mapped(small, maps, "--colour", column) == 2
+    said = capsys.readouterr().err
+    assert f"no numeric column '{column}'" in said
+    assert "path_um, straight_um, lambda_um, X" in said
+    assert not maps.exists()
+
+
+@pytest.mark.parametrize("workers", ["1", pytest.param("2", marks=pytest.mark.slow)])
+def test_every_site_is_accounted_for(small, maps, tmp_path, capsys, workers):
+    sites = tmp_path / "sites.csv"
+    sites.write_text(SITES, encoding="utf-8")
+    assert mapped(small, maps, "--synapses", sites, "--workers", workers) == 1
+    assert "5 sites = 3 marked + 2 turned away\n" in capsys.readouterr().out
+    away = rows(maps / "turned_away_sites.csv")
+    assert [(row["line"], row["site"], row["reason"]) for row in away] == [
+        ("4", "nowhere", "too_far"),
+        ("6", "unknown", "cell_unknown"),
+    ]
+    fill(small, {"b.swc": "1 1 0 0 0 x -1\n"})
+    assert mapped(small, maps, "--synapses", sites, "--workers", workers) == 1
+    assert "5 sites = 1 marked + 4 turned away\n" in capsys.readouterr().out
+
+
+def test_beside_a_single_cell_sites_of_others_are_nobodys_fault(small, maps, tmp_path, capsys):
+    sites = tmp_path / "sites.csv"
+    sites.write_text(SITES, encoding="utf-8")
+    assert mapped(small / "a.swc", maps, "--synapses", sites) == 0
+    assert "5 sites = 1 marked + 0 turned away + 4 of other cells\n" in capsys.readouterr().out
+
+
+def test_strict_stops_at_the_first_file_turned_away(small, maps, capsys):
+    assert mapped(small, maps, "--strict") == 1
+    assert "deep/broken.swc,not_a_number" in capsys.readouterr().err
+
+
+def test_from_python(small, maps):
+    made = morphotone.draw_maps(small, maps, shown=morphotone.MapRequest(formats=("svg",), width_mm=85))
+    assert isinstance(made, morphotone.Maps)
+    assert made.maps["figure"].tolist()[0] == "figures/a.swc.svg"
+    assert made.turned_away["file"].tolist() == ["deep/broken.swc", "deep/unfit.swc"]
+    assert (made.sites, made.tally.analysed) == ({}, 3)
+    with pytest.raises(ResultsError, match="other conditions"):
+        morphotone.draw_maps(small, maps)
+    with pytest.raises(MorphotoneError, match="no such folder"):
+        morphotone.draw_maps(small / "gone", maps)
+
+
+def test_one_map_from_python(small):
+    figure = morphotone.draw_map(STUDY / "spar_01.swc", synapses=STUDY / "sites.csv", hz=100.0)
+    assert "at 100 Hz" in " ".join(text.get_text() for text in figure.texts)
+    with pytest.raises(ReadingError, match="expected a number"):
+        morphotone.draw_map(small / "deep/broken.swc")
+    with pytest.raises(ReadingError, match="unfit"):
+        morphotone.draw_map(small / "deep/unfit.swc")
+    with pytest.raises(ReadingError, match=r"gone\.swc"):
+        morphotone.draw_map(small / "gone.swc")
