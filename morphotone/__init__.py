@@ -24,6 +24,7 @@ if TYPE_CHECKING:
     from morphotone.commands.map import Maps, draw_map, draw_maps
     from morphotone.commands.rank import rank
     from morphotone.commands.survey import Survey, survey
+    from morphotone.commands.tabulate import Tabulated, tabulate
     from morphotone.commands.vet import vet
     from morphotone.errors import AssumptionError, MorphotoneError, ReadingError, ResultsError
     from morphotone.questions.collected import Ranking
@@ -57,6 +58,8 @@ _HOMES = {
     "rank": "morphotone.commands.rank",
     "Survey": "morphotone.commands.survey",
     "survey": "morphotone.commands.survey",
+    "Tabulated": "morphotone.commands.tabulate",
+    "tabulate": "morphotone.commands.tabulate",
     "vet": "morphotone.commands.vet",
     "AssumptionError": "morphotone.errors",
     "MorphotoneError": "morphotone.errors",
@@ -88,6 +91,7 @@ __all__ = [
     "ResultsError",
     "Survey",
     "SynapticCurrent",
+    "Tabulated",
     "Transients",
     "amplitudes_by_node",
     "area_check",
@@ -104,6 +108,7 @@ __all__ = [
     "read",
     "solve",
     "survey",
+    "tabulate",
     "time_constants",
     "transients",
     "vet",

@@ -8,9 +8,12 @@ import pytest
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.commands import COMMANDS
+from morphotone.questions.comparisons import COMPARISON_COLUMNS
+from morphotone.questions.groups import Missing
 from morphotone.questions.ranking import ADDED_COLUMNS, MOVERS_COLUMNS, ORDERS_COLUMNS
 from morphotone.questions.site_answers import SiteRequest
 from morphotone.questions.site_answers import headers as site_headers
+from morphotone.questions.summaries import SUMMARY_COLUMNS
 from morphotone.questions.survey import Request, headers
 from morphotone.questions.time_axis import TimeRequest
 from morphotone.showing.map_files import COLUMNS as MAPS_COLUMNS
@@ -54,6 +57,7 @@ def test_no_column_is_explained_that_is_not_there(table: str, title: str) -> Non
     assert explained
 
 
+OF_GROUPS = {*SUMMARY_COLUMNS, *COMPARISON_COLUMNS, *Missing._fields}
 ASKED = SiteRequest(Assumptions(), synapses=True, brief=True, together=True, clamp_MOhm=5.0)
 OF_SITES = {
     "`ranking.csv`": [*site_headers(ASKED, [])["ranking"], *ADDED_COLUMNS],
@@ -73,6 +77,12 @@ def test_the_columns_of_ranking_are_those_explained(title: str) -> None:
 def test_every_column_of_maps_is_explained() -> None:
     rows = re.findall(r"^\| ((?:`[^`]+`(?:, )?)+) \|", section("`maps.csv`"), re.MULTILINE)
     assert [name for row in rows for name in re.findall(r"`([^`]+)`", row)] == list(MAPS_COLUMNS)
+
+
+def test_the_columns_of_groups_are_those_explained() -> None:
+    text = section("`summary.csv`, `comparisons.csv`, `missing.csv`")
+    rows = re.findall(r"^\| ((?:`[^`]+`(?:, )?)+) \|", text, re.MULTILINE)
+    assert {name for row in rows for name in re.findall(r"`([^`]+)`", row)} == OF_GROUPS
 
 
 def test_every_command_is_named() -> None:

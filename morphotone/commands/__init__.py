@@ -17,6 +17,7 @@ COMMANDS = {
     "survey": "the night's run: every cell of a folder, to CSV tables",
     "map": "one cell or a folder to look at: figure of its attenuation, coloured mesh, table",
     "rank": "which synapses are electrotonically far or weak, in what order",
+    "tabulate": "tables of groups for a paper, with tests, and its methods in words",
     "assumptions": "print a commented assumptions file with the defaults, or check one",
 }
 

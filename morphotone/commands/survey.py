@@ -242,15 +242,15 @@ def _fingerprint(request: Request) -> dict[str, Any]:
 def read_survey(folder: Path, tally: Tally) -> Survey:
     """Read back the tables that a survey wrote."""
     names = ("cells", "branches", "findings", "turned_away")  # the folder may hold other tables beside
-    tables = {name: _read_csv(folder / f"{name}.csv") for name in names}
+    tables = {name: read_table(folder / f"{name}.csv") for name in names}
     samples = {}
     for path in sorted((folder / "samples").rglob("*.csv")):
-        table = _read_csv(path)
+        table = read_table(path)
         samples[str(table["file"].iloc[0])] = table
     return Survey(**tables, samples=samples, tally=tally)
 
 
-def _read_csv(path: Path) -> pd.DataFrame:
+def read_table(path: Path) -> pd.DataFrame:
     """Read a table back with equal numbers, and with names that look like missing values left alone."""
     table: pd.DataFrame = pd.read_csv(path, keep_default_na=False, na_values=[""], dtype=_TYPES, **_EXACT)
     return table

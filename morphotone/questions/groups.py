@@ -33,15 +33,23 @@ class Grouped:
     groups : DataFrame
         One row per analysed cell, index and order of the cells' table: the columns of the table of groups but
         the cell's name, as text, empty where the cell has no group.
-    has_group : Series of bool
-        Whether the cell has a row in the table of groups; same index.
+    line : Series of Int64
+        Line of the table of groups; missing where the cell has no row there; same index.
+    table : DataFrame
+        The table of groups as read, whose rows tell in what order groups are shown.
     missing : tuple of Missing
-        First the analysed cells without a group, then the rows of the table of groups that are of no use.
+        First the rows of the table of groups that are of no use, then the analysed cells without a group.
     """
 
     groups: pd.DataFrame
-    has_group: pd.Series
+    line: pd.Series
+    table: pd.DataFrame
     missing: tuple[Missing, ...]
+
+    @property
+    def has_group(self) -> pd.Series:
+        """Whether each cell has a row in the table of groups."""
+        return self.line.notna()
 
 
 def grouped(
@@ -86,8 +94,9 @@ def grouped(
     taken = text.reset_index(drop=True).reindex(row_of, fill_value="").set_axis(cells.index)
     return Grouped(
         taken,
-        pd.Series([row >= 0 for row in row_of], cells.index, dtype=bool),
-        (*(_no_group(file) for file in without), *sorted(missing, key=lambda one: one.line or 0)),
+        pd.Series([groups.index[row] if row >= 0 else pd.NA for row in row_of], cells.index, dtype="Int64"),
+        groups,
+        (*sorted(missing, key=lambda one: one.line or 0), *map(_no_group, without)),
     )
 
 

@@ -33,6 +33,20 @@ def read_groups(path: str | os.PathLike[str]) -> pd.DataFrame:
     return parse_groups(read_bytes(path), os.fspath(path))
 
 
+def groups_of(frame: pd.DataFrame) -> pd.DataFrame:
+    """Return a table of groups that is a DataFrame already as `parse_groups` returns one.
+
+    Raises
+    ------
+    ReadingError
+        No column is named for the cell (reason ``columns_missing``).
+    """
+    names = [str(name).strip() for name in frame]
+    _check_columns(names, "the table of groups")
+    text = frame.map(lambda value: "" if pd.isna(value) else str(value).strip()).astype(object)
+    return text.set_axis(names, axis=1).set_axis(pd.RangeIndex(1, len(frame) + 1, name="line"))
+
+
 def parse_groups(data: bytes, file: str) -> pd.DataFrame:
     """Turn the bytes of a table of groups into text by column.
 
@@ -58,12 +72,7 @@ def parse_groups(data: bytes, file: str) -> pd.DataFrame:
     """
     header, lines, found = records(decoded(data, file), file)
     first = lines.pop(0)
-    if not any(name in header for name in CELL_COLUMNS):
-        raise ReadingError(
-            f"{file}: line {first}: read the columns {shown(header)!r}, expected one named cell or file, "
-            "and the groups, separated by commas; name the columns so in the first line with text",
-            "columns_missing",
-        )
+    _check_columns(header, f"{file}: line {first}")
     refuse_twice(header, first, file)
     for line, record in zip(lines, found, strict=True):
         if any(field.strip() for field in record[len(header) :]):
@@ -74,3 +83,12 @@ def parse_groups(data: bytes, file: str) -> pd.DataFrame:
             )
     rows = [[field.strip() for field in fitted(record, len(header))] for record in found]
     return pd.DataFrame(rows, columns=header, index=pd.Index(lines, name="line", dtype="int64"), dtype=object)
+
+
+def _check_columns(header: list[str], where: str) -> None:
+    if not any(name in header for name in CELL_COLUMNS):
+        raise ReadingError(
+            f"{where}: read the columns {shown(header)!r}, expected one named cell or file, and the groups, "
+            "separated by commas; name the columns so in the first line with text",
+            "columns_missing",
+        )

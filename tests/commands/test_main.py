@@ -39,7 +39,7 @@ def test_the_examples_of_help_work(beside_the_samples, capsys, name, codes):
 
 
 def test_every_command_has_its_example_tried():
-    assert set(COMMANDS) == {"vet", "survey", "map", "rank", "assumptions"}
+    assert set(COMMANDS) == {"vet", "survey", "map", "rank", "tabulate", "assumptions"}
 
 
 def test_version(capsys):

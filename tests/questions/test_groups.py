@@ -31,18 +31,18 @@ def test_who_is_missing_is_named_with_the_reason():
     assert found.has_group.tolist() == [True, False, False, True, False]
     told = [(one.cell, one.line, one.reason) for one in found.missing]
     assert told == [
-        ("deep/b", None, "group_absent"),
-        ("deep/c", None, "group_absent"),
-        ("d", None, "group_absent"),
         ("bad", 3, "turned_away"),
         ("c", 4, "cell_ambiguous"),
         ("deep/bb", 5, "cell_unknown"),
+        ("deep/b", None, "group_absent"),
+        ("deep/c", None, "group_absent"),
+        ("d", None, "group_absent"),
     ]
     sentences = [one.sentence for one in found.missing]
-    assert "deep/b.swc was analysed and has no row in the table of groups" in sentences[0]
-    assert "deep/bad.swc was turned away by the survey (loop)" in sentences[3]
-    assert "any of 2 files (deep/c.swc, other/c.swc)" in sentences[4]
-    assert sentences[5].endswith("; the nearest is deep/b")
+    assert "deep/bad.swc was turned away by the survey (loop)" in sentences[0]
+    assert "any of 2 files (deep/c.swc, other/c.swc)" in sentences[1]
+    assert sentences[2].endswith("; the nearest is deep/b")
+    assert "deep/b.swc was analysed and has no row in the table of groups" in sentences[3]
 
 
 def test_rows_that_say_the_same_count_as_one_and_those_that_contradict_not_at_all():
