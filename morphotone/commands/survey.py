@@ -23,6 +23,7 @@ from morphotone.commands.options import add_assumption_options, assumptions_of
 from morphotone.night.folder import PATTERNS, find_files
 from morphotone.night.ledger import Ledger
 from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER, Item, Outcome, Status
+from morphotone.night.pool import pool_of
 from morphotone.night.progress import Progress, progress_on
 from morphotone.night.record import run_record, write_record
 from morphotone.night.results import atomic, export, export_each
@@ -168,7 +169,7 @@ def write_survey(
             partial(outcomes, request=request),
             ledger=ledger,
             progress=progress,
-            workers=workers if workers > 0 else joblib.cpu_count(),
+            pool=pool_of(workers if workers > 0 else joblib.cpu_count()),
             strict=strict,
         )
         export(ledger, names, {**columns, TURNED_AWAY: TURNED_AWAY_HEADER})

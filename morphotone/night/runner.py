@@ -6,35 +6,27 @@ knows, so that the same list gives the same batches and the same bytes.
 
 from __future__ import annotations
 
-import os
-import threading
-import time
 import traceback
-from collections.abc import Iterable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from contextlib import suppress
 from dataclasses import dataclass
-from itertools import chain, islice
+from functools import partial
+from itertools import chain
 from pathlib import Path
-
-from joblib.externals.loky import FIRST_COMPLETED, Future, get_reusable_executor, wait
-from joblib.externals.loky.process_executor import TerminatedWorkerError
 
 from morphotone.errors import TurnedAwayError
 from morphotone.night.folder import Found
 from morphotone.night.ledger import Entry, Ledger
 from morphotone.night.outcome import TURNED_AWAY, BatchFunction, Item, Outcome
+from morphotone.night.pool import Batch, Pool, WorkerDiedError, in_this_process
 from morphotone.night.progress import Progress, Silent, Step
 
-BATCH_BYTES = 2_000_000  # of files: a second or so of work, so that little is lost when a run is stopped
+# Bytes of files in a batch: a second or so of work at most, so that little is lost when a run is stopped; in
+# a small folder less, so that many workers have work and end together, but more than handing it out costs.
+_LEAST_BYTES, _MOST_BYTES = 200_000, 2_000_000
+_USUAL_BATCHES = 64
 _FILE_COST = 4_000  # bytes: what opening a file costs, as if it were that much longer
-_IDLE_SECONDS = 30  # after which a worker without work ends
-# The workers are as many as the processors already; one thread of linear algebra each, whatever the library.
-_ONE_THREAD = {
-    "OMP_NUM_THREADS": "1",
-    "OPENBLAS_NUM_THREADS": "1",
-    "MKL_NUM_THREADS": "1",
-    "BLIS_NUM_THREADS": "1",
-    "VECLIB_MAXIMUM_THREADS": "1",
-}
+_TRIES_ALONE = 2  # a worker may also be ended by somebody else, whatever it works on
 
 
 @dataclass(frozen=True)
@@ -54,15 +46,15 @@ def run(
     *,
     ledger: Ledger,
     progress: Progress | None = None,
-    workers: int = 1,
-    batch_bytes: int = BATCH_BYTES,
+    pool: Pool = in_this_process,
+    batch_bytes: int | None = None,
     strict: bool = False,
 ) -> Tally:
     """Work through files in batches, entering each finished batch in the ledger.
 
     An exception in `function` costs one file, not its batch: the batch is gone through again one file at
-    a time, and the file that fails is turned away with the reason "program_error". With several workers,
-    a file at which the process itself dies (no memory left) is found likewise: "worker_died". Neither
+    a time, and the file that fails is turned away with the reason "program_error". With a pool of workers,
+    a file at which one dies (no memory left) is found likewise: "worker_died". Neither
     leaves a hash behind, so that the next run tries these files again.
 
     Parameters
@@ -70,15 +62,16 @@ def run(
     found : sequence of Found
         All that must be accounted for, names told apart; one with a `problem` is turned away unopened.
     function : callable
-        Takes a list of Item, returns one Outcome for each. With several workers it must be picklable.
+        Takes a list of Item, returns one Outcome for each. With workers it must be picklable.
     ledger : Ledger
         What is finished, and where outcomes go.
     progress : Progress, optional
         Told about each finished batch.
-    workers : int
-        Number of processes; 1 works in this one.
-    batch_bytes : int
-        A batch is closed when its files on disk reach this size, bytes.
+    pool : Pool
+        Who works on the batches.
+    batch_bytes : int, optional
+        A batch is closed when its files on disk reach this size, bytes; unless given, a size that suits
+        the whole.
     strict : bool
         Stop at the first file that is turned away.
 
@@ -97,12 +90,13 @@ def run(
     if len(sizes) < len(found):
         raise ValueError("two of the files found have the same name")
     known, unchanged = ledger.known(), 0
-    batches = _batches((file for file in found if not file.problem), known, batch_bytes)
+    sound = [file for file in found if not file.problem]
+    batches = _batches(sound, known, batch_bytes or _suitable_bytes(sound))
     closed = [_turned_away(file.name, "unreadable", file.problem) for file in found if file.problem]
     progress = progress or Silent()
     progress.begin(len(found), sum(sizes.values()))
     try:
-        for outcomes in chain([closed], _finished(batches, function, workers)):
+        for outcomes in chain([closed], _finished(batches, partial(_attempt, function=function), pool)):
             ledger.record([outcome for outcome in outcomes if outcome.status != "unchanged"])
             unchanged += sum(outcome.status == "unchanged" for outcome in outcomes)
             entries = {outcome.name: _entry(outcome, known) for outcome in outcomes}
@@ -112,6 +106,11 @@ def run(
     finally:
         progress.end()
     return _count(list(sizes), ledger.known(), unchanged)
+
+
+def _suitable_bytes(found: Sequence[Found]) -> int:
+    whole = sum(file.size + _FILE_COST for file in found)
+    return min(max(whole // _USUAL_BATCHES, _LEAST_BYTES), _MOST_BYTES)
 
 
 def _batches(found: Iterable[Found], known: Mapping[str, Entry], batch_bytes: int) -> Iterator[list[Item]]:
@@ -130,99 +129,52 @@ def _batches(found: Iterable[Found], known: Mapping[str, Entry], batch_bytes: in
 
 
 def _finished(
-    batches: Iterable[list[Item]], function: BatchFunction, workers: int
+    batches: Iterable[Batch], function: Callable[[Batch], list[Outcome]], pool: Pool
 ) -> Iterator[list[Outcome]]:
-    """Yield the outcomes of each batch as it is finished, in any order.
+    """Yield the outcomes of each batch as it is finished, in any order; an empty list now and then meanwhile.
 
     When a worker dies, all that was under way is lost. The batches that had been handed out are the
     suspects: each of their files gets a worker of its own. Then the others go on.
     """
-    if workers == 1:
-        yield from (_attempt(batch, function) for batch in batches)
-        return
     waiting = dict(enumerate(batches))
     while waiting:
         handed_out: list[int] = []
         try:
-            for index, outcomes in _in_pool(waiting, handed_out, function, workers):
+            for done in pool(waiting, handed_out, function):
+                if done is None:
+                    yield []
+                    continue
+                index, outcomes = done
                 del waiting[index]
                 yield outcomes
-        except TerminatedWorkerError:
+        except WorkerDiedError:
             for index in handed_out:
-                yield from (_alone(item, function) for item in waiting.pop(index, []))
+                yield from (_alone(item, function, pool) for item in waiting.pop(index, []))
 
 
-def _in_pool(
-    waiting: Mapping[int, list[Item]], handed_out: list[int], function: BatchFunction, workers: int
-) -> Iterator[tuple[int, list[Outcome]]]:
-    """Yield index and outcomes of batches as they are finished, noting each that is handed to a worker.
-
-    `joblib.Parallel` would hand out work without regard to how fast the outcomes are taken from it, and
-    pile them up in memory where the ledger's disk is slow; hence its pool of workers, and a short queue.
-    """
-    pool = get_reusable_executor(
-        max_workers=workers,
-        timeout=_IDLE_SECONDS,
-        env=_ONE_THREAD,
-        initializer=_end_with,
-        initargs=(os.getpid(),),
-    )
-    rest = iter(list(waiting.items()))
-    running: set[Future[tuple[int, list[Outcome]]]] = set()
-    try:
-        while True:
-            for index, batch in islice(rest, 2 * workers - len(running)):
-                handed_out.append(index)
-                running.add(pool.submit(_attempt_indexed, index, batch, function))
-            if not running:
-                return
-            # Now and then a look round: on Windows, Ctrl-C does not wake what waits without limit.
-            done, running = wait(running, timeout=1.0, return_when=FIRST_COMPLETED)
-            yield from (future.result() for future in done)
-    except BaseException:
-        pool.shutdown(wait=True, kill_workers=True)
-        raise
-
-
-def _end_with(run: int) -> None:
-    """Have this worker end with the process of the run.
-
-    A run that is killed cannot tell its workers, which then wait for ever to hand over their outcomes.
-    """
-
-    def watch() -> None:
-        while os.getppid() == run:
-            time.sleep(1.0)
-        os._exit(1)
-
-    threading.Thread(target=watch, daemon=True).start()
-
-
-def _attempt_indexed(index: int, batch: list[Item], function: BatchFunction) -> tuple[int, list[Outcome]]:
-    return index, _attempt(batch, function)
-
-
-def _attempt(batch: list[Item], function: BatchFunction) -> list[Outcome]:
+def _attempt(batch: Batch, function: BatchFunction) -> list[Outcome]:
     """Work on a batch; if that fails, on each of its files, so that only the one that fails is lost."""
     try:
         return _checked(function(batch), batch)
     except Exception as error:
         if len(batch) == 1:
             return [_program_error(batch[0], error)]
-        return [outcome for item in batch for outcome in _attempt([item], function)]
+    # Not above, where the error holds on to the memory that the batch took.
+    return [outcome for item in batch for outcome in _attempt([item], function)]
 
 
-def _alone(item: Item, function: BatchFunction) -> list[Outcome]:
-    """Work on one file in a process that may die of it."""
-    try:
-        ((_, outcomes),) = _in_pool({0: [item]}, [], function, workers=1)
-    except TerminatedWorkerError:
-        sentence = (
-            "the process that worked on this file was ended by the system, as happens when memory runs out; "
-            "try again with fewer workers, or on a machine with more memory"
-        )
-        return [_turned_away(item.name, "worker_died", sentence)]
-    return outcomes
+def _alone(item: Item, function: Callable[[Batch], list[Outcome]], pool: Pool) -> list[Outcome]:
+    """Work on one file in a worker that may die of it; only one that dies again is held against the file."""
+    for _ in range(_TRIES_ALONE):
+        with suppress(WorkerDiedError):
+            for done in pool({0: [item]}, [], function):
+                if done is not None:
+                    return done[1]
+    sentence = (
+        "the process that worked on this file was ended by the system, as happens when memory runs out; "
+        "try again with fewer workers, or on a machine with more memory"
+    )
+    return [_turned_away(item.name, "worker_died", sentence)]
 
 
 def _checked(outcomes: list[Outcome], batch: list[Item]) -> list[Outcome]:

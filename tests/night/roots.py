@@ -61,6 +61,17 @@ def roots_deadly(batch: list[Item], culprit: str) -> list[Outcome]:
     return roots(batch)
 
 
+def roots_unlucky(batch: list[Item], culprit: str, deaths: Path) -> list[Outcome]:
+    """Take the process down twice, as somebody from outside might."""
+    with deaths.open("a+", encoding="utf-8") as stream:
+        stream.seek(0)
+        if any(item.name == culprit for item in batch) and len(stream.readlines()) < 2:
+            stream.write("died\n")
+            stream.flush()
+            os._exit(9)
+    return roots(batch)
+
+
 def roots_interrupted(batch: list[Item], at: str) -> list[Outcome]:
     """Stand for Ctrl-C while a batch is worked on."""
     if any(item.name == at for item in batch):

@@ -17,6 +17,7 @@ from morphotone.night import runner
 from morphotone.night.folder import Found, find_files
 from morphotone.night.ledger import Ledger
 from morphotone.night.outcome import BatchFunction, Item, Outcome
+from morphotone.night.pool import in_processes, pool_of
 from morphotone.night.progress import Step
 from morphotone.night.results import export
 from morphotone.night.runner import Tally, run
@@ -52,7 +53,7 @@ def night(
             found,
             function,
             ledger=ledger,
-            workers=workers,
+            pool=pool_of(workers),
             batch_bytes=SMALL,
             **options,  # type: ignore[arg-type]
         )
@@ -159,13 +160,21 @@ def test_a_worker_that_dies_costs_one_file(
     assert said["a/04.swc"].startswith("worker_died: the process that worked on this file was ended")
 
 
+def test_one_death_is_not_held_against_a_file_that_is_well_alone(
+    found: Callable[[], list[Found]], tmp_path: Path
+) -> None:
+    function = partial(roots.roots_unlucky, culprit="a/04.swc", deaths=tmp_path / "deaths")
+    assert night(found(), function, tmp_path / "out", workers=2).analysed == 11
+    assert (tmp_path / "deaths").read_text(encoding="utf-8") == "died\n" * 2
+
+
 def test_work_is_handed_out_no_faster_than_outcomes_are_taken(
     found: Callable[[], list[Found]], tmp_path: Path
 ) -> None:
     with Ledger(tmp_path / "out", {}) as ledger:
         batches = runner._batches(found(), ledger.known(), batch_bytes=1)
     handed_out: list[int] = []
-    pool = runner._in_pool(dict(enumerate(batches)), handed_out, roots.roots, workers=2)
+    pool = in_processes(2)(dict(enumerate(batches)), handed_out, roots.roots)
     next(pool)
     time.sleep(0.3)  # long enough for the workers to finish everything, if they were given it
     assert len(handed_out) == 4
@@ -201,7 +210,7 @@ def test_workers_do_not_go_on_after_strict_has_stopped(
             [bad, *others],
             partial(roots.roots_slow, diary=diary),
             ledger=ledger,
-            workers=2,
+            pool=pool_of(2),
             batch_bytes=1,
             strict=True,
         )
@@ -261,6 +270,12 @@ def test_batches_depend_on_the_files_alone(tmp_path: Path) -> None:
     assert batches[0][0].known_sha256 is None
 
 
+@pytest.mark.parametrize(("whole", "expected"), [(1, 200_000), (64_000_000, 1_004_000), (10**9, 2_000_000)])
+def test_batches_are_as_large_as_suits_the_whole(tmp_path: Path, whole: int, expected: int) -> None:
+    files = [Found(tmp_path / str(index), str(index), whole // 64) for index in range(64)]
+    assert runner._suitable_bytes(files) == expected
+
+
 def test_two_files_of_one_name_are_refused(found: Callable[[], list[Found]], tmp_path: Path) -> None:
     with pytest.raises(ValueError, match="two of the files found have the same name"):
         night([*found(), found()[0]], roots.roots, tmp_path / "out")
@@ -279,6 +294,7 @@ import sys, time
 from pathlib import Path
 from morphotone.night.folder import find_files
 from morphotone.night.ledger import Ledger
+from morphotone.night.pool import pool_of
 from morphotone.night.runner import run
 from tests.night.roots import roots_large
 
@@ -292,7 +308,8 @@ class Herald:
 
 with Ledger(Path(sys.argv[2]), {}) as ledger:
     try:
-        run(find_files(sys.argv[1]), roots_large, ledger=ledger, progress=Herald(), workers=2, batch_bytes=1)
+        found, two = find_files(sys.argv[1]), pool_of(2)
+        run(found, roots_large, ledger=ledger, progress=Herald(), pool=two, batch_bytes=1)
     except KeyboardInterrupt:
         sys.exit(130)
 """
