@@ -32,6 +32,7 @@ from morphotone.errors import ReadingError
 from morphotone.night.folder import PATTERNS, Found, find_files, written_name
 from morphotone.night.ledger import Ledger
 from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER
+from morphotone.night.pool import pool_of
 from morphotone.night.progress import Progress, progress_on
 from morphotone.night.record import run_record, write_record
 from morphotone.night.results import atomic, atomic_bytes, export, file_names
@@ -228,7 +229,7 @@ def draw_maps(
             partial(outcomes, work=work),
             ledger=ledger,
             progress=progress,
-            workers=workers if workers > 0 else joblib.cpu_count(),
+            pool=pool_of(workers if workers > 0 else joblib.cpu_count()),
             batch_bytes=1,  # one cell at a time: drawing it takes as long as a survey of many
             strict=strict,
         )
