@@ -77,6 +77,7 @@ STAGES = (
     ("tables", "morphotone.questions.survey.cell_row"),
     ("tables", "morphotone.questions.survey.branch_table"),
     ("tables", "morphotone.questions.survey.sample_table"),
+    ("tables", "morphotone.commands.survey.csv_rows"),
     ("tables", "morphotone.commands.survey.csv_texts"),
     ("write", "morphotone.night.ledger.Ledger.record"),
     ("write", "morphotone.commands.survey.export"),

@@ -29,10 +29,9 @@ from morphotone.night.record import run_record, write_record
 from morphotone.night.results import atomic, export, export_each
 from morphotone.night.runner import Tally
 from morphotone.night.runner import run as run_night
-from morphotone.questions.columns import Columns
 from morphotone.questions.survey import Answer, Request, answers, cell_name, headers
 from morphotone.questions.time_axis import TimeRequest
-from morphotone.showing.tables import csv_texts
+from morphotone.showing.tables import csv_rows, csv_texts
 
 NAME = "survey"
 _LEADING = ["file", "cell"]  # columns that say whose row it is
@@ -205,23 +204,20 @@ def outcomes(items: list[Item], request: Request) -> list[Outcome]:
 
 def _parts(given: Sequence[Answer]) -> dict[str, dict[str, bytes]]:
     """Return per file its CSV lines for each table."""
+    tables = (
+        ("cells", "cell", csv_rows),
+        ("branches", "branches", csv_texts),
+        ("samples", "by_sample", csv_texts),
+        ("findings", "findings", csv_texts),
+    )
     parts: dict[str, dict[str, bytes]] = {answer.name: {} for answer in given}
-    tables: dict[str, list[tuple[Answer, Columns | None]]] = {
-        "cells": [(answer, _one_row(answer.cell)) for answer in given],
-        "branches": [(answer, answer.branches) for answer in given],
-        "samples": [(answer, answer.by_sample) for answer in given],
-        "findings": [(answer, answer.findings) for answer in given],
-    }
-    for table, pairs in tables.items():
-        filled = [(answer.name, columns) for answer, columns in pairs if columns is not None]
-        texts = csv_texts([columns for _, columns in filled], [[name, cell_name(name)] for name, _ in filled])
-        for (name, _), text in zip(filled, texts, strict=True):
+    for table, field, texts_of in tables:
+        filled = {answer.name: getattr(answer, field) for answer in given}
+        filled = {name: columns for name, columns in filled.items() if columns is not None}
+        texts = texts_of(list(filled.values()), [[name, cell_name(name)] for name in filled])
+        for name, text in zip(filled, texts, strict=True):
             parts[name][table] = text
     return parts
-
-
-def _one_row(row: dict[str, Any] | None) -> Columns | None:
-    return None if row is None else {name: [value] for name, value in row.items()}
 
 
 def _outcome(answer: Answer, parts: dict[str, bytes]) -> Outcome:

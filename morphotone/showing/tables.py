@@ -1,6 +1,6 @@
 """Tables to CSV (RFC 4180, UTF-8): numbers that are read back equal, text that no spreadsheet runs."""
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from itertools import accumulate, chain, pairwise, repeat
 from math import isfinite
 from typing import Any
@@ -33,11 +33,27 @@ def csv_texts(tables: Sequence[Columns], names: Sequence[Sequence[str]]) -> list
     if not tables:
         return []
     lengths = [len(next(iter(table.values()))) for table in tables]
-    prefixes = (_leading(csv_line(*cells).removesuffix(LINE_END).encode()) for cells in names)
-    leading = list(chain.from_iterable(map(repeat, prefixes, lengths)))
+    leading = list(chain.from_iterable(map(repeat, map(_names, names), lengths)))
     text, starts = _rows(leading, [_together([table[column] for table in tables]) for column in tables[0]])
-    bounds = [starts[row] for row in accumulate(lengths, initial=0)]
+    bounds = starts[list(accumulate(lengths, initial=0))].tolist()
     return [text[start:end] for start, end in pairwise(bounds)]
+
+
+def csv_rows(rows: Sequence[Mapping[str, Any]], names: Sequence[Sequence[str]]) -> list[bytes]:
+    """Return each row as CSV, led by its names; for tables of one row, as `csv_texts` writes them.
+
+    Parameters
+    ----------
+    rows : sequence of mapping of str to value
+        All with the same columns.
+    names : sequence of sequence of str
+        Per row its leading cells.
+    """
+    if not rows:
+        return []
+    columns = [[row[column] for row in rows] for column in rows[0]]
+    text, starts = _rows(list(map(_names, names)), columns)
+    return [text[start:end] for start, end in pairwise(starts.tolist())]
 
 
 def csv_table(frame: pd.DataFrame) -> bytes:
@@ -52,7 +68,7 @@ def csv_table(frame: pd.DataFrame) -> bytes:
     return csv_line(*map(str, frame.columns)).encode() + _rows(leading, others)[0]
 
 
-def _rows(leading: Sequence[orjson.Fragment], columns: Sequence[Any]) -> tuple[bytes, list[int]]:
+def _rows(leading: Sequence[orjson.Fragment], columns: Sequence[Any]) -> tuple[bytes, NDArray[np.int64]]:
     """Write rows, some at a time.
 
     Parameters
@@ -66,7 +82,7 @@ def _rows(leading: Sequence[orjson.Fragment], columns: Sequence[Any]) -> tuple[b
     -------
     text : bytes
         The rows, each ended by CRLF.
-    starts : list of int, one more than rows
+    starts : ndarray of int64, shape (rows + 1,)
         Where in the text each row starts, and where the last one ends.
     """
     height = _AT_ONCE // (1 + len(columns)) + 1
@@ -76,7 +92,7 @@ def _rows(leading: Sequence[orjson.Fragment], columns: Sequence[Any]) -> tuple[b
         text, ends = _written(leading[some], [_cells(column[some]) for column in columns])
         texts.append(text)
         starts.append(starts[-1][-1] + ends)
-    return b"".join(texts), np.concatenate(starts).tolist()
+    return b"".join(texts), np.concatenate(starts)
 
 
 def _written(
@@ -98,6 +114,11 @@ def _written(
     # A comma and a mark stand between two rows: room for the line end.
     text[marks[1:] - 1], text[marks[1:]] = LINE_END.encode()
     return text[marks[0] + 1 : marks[-1] + 1].tobytes(), marks[1:] - marks[0]
+
+
+def _names(names: Sequence[str]) -> orjson.Fragment:
+    """Return what a row starts with: names, as CSV."""
+    return _leading(csv_line(*names).removesuffix(LINE_END).encode())
 
 
 def _leading(text: bytes) -> orjson.Fragment:

@@ -13,7 +13,7 @@ from hypothesis.extra.numpy import arrays
 
 from morphotone.commands.survey import _EXACT
 from morphotone.showing import tables
-from morphotone.showing.tables import csv_table, csv_texts
+from morphotone.showing.tables import csv_rows, csv_table, csv_texts
 
 
 def records(text):
@@ -197,6 +197,15 @@ def test_a_long_table_is_written_in_pieces_and_reads_as_one():
     np.testing.assert_array_equal(frame[1].to_numpy(), values)
     np.testing.assert_array_equal(frame[2].to_numpy(), np.arange(count))
     assert set(frame[0]) == {"b"}
+
+
+def test_rows_are_written_as_tables_of_one_row():
+    rows = [{"x": 0.1, "word": "a,b"}, {"x": nan, "word": "="}, {"x": 3, "word": ""}]
+    names = [["a"], ["b"], ["c"]]
+    texts = csv_rows(rows, names)
+    assert texts == csv_texts([{name: [value] for name, value in row.items()} for row in rows], names)
+    assert texts == [b'a,0.1,"a,b"\r\n', b"b,,'=\r\n", b"c,3,\r\n"]
+    assert csv_rows([], []) == []
 
 
 def test_a_dataframe_with_its_header():
