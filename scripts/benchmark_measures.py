@@ -63,7 +63,7 @@ GRID_HZ: list[float] = np.geomspace(1.0, 1e4, 41).tolist()
 
 #: Stage, and a function whose time it takes, less the time of other functions of this list within it.
 STAGES = (
-    ("read", "morphotone.commands.survey.read_bytes"),
+    ("read", "morphotone.commands.contents.read_bytes"),
     ("read", "morphotone.questions.survey.reconstruct"),
     ("vet", "morphotone.questions.survey.vet_reconstruction"),
     ("build", "morphotone.questions.survey.mend_radii"),
