@@ -45,6 +45,9 @@ _UTF8_MARK = b"\xef\xbb\xbf"
 _DOS_END = b"\x1a"  # end-of-file character that programs of the DOS age wrote
 _UTF16_MARKS = (b"\xff\xfe", b"\xfe\xff")
 
+# From here on the C parser goes piece by piece, which then saves more than the pieces cost.
+_LARGE_TEXT = 8_000_000  # bytes
+
 _WHOLE = [COLUMNS.index(name) for name in WHOLE_COLUMNS]
 
 _HEADER = re.compile(rb"(?:[ \t]*(?:#[^\r\n]*)?(?:\r\n|\r|\n))*")
@@ -171,13 +174,12 @@ def _end_of_header(text: bytes) -> int:
 
 def _healthy_table(text: bytes, start: int) -> SwcTable | None:
     """Read a text that follows the standard; None if it does not."""
-    body = text[start:]
-    columns = _columns(body)
+    columns = _columns(text, start)
     if columns is None or not _columns_make_sense(columns):
         return None
     number, kind, parent_number = columns[_WHOLE].astype(np.int64)
     parent = _rows_of_parents(number, parent_number)
-    line = _lines(text[:start], body, len(number))
+    line = _lines(text, start, len(number))
     if parent is None or line is None:
         return None
     return SwcTable(
@@ -211,21 +213,23 @@ def _diagnosed_table(text: bytes, start: int, name: str) -> SwcTable:
     )
 
 
-def _columns(body: bytes) -> NDArray[np.float64] | None:
+def _columns(text: bytes, start: int) -> NDArray[np.float64] | None:
     """Parse seven columns of numbers in C, shape (7, n); None if the text is anything else.
 
     The first sample is looked at beforehand: seven numbers there exclude what the C parser would
     take in silence (an eighth column as row labels, a column of truth values as 1 and 0).
     """
-    first = _FIRST_SAMPLE.match(body)
+    first = _FIRST_SAMPLE.match(text, start)
     if first is None:
         return None
     # Single spaces parse in two thirds of the time; if a later line differs, that parse fails.
     single_spaced = first.group().count(b" ") == len(COLUMNS) - 1
     for separator in (" ", r"\s+") if single_spaced else (r"\s+",):
+        stream = io.BytesIO(text)  # the same memory until somebody writes to it
+        stream.seek(start)
         try:
             frame = pd.read_csv(
-                io.BytesIO(body),
+                stream,
                 sep=separator,
                 comment="#",
                 header=None,
@@ -234,7 +238,7 @@ def _columns(body: bytes) -> NDArray[np.float64] | None:
                 na_filter=False,
                 quoting=csv.QUOTE_NONE,
                 engine="c",
-                low_memory=False,
+                low_memory=len(text) > _LARGE_TEXT,
                 encoding_errors="replace",
             )
         except ValueError:  # the parser's errors are ValueErrors too
@@ -273,11 +277,11 @@ def _rows_of_parents(number: NDArray[np.int64], parent_number: NDArray[np.int64]
     return None if repeated or absent.any() or itself else np.where(root, -1, row)
 
 
-def _lines(header: bytes, body: bytes, samples: int) -> NDArray[np.int64] | None:
+def _lines(text: bytes, start: int, samples: int) -> NDArray[np.int64] | None:
     """Return the 1-based line of every sample; None if lines and samples do not match."""
-    before = len(header.splitlines())
-    codes = np.frombuffer(body, dtype=np.uint8)
-    ends = _line_ends(body)
+    before = len(text[:start].splitlines())
+    codes = np.frombuffer(text, dtype=np.uint8, offset=start)
+    ends = _line_ends(codes, returns=text.find(b"\r", start) >= 0)
     if np.count_nonzero(ends) + (not ends[-1]) == samples:  # every line of the body is a sample
         return np.arange(before + 1, before + 1 + samples)
     starts = np.concatenate(([0], np.flatnonzero(ends[:-1]) + 1))
@@ -287,14 +291,13 @@ def _lines(header: bytes, body: bytes, samples: int) -> NDArray[np.int64] | None
     return lines if len(lines) == samples else None
 
 
-def _line_ends(body: bytes) -> NDArray[np.bool_]:
-    """Mark the last character of every line end: LF, CR LF or CR."""
-    codes = np.frombuffer(body, dtype=np.uint8)
+def _line_ends(codes: NDArray[np.uint8], *, returns: bool) -> NDArray[np.bool_]:
+    """Mark the last character of every line end: LF, and with `returns` CR LF or CR too."""
     ends: NDArray[np.bool_] = codes == ord("\n")
-    if b"\r" in body:
-        returns = codes == ord("\r")
-        returns[:-1] &= ~ends[1:]
-        ends |= returns
+    if returns:
+        alone = codes == ord("\r")
+        alone[:-1] &= ~ends[1:]
+        ends |= alone
     return ends
 
 
