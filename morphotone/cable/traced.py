@@ -9,7 +9,7 @@ from scipy.spatial import cKDTree
 from morphotone.cable.assumptions import Assumptions
 from morphotone.errors import ReadingError
 from morphotone.reading.reconstruction import Reconstruction, trees
-from morphotone.reading.soma import Soma, find_soma, reroot
+from morphotone.reading.soma import Soma, find_soma, reroot, turn_round
 
 AXON = 2  # type code of the SWC standard
 
@@ -186,21 +186,18 @@ def _joined(position: Real, parent: Index, tree: Index, main: int, gap: float) -
     A piece is hung from its sample nearest to what is joined already; one frustum bridges the gap.
     """
     parent = parent.copy()
-    waiting = np.setdiff1d(np.unique(tree), [main])
-    ours = np.flatnonzero(tree == main)
+    ours, waiting = np.flatnonzero(tree == main), np.flatnonzero(tree != main)
     while len(ours) and len(waiting):
-        near = cKDTree(position[ours])
-        newly = []
-        for piece in waiting:
-            members = np.flatnonzero(tree == piece)
-            distance, neighbour = (np.atleast_1d(found) for found in near.query(position[members]))
-            best = int(np.argmin(distance))
-            if distance[best] <= gap:
-                parent = reroot(parent, int(members[best]))
-                parent[members[best]] = ours[neighbour[best]]
-                newly.append(piece)
-        ours = np.flatnonzero(np.isin(tree, newly))
-        waiting = np.setdiff1d(waiting, newly)
+        distance, neighbour = cKDTree(position[ours]).query(position[waiting])
+        piece = tree[waiting]
+        order = np.lexsort((distance, piece))
+        best = order[np.flatnonzero(np.diff(piece[order], prepend=-1))]  # of each piece, in samples' order
+        best = best[distance[best] <= gap]
+        for sample, onto in zip(waiting[best].tolist(), ours[neighbour[best]].tolist(), strict=True):
+            turn_round(parent, sample)
+            parent[sample] = onto
+        newly = np.isin(piece, piece[best])
+        ours, waiting = waiting[newly], waiting[~newly]
     return parent
 
 

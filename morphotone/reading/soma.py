@@ -108,11 +108,17 @@ def reroot(parent: NDArray[np.int64], new_root: int) -> NDArray[np.int64]:
         parents need no longer stand before their children.
     """
     turned = parent.copy()
+    turn_round(turned, new_root)
+    return turned
+
+
+def turn_round(parent: NDArray[np.int64], new_root: int) -> None:
+    """Hang a tree from another of its samples as `reroot` does, in the array itself."""
     below, row = -1, int(new_root)
     while row >= 0:
-        turned[row] = below
-        below, row = row, int(parent[row])
-    return turned
+        above = int(parent[row])
+        parent[row] = below
+        below, row = row, above
 
 
 def _main_lump(kind: NDArray[np.int64], parent: NDArray[np.int64]) -> NDArray[np.int64]:
