@@ -180,7 +180,7 @@ def _made(survey: Finished, counted: Units, how: Bootstrap, family: Family) -> T
         "Statistics": statistics(counted, numbers, tests, how, family),
         "Software": software(source),
     }
-    remarks = (*survey.doubts, *counted.doubts, *map(str, survey.record["warnings"]))
+    remarks = (*survey.doubts, *counted.doubts, *_grades(source), *map(str, survey.record["warnings"]))
     return Tabulated(
         numbers,
         tests,
@@ -192,6 +192,15 @@ def _made(survey: Finished, counted: Units, how: Bootstrap, family: Family) -> T
         bibtex(cited(paragraphs.values()), str(survey.record["morphotone"])),
         remarks,
     )
+
+
+def _grades(source: Source) -> list[str]:
+    grades = source.used["grade"].value_counts()
+    return [
+        f"{grades[grade]} of {len(source.used)} cells are of grade {grade}; findings.csv says why"
+        for grade in ("doubtful", "unfit")
+        if grade in grades
+    ]
 
 
 def _free_folder(into: Path) -> Path:
@@ -236,7 +245,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         metavar="COLUMN",
         nargs="+",
         default=list(REPORTED),
-        help="numeric columns of cells.csv (default: %(default)s)",
+        help=f"numeric columns of cells.csv (default: {' '.join(REPORTED)})",
     )
     parser.add_argument(
         "--nested",

@@ -129,7 +129,7 @@ def epsilon_interval(H: float, groups: int, n: int, level: float = 0.95) -> Inte
     def end(tail: float) -> float:
         if stats.chi2.cdf(H, free) <= tail:
             return 0.0
-        lies = brentq(lambda off: stats.ncx2.cdf(H, free, max(off, 1e-300)) - tail, 0.0, most)
+        lies = brentq(lambda off: stats.ncx2.cdf(H, free, off) - tail, 1e-300, most)
         return min(float(lies) / (n - 1), 1.0)
 
     return Interval(end((1 + level) / 2), end((1 - level) / 2), "noncentral χ²")
@@ -167,7 +167,8 @@ def comparisons(
     found = pd.DataFrame(rows, columns=list(COMPARISON_COLUMNS))
     together = ["test"] if family == "table" else ["test", "column"]
     p_of = found.groupby(together, sort=False)["p"]
-    return found.assign(p_holm=p_of.transform(holm), tests=p_of.transform("count").astype("int64"))
+    found = found.assign(p_holm=p_of.transform(holm), tests=p_of.transform("count"))
+    return found.astype({"n": "int64", "n_other": "Int64", "tests": "int64"})
 
 
 def _values(column: pd.Series) -> Real:

@@ -67,6 +67,11 @@ class Units:
     missing: tuple[Missing, ...]
 
     @property
+    def source_words(self) -> str:
+        """What the sources are called, in the plural; empty where nothing says which they are."""
+        return SOURCES.get(self.source, f"sources (column {self.source})") if self.source else ""
+
+    @property
     def nested(self) -> bool:
         """Whether several cells of one source are counted as if independent."""
         return not self.averaged and 0 < self.sources < self.cells
@@ -74,18 +79,17 @@ class Units:
     @property
     def doubts(self) -> list[str]:
         """One sentence for each way in which the units are not independent."""
-        of = sources(self.source or "")
         doubts = []
         if self.nested:
             doubts.append(
-                f"{self.cells} cells come from {self.sources} {of}; cells of one source are not independent, "
-                f"so intervals are too narrow and p values too small: --mean-over {self.source} takes the "
-                "mean of each as one value"
+                f"{self.cells} cells come from {self.sources} {self.source_words}; cells of one source are "
+                "not independent, so intervals are too narrow and p values too small: --mean-over "
+                f"{self.source} takes the mean of each as one value"
             )
         if self.shared:
             doubts.append(
-                f"{self.shared} of {self.sources} {of} have cells in more than one group, and the tests take "
-                "groups to be independent"
+                f"{self.shared} of {self.sources} {self.source_words} have cells in more than one group, and "
+                "the tests take groups to be independent"
             )
         return doubts
 
@@ -132,6 +136,8 @@ def units(
     given = (grouped.groups[needed] != "").all(axis=1)
     usable = grouped.has_group & given
     missing = (*_without_text(cells, grouped, needed, grouped.has_group & ~given), *grouped.missing)
+    if cells.empty:
+        raise MorphotoneError("the survey analysed no cell; its turned_away.csv says why")
     if not usable.any():
         raise MorphotoneError(
             f"no analysed cell has a group ({len(cells)} cells, {len(grouped.table)} rows of groups); the "
@@ -163,11 +169,6 @@ def units(
         shared=int((groups_of > 1).sum()),
         missing=missing,
     )
-
-
-def sources(column: str) -> str:
-    """Return what the sources that a column names are called, in the plural."""
-    return SOURCES.get(column, f"sources (column {column})")
 
 
 def _own(name: str, columns: Sequence[str]) -> str:

@@ -6,8 +6,8 @@ import numpy as np
 import pandas as pd
 
 from morphotone.questions.comparisons import DELTA, EPSILON, KRUSKAL_WALLIS
-from morphotone.questions.summaries import FEW
-from morphotone.questions.units import Units, sources
+from morphotone.questions.summaries import FEW, LEAST
+from morphotone.questions.units import Units
 from morphotone.showing.digits import decimals, fixed, p_value
 from morphotone.showing.methods import listed, named
 from morphotone.showing.titles import meaning, title
@@ -108,14 +108,14 @@ def _details(units: Units, summary: pd.DataFrame) -> PaperTable:
     caption = (
         f"Electrotonic measures by {_by(units)}{_of_what(units)}: intervals are bootstrap intervals of 95 %."
     )
-    few = summary["n"].between(2, FEW - 1).any()
+    few = summary["n"].between(LEAST, FEW - 1).any()
     notes = (f"Bootstrap intervals of fewer than {FEW} values are too narrow.",) if few else ()
     return PaperTable("details", caption, header, 1 + len(units.by), tuple(rows), notes)
 
 
 def _tests(comparisons: pd.DataFrame, groups: int) -> PaperTable:
     """One row per test; the pairs of very many groups are left to the CSV."""
-    shown = comparisons if groups <= WIDEST else comparisons[comparisons["other_group"] == ""]
+    shown = comparisons if groups <= WIDEST else comparisons.drop_duplicates("column")  # the first of each
     rows = []
     for column, of_column in shown.groupby("column", sort=False):
         for at, (_, row) in enumerate(of_column.iterrows()):
@@ -142,7 +142,7 @@ def _by(units: Units) -> str:
 
 
 def _of_what(units: Units) -> str:
-    return f" of the means of {sources(units.source)}" if units.averaged and units.source else ""
+    return f" of the means of {units.source_words}" if units.averaged else ""
 
 
 def _around_mean(row: pd.Series) -> tuple[str, str]:

@@ -5,8 +5,8 @@ from collections.abc import Iterator
 import pandas as pd
 
 from morphotone.questions.comparisons import DEALS, KRUSKAL_WALLIS, MANN_WHITNEY, Family
-from morphotone.questions.summaries import Bootstrap
-from morphotone.questions.units import Units, sources
+from morphotone.questions.summaries import Bootstrap, groups_of
+from morphotone.questions.units import Units
 from morphotone.showing.methods import listed, named
 
 _SHOWN = 6  # groups that are named
@@ -38,23 +38,23 @@ def statistics(
 
 
 def _groups(units: Units) -> Iterator[str]:
-    sizes = units.table.groupby(list(units.by), observed=True, sort=True).size()
-    names = [", ".join(map(str, key)) if isinstance(key, tuple) else str(key) for key in sizes.index]
-    of = sources(units.source) if units.averaged and units.source else ""
-    shown = [f"{named(name)} (‹n› = {size:,})" for name, size in zip(names, sizes, strict=True)]
+    groups = groups_of(units.table, units.by)
+    shown = [f"{named(', '.join(names))} (‹n› = {len(rows):,})" for names, rows in groups]
     told = f": {listed(shown)}" if len(shown) <= _SHOWN else ""
     by = listed([named(name) for name in units.by])
-    unit = f", the unit being {of} (the mean over the cells that each had in a group)" if of else ""
+    unit = ""
+    if units.averaged:
+        unit = f", the unit being {units.source_words} (the mean over the cells that each had in a group)"
     yield f"{'Groups were' if len(shown) > 1 else 'One group was'} formed by {by}{unit}{told}."
     if units.nested:
         yield (
-            f"The {units.cells:,} cells came from {units.sources:,} {sources(units.source or '')} and were "
+            f"The {units.cells:,} cells came from {units.sources:,} {units.source_words} and were "
             "taken as independent, which makes intervals too narrow and ‹p› values too small ⟨Lazic2010⟩."
         )
     if units.shared:
         yield (
             f"Groups were taken as independent, although {units.shared:,} of {units.sources:,} "
-            f"{sources(units.source or '')} had cells in more than one group."
+            f"{units.source_words} had cells in more than one group."
         )
 
 

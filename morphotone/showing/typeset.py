@@ -78,15 +78,15 @@ def _table_latex(table: PaperTable) -> str:
     columns = "l" * words + "r" * (len(header) - words)
     caption = f"\\caption{{{latex(table.caption)}}}\\label{{tab:{table.name}}}"
     head = f"\\toprule\n{_row_latex(header)}\\midrule\n"
+    body = f"{''.join(rows)}\\bottomrule\n"
     notes = "".join(f"\n{latex(note)}\\par" for note in table.notes)
     if len(rows) > _ROWS_OF_A_PAGE:
-        return (
-            f"{{\\footnotesize\n\\begin{{longtable}}{{{columns}}}\n{caption}\\\\\n{head}\\endhead\n"
-            f"{''.join(rows)}\\bottomrule\n\\end{{longtable}}{notes}\n}}\n"
-        )
+        first = f"{caption}\\\\\n{head}\\endfirsthead\n{head}\\endhead\n"
+        long = f"\\begin{{longtable}}{{{columns}}}\n{first}{body}\\end{{longtable}}"
+        return f"{{\\footnotesize\n{long}{notes}\n}}\n"
+    tabular = f"\\begin{{tabular}}{{{columns}}}\n{head}{body}\\end{{tabular}}\\par\\medskip\\raggedright"
     return (
-        ""
-        f"\\begin{{table}}\n\\centering\\footnotesize\n{caption}\\medskip\n\\begin{{tabular}}{{{columns}}}\n{head}{''.join(rows)}\\bottomrule\n\\end{{tabular}}\\par\\medskip\\raggedright{notes}\n\\end{{table}}\n"
+        f"\\begin{{table}}\n\\centering\\footnotesize\n{caption}\\medskip\n{tabular}{notes}\n\\end{{table}}\n"
     )
 
 

@@ -13,7 +13,7 @@ from morphotone.errors import MorphotoneError, ReadingError, ResultsError
 from morphotone.questions.comparisons import COMPARISON_COLUMNS
 from morphotone.questions.summaries import SUMMARY_COLUMNS
 from morphotone.questions.units import REPORTED
-from tests.commands.folders import STUDY, called, examples, rows, run
+from tests.commands.folders import DOUBTFUL, SOUND, STUDY, UNFIT, called, examples, fill, rows, run
 
 GROUPS = STUDY / "cells.csv"
 FEW = ["--columns", "R_in_MOhm", "lambda_um"]
@@ -200,6 +200,17 @@ def test_values_outside_published_ranges_are_remarked(tmp_path):
     morphotone.survey(tmp_path, tmp_path / "results", assumptions=odd)
     made = morphotone.tabulate(tmp_path / "results", GROUPS, "class", columns=["X_tips_mean"])
     assert any("R_m_ohm_cm2 = 1000000.0 lies outside" in remark for remark in made.remarks)
+
+
+def test_cells_to_be_doubted_are_remarked(tmp_path):
+    fill(tmp_path / "cells", {"a.swc": SOUND, "b.swc": DOUBTFUL, "c.swc": UNFIT})
+    morphotone.survey(tmp_path / "cells", tmp_path / "results", keep_unfit=True)
+    groups = groups_file(tmp_path, ["a,x,", "b,x,", "c,x,"])
+    made = morphotone.tabulate(tmp_path / "results", groups, "class", columns=["tips"])
+    assert made.remarks == tuple(
+        f"1 of 3 cells are of grade {grade}; findings.csv says why" for grade in ("doubtful", "unfit")
+    )
+    assert "graded 1 sound, 1 doubtful and 1 unfit." in made.methods
 
 
 def test_the_example_in_the_help_runs(tmp_path, monkeypatch, capsys):

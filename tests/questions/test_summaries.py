@@ -101,7 +101,9 @@ def test_equal_values_have_no_interval():
 def test_what_has_no_value_is_counted():
     row = only_row([1.0, np.nan, 3.0, np.inf])
     assert (row["n"], row["cells"], row["mean"]) == (2, 2, 2.0)
-    assert row["note"] == f"2 without a value; fewer than {FEW} values: intervals too narrow"
+    assert row["note"] == "2 without a value; fewer than 4 values: no interval"
+    row = only_row([1.0, 2.0, 3.0, 5.0])
+    assert row["note"] == f"fewer than {FEW} values: intervals too narrow"
     row = only_row([np.nan, np.nan])
     assert (row["n"], row["note"]) == (0, "2 without a value")
     assert np.isnan(row["mean"])

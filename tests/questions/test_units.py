@@ -108,6 +108,11 @@ def test_a_groups_column_with_a_name_of_ours_is_marked():
     assert found.table["R_in_MOhm"].tolist() == [100.0]
 
 
+def test_a_survey_without_cells_is_refused():
+    with pytest.raises(MorphotoneError, match=r"analysed no cell; its turned_away\.csv says why"):
+        made(cells=CELLS[:0])
+
+
 @pytest.mark.parametrize(
     ("by", "options", "match"),
     [

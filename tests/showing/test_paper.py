@@ -1,12 +1,14 @@
 """Tables of a paper: what stands where, in Markdown and LaTeX."""
 
+import re
+
 import numpy as np
 import pandas as pd
 import pytest
 
 from morphotone.questions.comparisons import comparisons
 from morphotone.questions.groups import grouped
-from morphotone.questions.summaries import summary
+from morphotone.questions.summaries import Bootstrap, summary
 from morphotone.questions.units import units
 from morphotone.reading.groups import parse_groups
 from morphotone.showing.paper import WIDEST, paper_tables
@@ -33,7 +35,7 @@ def made(groups, **options):
     found = units(cells, grouped(cells, table), ["class"], COLUMNS, **options)
     return (
         found,
-        summary(found.table, found.by, found.columns),
+        summary(found.table, found.by, found.columns, Bootstrap(resamples=99)),
         comparisons(found.table, found.by, found.columns),
     )
 
@@ -106,5 +108,7 @@ def test_latex_opens_and_closes_what_it_opens():
     for name in ("table", "tabular", "longtable"):
         assert text.count(f"\\begin{{{name}}}") == text.count(f"\\end{{{name}}}")
     assert text.count("{") == text.count("}")
-    assert text.count("\\toprule") == text.count("\\midrule") == text.count("\\bottomrule")
+    assert text.count("\\label{") == len(re.findall(r"\\begin\{(?:table|longtable)\}", text))
+    head = text.partition("\\endfirsthead")[2].partition("\\endhead")[0]
+    assert "\\caption" not in head  # which stands on the first page alone
     assert "R_in" not in text
