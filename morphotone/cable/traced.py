@@ -188,7 +188,7 @@ def _joined(position: Real, parent: Index, tree: Index, main: int, gap: float) -
     parent = parent.copy()
     ours, waiting = np.flatnonzero(tree == main), np.flatnonzero(tree != main)
     while len(ours) and len(waiting):
-        distance, neighbour = cKDTree(position[ours]).query(position[waiting])
+        distance, neighbour = map(np.asarray, cKDTree(position[ours]).query(position[waiting]))
         piece = tree[waiting]
         order = np.lexsort((distance, piece))
         best = order[np.flatnonzero(np.diff(piece[order], prepend=-1))]  # of each piece, in samples' order
