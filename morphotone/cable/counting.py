@@ -112,16 +112,13 @@ class Lineup:
     def _folded(self, s: Values) -> Folded:
         """Return the elimination at s of shape (cells, columns)."""
         forest = self.forest
-        cell = np.empty(len(forest.kind), np.int64)
-        for number, places in enumerate(forest.nodes):
-            cell[places] = number
-        cable = len(cell) - forest.plan.roots
+        cable = len(forest.cell) - forest.plan.roots
         R_i, leak, capacity = (
             part[:, None] if len(part) == 1 else part[:cable, None]
             for part in membrane_of(forest.kind, self.assumptions)
         )
         start, end, length = (part[:cable] for part in (forest.r_start, forest.r_end, forest.length))
-        pieces = pi_of_frusta(start, end, length, R_i, leak + capacity * s[cell[:cable]])
+        pieces = pi_of_frusta(start, end, length, R_i, leak + capacity * s[forest.cell[:cable]])
         return fold(forest.plan, chain_of(pieces), self._load(s))
 
     def _load(self, s: Values) -> Values:

@@ -12,17 +12,21 @@ the path: next to the soma they lose no digit, as the differences total − loca
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass, fields
+from dataclasses import dataclass, replace
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.forest import Solved
-from morphotone.cable.spectrum import forest_of, slowest_ms, spectra
+from morphotone.cable.forest import Column, Forest
+from morphotone.cable.frustum import Values
+from morphotone.cable.solved import Solved
+from morphotone.cable.spectrum import forest_of, slowest_ms
 from morphotone.cable.tree import Cable
 from morphotone.units import MS_PER_S
 
+Index = NDArray[np.int64]
 Real = NDArray[np.float64]
 
 _STEP = 1e-10  # ε times the slowest membrane time constant
@@ -31,31 +35,51 @@ PF_PER_NF = 1e3  # ms/MΩ is nF
 
 @dataclass(frozen=True, eq=False)
 class Delays:
-    """Delays of one cell, by node of the cable (node 0 is the soma), or by sample after `by_sample`.
+    """Delays of one cell, arrays of shape (rows,), each found when first asked for.
+
+    Rows are the nodes of the cable (node 0 is the soma), or samples after `by_sample`.
 
     Attributes
     ----------
     cable : Cable
         The cell.
-    total_ms : ndarray, shape (rows,)
-        Current at the site, voltage at the soma, or the other way round: −d ln Z_i,soma/ds.
-    local_ms : ndarray, shape (rows,)
-        Current and voltage at the site: −d ln Z_ii/ds.
-    propagation_ms : ndarray, shape (rows,)
-        Voltage at the site to voltage at the soma, for current at the site: total − local there.
-    net_ms : ndarray, shape (rows,)
-        Net dendritic delay: how much later the soma responds than to the same current at the soma,
-        total − local at the soma.
-    R_in_MOhm : ndarray, shape (rows,)
-        Input resistance.
+    solved : Solved
+        The forest that the cell is in, at s = iε.
+    step : float
+        ε, 1/ms.
+    places : ndarray of int64, shape (rows,)
+        Where in the forest each row is, -1 for none.
     """
 
     cable: Cable
-    total_ms: Real
-    local_ms: Real
-    propagation_ms: Real
-    net_ms: Real
-    R_in_MOhm: Real
+    solved: Solved
+    step: float
+    places: Index
+
+    @cached_property
+    def total_ms(self) -> Real:
+        """Current at the site, voltage at the soma, or the other way round: −d ln Z_i,soma/ds."""
+        return self._local_at_soma_ms + self.net_ms
+
+    @cached_property
+    def local_ms(self) -> Real:
+        """Current and voltage at the site: −d ln Z_ii/ds."""
+        return self._blanked(-np.angle(self._Z_in) / self.step)
+
+    @cached_property
+    def propagation_ms(self) -> Real:
+        """Voltage at the site to voltage at the soma, for current at the site: total − local there."""
+        return self._blanked(self.solved.phase_to_soma[self.places, 0] / self.step)
+
+    @cached_property
+    def net_ms(self) -> Real:
+        """Net dendritic delay: how much later the soma responds than to the same current at the soma."""
+        return self._blanked(self.solved.phase_from_soma[self.places, 0] / self.step)
+
+    @cached_property
+    def R_in_MOhm(self) -> Real:
+        """Input resistance."""
+        return self._blanked(self._Z_in.real)
 
     @property
     def C_in_pF(self) -> Real:
@@ -73,20 +97,34 @@ class Delays:
         start, end = self.cable.areas()
         area = end.copy()
         area[0] = self.cable.traced.soma.area
-        np.add.at(area, self.cable.parent[1:], start[1:])
-        return float(np.average(self.total_ms, weights=area)) if area.any() else float(self.total_ms[0])
+        whole = area.sum() + start.sum()
+        total = (area * self.total_ms).sum() + (start * self.total_ms[self.cable.parent]).sum()
+        return float(total / whole) if whole else float(self.total_ms[0])
 
     def greatest_ms(self) -> float:
         """Return the greatest total delay of any node, ms."""
         return float(np.nanmax(self.total_ms))
 
+    def at(self, rows: Index) -> "Delays":
+        """Return the same for some rows only, -1 being none."""
+        return replace(self, places=np.where(rows < 0, -1, self.places[rows]))
+
     def by_sample(self) -> "Delays":
         """Return the same with one row per sample of the file, NaN where a sample is not analysed."""
-        node = self.cable.node
-        arrays = [getattr(self, field.name)[node] for field in fields(self)[1:]]
-        for values in arrays:
-            values[node < 0] = np.nan
-        return Delays(self.cable, *arrays)
+        return self.at(self.cable.node)
+
+    @cached_property
+    def _Z_in(self) -> Values:
+        return self.solved.Z_in_at(self.places)[:, 0]
+
+    @cached_property
+    def _local_at_soma_ms(self) -> float:
+        root = self.solved.root[self.places[:1]]
+        return float(-np.angle(self.solved.Z_in_at(root)[0, 0]) / self.step)
+
+    def _blanked(self, values: Real) -> Real:
+        values[self.places < 0] = np.nan
+        return values
 
 
 def delays(cells: Sequence[Cable], assumptions: Assumptions) -> list[Delays]:
@@ -99,19 +137,14 @@ def delays(cells: Sequence[Cable], assumptions: Assumptions) -> list[Delays]:
     assumptions : Assumptions
         Passive constants and shunt; frequencies are not used.
     """
-    if not cells:
-        return []
-    forest = forest_of(cells, assumptions)
-    step = _STEP / slowest_ms(assumptions)  # ε in 1/ms
-    solved = spectra(forest, [1j * MS_PER_S * step], forest.nodes, Solved._fields)
+    return delays_in(forest_of(cells, assumptions)) if cells else []
+
+
+def delays_in(forest: Forest) -> list[Delays]:
+    """Return the delays of the cells of a forest under its first assumptions; rows are nodes."""
+    step = _STEP / slowest_ms(forest.many[0])  # ε in 1/ms
+    solved = forest.solved([Column(0, 1j * MS_PER_S * step)])
     return [
-        _delays(cable, Solved(*(values[:, 0] for values in of_cell)), step)
-        for cable, of_cell in zip(cells, solved, strict=True)
+        Delays(cables[0], solved, step, places)
+        for cables, places in zip(forest.cells, forest.nodes, strict=True)
     ]
-
-
-def _delays(cable: Cable, solved: Solved, step: float) -> Delays:
-    """Read the delays of one cell off what was solved at s = iε."""
-    local, total = (-np.angle(Z) / step for Z in (solved.Z_in, solved.Z_transfer))
-    propagation, net = (log.imag / step for log in solved[2:])
-    return Delays(cable, total, local, propagation, net, solved.Z_in.real)

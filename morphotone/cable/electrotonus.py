@@ -1,19 +1,22 @@
 """What is read off the two sweeps: input and transfer impedance, attenuation both ways, X, λ."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass, fields
+from dataclasses import dataclass, replace
+from functools import cached_property
 from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.forest import Column, Forest, Solved, membrane_of
-from morphotone.cable.frustum import Values, electrotonic_lengths
+from morphotone.cable.forest import Column, Forest, membrane_of
+from morphotone.cable.frustum import Rows, Values, electrotonic_lengths
+from morphotone.cable.solved import Solved
 from morphotone.cable.tree import Cable, build
 from morphotone.errors import AssumptionError, ReadingError
 from morphotone.reading.reconstruction import Reconstruction
 
+Index = NDArray[np.int64]
 Real = NDArray[np.float64]
 
 
@@ -31,8 +34,75 @@ class Case(NamedTuple):
 
 
 @dataclass(frozen=True, eq=False)
+class Solution:
+    """Many cells solved as one forest; arrays are by node, one cell after the other, one column per case.
+
+    Attributes
+    ----------
+    forest : Forest
+        The cells.
+    groups : tuple of Solved
+        Cases at rest apart from the others, since they need real arithmetic only.
+    column : ndarray of int64, shape (cases,)
+        Where each case stands among the columns of all groups.
+    which : list of int
+        Per case, which of the forest's assumptions it has.
+    """
+
+    forest: Forest
+    groups: tuple[Solved, ...]
+    column: Index
+    which: list[int]
+
+    def Z_in(self, nodes: Rows) -> Values:
+        """Return input impedances of some nodes, MΩ."""
+        places = self.forest.places[nodes]
+        return self._side_by_side([group.Z_in_at(places) for group in self.groups])
+
+    def Z_transfer(self, nodes: Rows) -> Values:
+        """Return transfer impedances between some nodes and the soma, MΩ."""
+        places = self.forest.places[nodes]
+        return self._side_by_side([group.Z_transfer.take(places, axis=0) for group in self.groups])
+
+    @cached_property
+    def log_attenuation_to_soma(self) -> Real:
+        """ln|V_site/V_soma| for current at the site."""
+        return self._by_node(self._side_by_side([group.log_magnitude_to_soma for group in self.groups]))
+
+    @cached_property
+    def log_attenuation_from_soma(self) -> Real:
+        """ln|V_soma/V_site| for current at the soma."""
+        return self._by_node(self._side_by_side([group.log_magnitude_from_soma for group in self.groups]))
+
+    @cached_property
+    def distances(self) -> tuple[Real, Real]:
+        """Path distance (µm) and X."""
+        path, X = (self._by_node(values) for values in self.forest.distances())
+        return path[:, self.which if path.shape[1] > 1 else [0] * len(self.which)], X[:, self.which]
+
+    @cached_property
+    def lambda_um(self) -> Real:
+        """Local λ at 0 Hz, µm."""
+        return self._by_node(self.forest.lambdas())[:, self.which]
+
+    @cached_property
+    def L(self) -> Real:
+        """Electrotonic length of the frustum that ends at each node."""
+        return self.forest.L_by_node[:, self.which]
+
+    def _side_by_side(self, values: list[Values]) -> Values:
+        together = np.concatenate(values, axis=1)
+        in_order = (np.diff(self.column) > 0).all()
+        return together if in_order else together.take(self.column, axis=1)
+
+    def _by_node(self, by_place: Values) -> Values:
+        by_node: Values = by_place.take(self.forest.places, axis=0)
+        return by_node
+
+
+@dataclass(frozen=True, eq=False)
 class Electrotonus:
-    """The electrotonic structure of one cell, one column per case.
+    """The electrotonic structure of one cell: arrays of shape (rows, cases), each found when first asked for.
 
     Rows are the samples of the file, in the order of the reconstruction, NaN where a sample is not
     analysed; as `solve_cables` gives it, rows are the nodes of ``cable``, of which node 0 is the soma,
@@ -44,30 +114,56 @@ class Electrotonus:
         The cell as frusta.
     cases : tuple of Case
         Assumptions and frequency of each column.
-    Z_in, Z_transfer : ndarray, shape (rows, cases)
-        Input impedance, and transfer impedance to the soma (the same in both directions), MΩ;
-        complex128 if any case has a frequency, else float64.
-    log_attenuation_to_soma : ndarray, shape (rows, cases)
-        ln|V_site/V_soma| for current injected at the site.
-    log_attenuation_from_soma : ndarray, shape (rows, cases)
-        ln|V_soma/V_site| for current injected at the soma.
-    path_um : ndarray, shape (rows, cases)
-        Distance along the cable from the soma's surface, µm.
-    X : ndarray, shape (rows, cases)
-        Electrotonic distance from the soma (0 Hz, whatever the case's frequency).
-    lambda_um : ndarray, shape (rows, cases)
-        Space constant of an endless cylinder of the local diameter (0 Hz), µm; NaN at a soma.
+    solution : Solution
+        The forest that the cell was solved in.
+    rows : slice or ndarray of int64, shape (rows,)
+        Which node of the forest each row is, -1 for none.
     """
 
     cable: Cable
     cases: tuple[Case, ...]
-    Z_in: Values
-    Z_transfer: Values
-    log_attenuation_to_soma: Real
-    log_attenuation_from_soma: Real
-    path_um: Real
-    X: Real
-    lambda_um: Real
+    solution: Solution
+    rows: Rows
+
+    @cached_property
+    def Z_in(self) -> Values:
+        """Input impedance, MΩ; complex128 if any case has a frequency, else float64."""
+        return self._blanked(self.solution.Z_in(self.rows))
+
+    @cached_property
+    def Z_transfer(self) -> Values:
+        """Transfer impedance to the soma (the same in both directions), MΩ; dtype as `Z_in`."""
+        return self._blanked(self.solution.Z_transfer(self.rows))
+
+    @cached_property
+    def log_attenuation_to_soma(self) -> Real:
+        """ln|V_site/V_soma| for current injected at the site."""
+        return self._blanked(self.solution.log_attenuation_to_soma[self.rows])
+
+    @cached_property
+    def log_attenuation_from_soma(self) -> Real:
+        """ln|V_soma/V_site| for current injected at the soma."""
+        return self._blanked(self.solution.log_attenuation_from_soma[self.rows])
+
+    @cached_property
+    def path_um(self) -> Real:
+        """Distance along the cable from the soma's surface, µm."""
+        return self._blanked(self.solution.distances[0][self.rows])
+
+    @cached_property
+    def X(self) -> Real:
+        """Electrotonic distance from the soma (0 Hz, whatever the case's frequency)."""
+        return self._blanked(self.solution.distances[1][self.rows])
+
+    @cached_property
+    def L(self) -> Real:
+        """Electrotonic length of the frustum that ends at the row (0 Hz); 0 at node 0."""
+        return self._blanked(self.solution.L[self.rows])
+
+    @cached_property
+    def lambda_um(self) -> Real:
+        """Space constant of an endless cylinder of the local diameter (0 Hz), µm; NaN at a soma."""
+        return self._blanked(self.solution.lambda_um[self.rows])
 
     @property
     def hz(self) -> Real:
@@ -94,14 +190,20 @@ class Electrotonus:
         """|Z_transfer|, MΩ, shape (rows, cases)."""
         return np.abs(self.Z_transfer)
 
+    def at(self, nodes: Index) -> "Electrotonus":
+        """Return the same for some rows only, -1 being none."""
+        rows = np.arange(self.rows.start, self.rows.stop) if isinstance(self.rows, slice) else self.rows
+        return replace(self, rows=np.where(nodes < 0, -1, rows[nodes]))
+
     def by_sample(self) -> "Electrotonus":
         """Return the same with one row per sample of the file instead of one per node."""
-        node = self.cable.node
-        arrays = [getattr(self, field.name).take(node, axis=0) for field in fields(self)[2:]]
-        left_out = np.flatnonzero(node < 0)
-        for values in arrays:
-            values[left_out] = np.nan
-        return Electrotonus(self.cable, self.cases, *arrays)
+        return self.at(self.cable.node)
+
+    def _blanked(self, values: Values) -> Values:
+        """Return values with NaN where a row is no node's."""
+        if not isinstance(self.rows, slice):
+            values[self.rows < 0] = np.nan
+        return values
 
 
 def solve(
@@ -188,25 +290,32 @@ def solve_cables(cells: Sequence[Sequence[Cable]], cases: Sequence[Case]) -> lis
     cases : sequence of Case
         As `cases_of` returns them for the same assumptions.
     """
-    if not cells:
-        return []
-    many, which = _distinct(cases)
-    forest = Forest(cells, many)
+    many, _ = _distinct(cases)
+    return solve_forest(Forest(cells, many), cases) if cells else []
+
+
+def solve_forest(forest: Forest, cases: Sequence[Case]) -> list[Electrotonus]:
+    """Solve the cells of a forest, each exactly as if it were alone; rows are nodes.
+
+    Parameters
+    ----------
+    forest : Forest
+        Under the assumptions of the cases, in the order of their appearance.
+    cases : sequence of Case
+        As `cases_of` returns them.
+    """
+    _, which = _distinct(cases)
     columns = [Column(one, 2j * np.pi * case.hz) for one, case in zip(which, cases, strict=True)]
-    # Cases at rest apart from the others, since they need real arithmetic only.
     groups = [
         group
         for at_rest in (True, False)
         if (group := [i for i, case in enumerate(cases) if (case.hz == 0.0) is at_rest])
     ]
-    parts = [forest.solved([columns[i] for i in group]) for group in groups]
-    back = np.argsort(np.concatenate(groups))
-    solved = Solved(*(np.concatenate(values, axis=1)[:, back] for values in zip(*parts, strict=True)))
-    logarithms = (values.real for values in solved[2:])
-    values_of_all = (*solved[:2], *logarithms, *(values[:, which] for values in forest.distances()))
-    per_cell = zip(*(forest.by_cell(values) for values in values_of_all), strict=True)
+    solved = tuple(forest.solved([columns[i] for i in group]) for group in groups)
+    solution = Solution(forest, solved, np.argsort(np.concatenate(groups)), which)
     return [
-        Electrotonus(cables[0], tuple(cases), *values) for cables, values in zip(cells, per_cell, strict=True)
+        Electrotonus(cables[0], tuple(cases), solution, slice(first, last))
+        for cables, first, last in zip(forest.cells, forest.first[:-1], forest.first[1:], strict=True)
     ]
 
 

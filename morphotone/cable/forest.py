@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.cutting import cut
 from morphotone.cable.frustum import Pi, Values, electrotonic_lengths, pi_of_frusta
+from morphotone.cable.solved import Solved
 from morphotone.cable.sweeps import path_sums, schedule, sweep
 from morphotone.cable.tree import Cable
 from morphotone.reading.soma import SOMA
@@ -36,19 +37,6 @@ class Column(NamedTuple):
 
     which: int
     s: complex
-
-
-class Solved(NamedTuple):
-    """By place, one column per case asked: impedances in MΩ, natural logarithms of the attenuations.
-
-    ln(V_site/V_soma) for current at the site and ln(V_soma/V_site) for current at the soma; complex where
-    s is, the imaginary part being the phase summed along the path.
-    """
-
-    Z_in: Values
-    Z_transfer: Values
-    log_attenuation_to_soma: Values
-    log_attenuation_from_soma: Values
 
 
 class Membrane(NamedTuple):
@@ -88,13 +76,15 @@ class Forest:
         frusta = _frusta_of(cells, self.many)
         self.plan = schedule(frusta.parent)
         order = self.plan.order
-        self.kind = frusta.kind[order]
-        self.r_start, self.r_end, self.length = (
-            values[order] for values in (frusta.r_start, frusta.r_end, frusta.length)
+        self.kind, self.cell = frusta.kind[order], frusta.cell[order]
+        self.r_start, self.r_end, self.length, self.L = (
+            values.take(order, axis=0) for values in (frusta.r_start, frusta.r_end, frusta.length, frusta.L)
         )
-        sizes = [len(cables[0].parent) for cables in cells]
-        self.nodes = np.split(self.plan.place[frusta.ends], np.cumsum(sizes)[:-1])  # places, by cell
-        self.at_root = np.array([places[0] for places in self.nodes])
+        self.L_by_node = frusta.L_of_whole
+        self.places = self.plan.place[frusta.ends]  # by node, one cell after the other
+        self.first = np.cumsum([0, *(len(cables[0].parent) for cables in cells)])
+        self.nodes = np.split(self.places, self.first[1:-1])  # places, by cell
+        self.at_root = self.places[self.first[:-1]]
         self.soma_area = np.array([[cable.traced.soma.area for cable in cables] for cables in cells])
 
     def constants(self, columns: Sequence[Column], code: Index | None = None) -> tuple[Values, Values]:
@@ -119,28 +109,12 @@ class Forest:
         return self.r_start[:, which], self.r_end[:, which], self.length[:, which]
 
     def solved(self, columns: Sequence[Column]) -> Solved:
-        """Return impedances and log-attenuations, in real arithmetic if every s is real.
-
-        Z_in = 1/(admittance away + admittance toward the soma).  Over one frustum V_parent/V =
-        1 + (shunt + away)/axial for current at the soma, and V/V_parent = 1 + (shunt + beyond)/axial
-        for current at the site; both are 1 plus a positive number at 0 Hz, and their logarithms add up
-        along the path (Zador, Agmon-Snir & Segev 1995, J Neurosci 15:1669–1682).
-        """
+        """Return impedances and attenuations, in real arithmetic if every s is real."""
         R_i, g = self.constants(columns)
         first_root = len(self.kind) - self.plan.roots
         pieces = _frusta_only(first_root, self.geometry(columns), R_i, g)
         looks = sweep(self.plan, pieces, self.load(columns, g.dtype))
-        far = pieces.start + looks.beyond
-        toward = pieces.end + pieces.axial * (far / (pieces.axial + far))
-        toward[first_root:] = 0.0
-        z_in = 1.0 / (looks.away + toward)
-        with np.errstate(divide="ignore", over="ignore", invalid="ignore"):  # where nothing gets through
-            fall_from = (pieces.end + looks.away) / pieces.axial
-            fall_to = far / pieces.axial
-        log_from = path_sums(self.plan, np.log1p(fall_from))
-        log_to = path_sums(self.plan, np.log1p(fall_to))
-        at_soma = z_in[self._root_of_place()]
-        return Solved(z_in, at_soma * np.exp(-log_from), log_to, log_from)
+        return Solved(self.plan, self.at_root[self.cell], pieces, looks)
 
     def load(self, columns: Sequence[Column], dtype: np.dtype[np.generic]) -> Values:
         """Return the soma's membrane and the shunt at the roots, µS, by place; 0 elsewhere."""
@@ -152,37 +126,28 @@ class Forest:
         load[self.at_root] = membrane + MICROSIEMENS_PER_NANOSIEMENS * shunt
         return load
 
-    def distances(self) -> tuple[Real, Real, Real]:
-        """Return path distance (µm), X and λ (µm; NaN at a soma), by place and assumptions.
+    def distances(self) -> tuple[Real, Real]:
+        """Return path distance (µm) and X by place, shape (places, 1 or assumptions) and (…, assumptions)."""
+        lengths = self.length.shape[1]
+        sums = path_sums(self.plan, np.concatenate((self.length, self.L), axis=1))
+        return sums[:, :lengths], sums[:, lengths:]
 
-        λ = sqrt((R_m/R_i)(d/4)) with the local diameter d.
+    def lambdas(self) -> Real:
+        """Return λ = sqrt((R_m/R_i)(d/4)) with the local diameter d, µm, by place and assumptions.
+
+        NaN at a soma.
         """
-        columns = [Column(which, 0.0) for which in range(len(self.many))]
-        r_start, r_end, length = self.geometry(columns)
-        R_i, leak = self.constants(columns)
-        x = electrotonic_lengths(r_start, r_end, length, R_i, leak)
-        sums = path_sums(self.plan, np.concatenate((length + np.zeros_like(x), x), axis=1))
-        lambdas = np.sqrt(UM_PER_CM * self._local_radius() / (2.0 * R_i * leak))
-        return sums[:, : len(columns)], sums[:, len(columns) :], lambdas
-
-    def _local_radius(self) -> Real:
-        """Return the radius at the end of each frustum, at root samples their own, at somata NaN, µm."""
-        radius = self.r_end.copy()
+        R_i, leak = self.constants([Column(which, 0.0) for which in range(len(self.many))])
+        radius = self.r_end.copy()  # at root samples their own
         for place, cables in zip(self.at_root, self.cells, strict=True):
             traced = cables[0].traced
             radius[place] = np.nan if len(traced.soma.members) else traced.radius[traced.root]
-        return radius
-
-    def _root_of_place(self) -> Index:
-        """Return for each place the place of its root."""
-        root = np.arange(len(self.kind))
-        for step in reversed(self.plan.steps):
-            root[step.first : step.last] = root[step.parent]
-        return root
+        lambdas: Real = np.sqrt(UM_PER_CM * radius / (2.0 * R_i * leak))
+        return lambdas
 
     def by_cell(self, values: NDArray[Any]) -> list[NDArray[Any]]:
         """Cut an array by place into one by node per cell."""
-        return [values[places] for places in self.nodes]
+        return [values.take(places, axis=0) for places in self.nodes]
 
 
 class _Frusta(NamedTuple):
@@ -196,7 +161,10 @@ class _Frusta(NamedTuple):
     r_start: Real
     r_end: Real
     length: Real
+    L: Real  # electrotonic length, shape (n, assumptions)
+    cell: Index
     ends: Index  # where each node of the cells stands, one cell after the other
+    L_of_whole: Real  # by node: of its frustum before any was cut
 
 
 def _frusta_of(cells: Sequence[Sequence[Cable]], many: Sequence[Assumptions]) -> _Frusta:
@@ -213,16 +181,24 @@ def _frusta_of(cells: Sequence[Sequence[Cable]], many: Sequence[Assumptions]) ->
         for name in ("r_start", "r_end", "length")
     )
     kind = np.concatenate([cable.kind for cable in first])
-    whole = _Frusta(parent, kind, r_start, r_end, length, np.arange(len(parent)))
+    cell = np.repeat(np.arange(len(cells)), np.diff(offsets))
+    L = _lengths(kind, r_start, r_end, length, many)
+    whole = _Frusta(parent, kind, r_start, r_end, length, L, cell, np.arange(len(parent)), L)
+    pieces = np.ceil(L.max(axis=1) / _LONGEST)
+    if not (pieces > 1).any():
+        return whole
+    parts = cut(parent, r_start, r_end, length, np.clip(pieces, 1, _MOST_PIECES).astype(np.int64))
+    kind, sides = kind[parts.of], (parts.r_start, parts.r_end, parts.length)
+    return _Frusta(parts.parent, kind, *sides, _lengths(kind, *sides, many), cell[parts.of], parts.ends, L)
+
+
+def _lengths(kind: Index, r_start: Real, r_end: Real, length: Real, many: Sequence[Assumptions]) -> Real:
+    """Return the electrotonic length of each frustum at 0 Hz, shape (n, assumptions)."""
     R_i, leak = (
         np.stack(np.broadcast_arrays(*values), axis=1)
         for values in list(zip(*(membrane_of(kind, one) for one in many), strict=True))[:2]
     )
-    pieces = np.ceil(electrotonic_lengths(r_start, r_end, length, R_i, leak).max(axis=1) / _LONGEST)
-    if not (pieces > 1).any():
-        return whole
-    parts = cut(parent, r_start, r_end, length, np.clip(pieces, 1, _MOST_PIECES).astype(np.int64))
-    return _Frusta(parts.parent, kind[parts.of], parts.r_start, parts.r_end, parts.length, parts.ends)
+    return electrotonic_lengths(r_start, r_end, length, R_i, leak)
 
 
 def _frusta_only(first_root: int, geometry: tuple[Real, Real, Real], R_i: Values, g: Values) -> Pi:

@@ -17,13 +17,12 @@ stretches give all pairs (Bender & Farach-Colton 2000, LATIN, LNCS 1776:88–94,
 """
 
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.forest import Solved
 from morphotone.cable.frustum import Values
 from morphotone.cable.spectrum import forest_of, slowest_ms, spectra
 from morphotone.cable.tree import Cable
@@ -112,7 +111,7 @@ def coupling(
     """
     looked = nodes if seen is None else seen
     common = common_nodes(cable.parent, nodes, looked)
-    along = _solved(cable, assumptions, 2j * np.pi * hz if hz else 0.0)
+    along = _along(cable, assumptions, 2j * np.pi * hz if hz else 0.0)
     outward_i, outward_j = _outward(along, common, nodes, looked)
     Z = along.Z_in[common] * np.exp(-(outward_i + outward_j))
     log = (_inward(along, common, nodes) + outward_j).real
@@ -129,7 +128,7 @@ def pair_delays(
     looked = nodes if seen is None else seen
     common = common_nodes(cable.parent, nodes, looked)
     step = _STEP / slowest_ms(assumptions)  # in 1/ms
-    along = _solved(cable, assumptions, 1j * MS_PER_S * step)
+    along = _along(cable, assumptions, 1j * MS_PER_S * step)
     outward_i, outward_j = _outward(along, common, nodes, looked)
     total = ((outward_i + outward_j).imag - np.angle(along.Z_in)[common]) / step
     return PairDelays(total, (_inward(along, common, nodes) + outward_j).imag / step)
@@ -181,21 +180,28 @@ def _entered(parent: Index) -> Index:
     return np.array(entered, np.int64)
 
 
-def _solved(cable: Cable, assumptions: Assumptions, s: complex) -> Solved:
-    """Return impedances and log-attenuations by node at one complex frequency, 1/s."""
+class _Along(NamedTuple):
+    """Impedance and log-attenuations by node at one complex frequency (`morphotone.cable.solved`)."""
+
+    Z_in: NDArray[Any]
+    log_attenuation_to_soma: NDArray[Any]
+    log_attenuation_from_soma: NDArray[Any]
+
+
+def _along(cable: Cable, assumptions: Assumptions, s: complex) -> _Along:
     forest = forest_of([cable], assumptions)
-    (fields,) = spectra(forest, [s], forest.nodes, Solved._fields)
-    return Solved(*(values[:, 0] for values in fields))
+    (fields,) = spectra(forest, [s], forest.nodes, _Along._fields)
+    return _Along(*(values[:, 0] for values in fields))
 
 
-def _outward(along: Solved, common: Index, nodes: Index, seen: Index) -> tuple[NDArray[Any], NDArray[Any]]:
+def _outward(along: _Along, common: Index, nodes: Index, seen: Index) -> tuple[NDArray[Any], NDArray[Any]]:
     """Return ln A from the common node out to the one site and to the other, shape (sites, others)."""
     start = along.log_attenuation_from_soma[common]
     ends = along.log_attenuation_from_soma[nodes][:, None], along.log_attenuation_from_soma[seen]
     return ends[0] - start, ends[1] - start
 
 
-def _inward(along: Solved, common: Index, nodes: Index) -> NDArray[Any]:
+def _inward(along: _Along, common: Index, nodes: Index) -> NDArray[Any]:
     """Return ln A from the site in to the common node, shape (sites, others)."""
     log = along.log_attenuation_to_soma
     inward: NDArray[Any] = log[nodes][:, None] - log[common]

@@ -64,7 +64,7 @@ def peel(cable: Cable, assumptions: Assumptions, tau_ms: Real, amplitude_soma: R
 def _X_of_tips(cable: Cable, assumptions: Assumptions) -> Real:
     """Return X of every node that no frustum starts from, the soma apart."""
     forest = Forest([(cable,)], (assumptions,))
-    _, X, _ = forest.distances()
+    _, X = forest.distances()
     nodes = np.arange(1, len(cable.parent))
     tips: Real = forest.by_cell(X)[0][np.setdiff1d(nodes, cable.parent), 0]
     return tips

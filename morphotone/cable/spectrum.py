@@ -42,7 +42,7 @@ def spectra(
     places : sequence of ndarray of int64
         Per cell, the places to keep.
     names : sequence of str
-        Fields of `morphotone.cable.forest.Solved` to keep.
+        Fields of `morphotone.cable.solved.Solved` to keep.
 
     Returns
     -------

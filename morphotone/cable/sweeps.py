@@ -217,9 +217,9 @@ def sweep(plan: Schedule, pieces: Pi, load: Values) -> Looks:
     pieces = Pi(*(part.copy() for part in pieces))
     total = load.copy()
     looked_into = np.zeros_like(load)  # by hung stream, at its parent node
-    unfolded = _fold_and_hang(plan, pieces, total, looked_into)
+    lower = _fold_and_hang(plan, pieces, total, looked_into)
     others = _others(plan, load, looked_into)
-    return _undo(plan, pieces, unfolded, total, others)
+    return _undo(plan, pieces, lower, total, others)
 
 
 def _behind(axial: Values, shunt: Values, beyond: Values, near: Values) -> Values:
@@ -230,25 +230,28 @@ def _behind(axial: Values, shunt: Values, beyond: Values, near: Values) -> Value
 
 
 def _fold_and_hang(plan: Schedule, pieces: Pi, total: Values, looked_into: Values) -> list[Pi | None]:
-    """Eliminate all nodes but the roots; return the pieces that each folding replaced."""
+    """Eliminate all nodes but the roots; return for each folding the lower pieces that went into it.
+
+    A piece stays as it was when its node was eliminated.
+    """
     axial, start, end = pieces
-    replaced: list[Pi | None] = []
+    lower: list[Pi | None] = []
     for first, last, parent, child, groups in plan.steps:
         at = slice(first, last)
         if child is None:
             looked_into[at] = _behind(axial[at], end[at], total[at], start[at])
             total[parent[groups]] += np.add.reduceat(looked_into[at], groups, axis=0)
-            replaced.append(None)
+            lower.append(None)
             continue
-        below = Pi(axial[child], start[child], end[child])
-        replaced.append(below)
+        below = Pi(*(part.take(child, axis=0) for part in pieces))
+        lower.append(below)
         middle = end[at] + total[at] + below.start
         pivot = axial[at] + below.axial + middle
         share = below.axial / pivot
         axial[child] = axial[at] * share
         start[child] = start[at] + middle * (axial[at] / pivot)
         end[child] = below.end + middle * share
-    return replaced
+    return lower
 
 
 def _others(plan: Schedule, load: Values, looked_into: Values) -> Values:
@@ -275,26 +278,23 @@ def _others(plan: Schedule, load: Values, looked_into: Values) -> Values:
     return others
 
 
-def _undo(plan: Schedule, pieces: Pi, replaced: list[Pi | None], total: Values, others: Values) -> Looks:
+def _undo(plan: Schedule, pieces: Pi, lower: list[Pi | None], total: Values, others: Values) -> Looks:
     """Undo the eliminations from the roots on, filling in what each node sees on either side."""
     axial, start, end = pieces
     away, beyond = total, np.zeros_like(total)
-    through = np.zeros_like(
-        total
-    )  # at a node, its own stream in both directions, without load and side streams
-    for (first, last, parent, child, _), below in zip(reversed(plan.steps), reversed(replaced), strict=True):
+    through = np.zeros_like(total)  # at a node, its own stream both ways, without load and side streams
+    for (first, last, parent, child, _), below in zip(reversed(plan.steps), reversed(lower), strict=True):
         at = slice(first, last)
         if child is None or below is None:
-            beyond[at] = through[parent] + others[at]
+            beyond[at] = through.take(parent, axis=0) + others[at]
             through[at] = _behind(axial[at], start[at], beyond[at], end[at])
             continue
-        beyond[at] = beyond[child]
+        beyond[at] = beyond.take(child, axis=0)
         toward = _behind(axial[at], start[at], beyond[at], end[at])
-        down = _behind(below.axial, below.end, away[child], below.start)
+        down = _behind(below.axial, below.end, away.take(child, axis=0), below.start)
         beyond[child] = toward + total[at]
-        away[at] = total[at] + down
         through[at] = toward + down
-        axial[child], start[child], end[child] = below
+        away[at] += down
     return Looks(away, beyond)
 
 
@@ -311,8 +311,8 @@ def path_sums(plan: Schedule, amount: Values) -> Values:
     amount = amount.copy()
     for first, last, _, child, _ in plan.steps:
         if child is not None:
-            amount[child] += amount[first:last]
+            amount[child] = amount.take(child, axis=0) + amount[first:last]
     amount[len(amount) - plan.roots :] = 0.0
     for first, last, parent, _, _ in reversed(plan.steps):
-        amount[first:last] += amount[parent]
+        amount[first:last] += amount.take(parent, axis=0)
     return amount

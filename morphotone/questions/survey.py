@@ -9,7 +9,8 @@ from typing import Any
 import numpy as np
 
 from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.electrotonus import build_cases, cases_of, solve_cables
+from morphotone.cable.electrotonus import build_cases, cases_of, solve_forest
+from morphotone.cable.forest import Forest
 from morphotone.cable.tree import Cable
 from morphotone.errors import ReadingError
 from morphotone.questions.branch_table import branch_table
@@ -187,12 +188,15 @@ def _in_view_of(assumptions: Assumptions, vetting: Vetting) -> Vetting:
 
 def cells_of(ready: Sequence[Prepared], request: Request) -> list[Cell]:
     """Solve prepared files as one forest, the time axis too where it is asked for."""
-    solved = solve_cables([each.cables for each in ready], cases_of([request.assumptions]))
+    if not ready:
+        return []
+    forest = Forest([each.cables for each in ready], [request.assumptions])
+    solved = solve_forest(forest, cases_of([request.assumptions]))
     cells = [Cell(each.rec, each.vetting, one) for each, one in zip(ready, solved, strict=True)]
     if request.time == TimeRequest():
         return cells
-    cables, tips = [cell.cable for cell in cells], [cell.farthest_tip for cell in cells]
-    axes = time_axes(cables, tips, request.assumptions, request.time, everywhere=request.samples)
+    tips = [cell.farthest_tip for cell in cells]
+    axes = time_axes(forest, tips, request.time, everywhere=request.samples)
     return [replace(cell, time=axis) for cell, axis in zip(cells, axes, strict=True)]
 
 

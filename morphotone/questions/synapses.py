@@ -9,9 +9,10 @@ from numpy.typing import NDArray
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.brief import brief
 from morphotone.cable.circuit import alone
-from morphotone.cable.delays import Delays, delays
-from morphotone.cable.electrotonus import Electrotonus, cases_of, solve_cables
+from morphotone.cable.delays import Delays, delays_in
+from morphotone.cable.electrotonus import Electrotonus, cases_of, solve_forest
 from morphotone.cable.sites import Sited
+from morphotone.cable.spectrum import forest_of
 from morphotone.cable.tree import Cable
 from morphotone.questions.branches import Branches, branches_of
 from morphotone.questions.columns import Columns, case_suffixes
@@ -57,9 +58,11 @@ class Solved:
 
 def solved(cells: Sequence[Placed], assumptions: Assumptions) -> list[Solved]:
     """Solve cells with sites as one forest, each exactly as if it were alone."""
-    cables = [placed.sited.cable for placed in cells]
-    electrotonus = solve_cables([(cable,) for cable in cables], cases_of([assumptions]))
-    return [Solved(*one) for one in zip(cells, electrotonus, delays(cables, assumptions), strict=True)]
+    if not cells:
+        return []
+    forest = forest_of([placed.sited.cable for placed in cells], assumptions)
+    electrotonus = solve_forest(forest, cases_of([assumptions]))
+    return [Solved(*one) for one in zip(cells, electrotonus, delays_in(forest), strict=True)]
 
 
 def with_synapse(sites: Sites) -> NDArray[np.bool_]:
@@ -77,7 +80,7 @@ def with_course(sites: Sites) -> NDArray[np.bool_]:
 def site_table(cell: Solved) -> Columns:
     """Return the columns of ``ranking.csv`` that one cell gives, one row per site; README explains them."""
     placed, node = cell.placed, cell.placed.sited.node
-    cable, known = placed.sited.cable, cell.electrotonus
+    cable, known, lags = placed.sited.cable, cell.electrotonus.at(node), cell.delays.at(node)
     branches = branches_of(cable.parent)
     of = branches.of_node[node]
     columns: Columns = {
@@ -88,24 +91,24 @@ def site_table(cell: Solved) -> Columns:
         "branch": of + 1,
         "order": np.append(branches.order, 0)[of],
         "moved_um": placed.moved_um,
-        "path_um": known.path_um[node, 0],
+        "path_um": known.path_um[:, 0],
         "straight_um": placed.straight_um,
         "diameter_um": np.where(node > 0, 2.0 * cable.r_end[node], _diameter_at_root(cable)),
-        "lambda_um": known.lambda_um[node, 0],
-        "X": known.X[node, 0],
-        "L_to_tip": _farthest_beyond(branches, known.X[:, 0])[of] - known.X[node, 0],
+        "lambda_um": known.lambda_um[:, 0],
+        "X": known.X[:, 0],
+        "L_to_tip": _farthest_beyond(branches, cell.electrotonus.X[:, 0])[of] - known.X[:, 0],
     }
     for case, suffix in enumerate(case_suffixes(known)):
-        from_soma = known.log_attenuation_from_soma[node, case]
+        from_soma = known.log_attenuation_from_soma[:, case]
         columns |= {
-            f"R_in_MOhm{suffix}": np.abs(known.Z_in[node, case]),
-            f"R_transfer_MOhm{suffix}": np.abs(known.Z_transfer[node, case]),
-            f"attenuation_to_soma{suffix}": np.exp(known.log_attenuation_to_soma[node, case]),
+            f"R_in_MOhm{suffix}": np.abs(known.Z_in[:, case]),
+            f"R_transfer_MOhm{suffix}": np.abs(known.Z_transfer[:, case]),
+            f"attenuation_to_soma{suffix}": np.exp(known.log_attenuation_to_soma[:, case]),
             f"attenuation_from_soma{suffix}": np.exp(from_soma),
             f"charge_to_soma{suffix}": np.exp(-from_soma),
         }
     for name in ("total", "local", "propagation", "net"):
-        columns[f"delay_{name}_ms"] = getattr(cell.delays, f"{name}_ms")[node]
+        columns[f"delay_{name}_ms"] = getattr(lags, f"{name}_ms")
     return columns
 
 

@@ -5,12 +5,11 @@ from typing import Any
 
 import numpy as np
 
-from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.delays import Delays, delays
+from morphotone.cable.delays import Delays, delays_in
+from morphotone.cable.forest import Forest
 from morphotone.cable.modes import MOST, Modes, time_constants
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.cable.transients import Responses, Transients, transients
-from morphotone.cable.tree import Cable
 from morphotone.errors import AssumptionError
 from morphotone.questions.columns import Columns
 
@@ -58,26 +57,23 @@ class TimeAxis:
     transients: Transients | None = None
 
 
-def time_axes(
-    cells: list[Cable], farthest: list[int], assumptions: Assumptions, request: TimeRequest, everywhere: bool
-) -> list[TimeAxis]:
+def time_axes(forest: Forest, farthest: list[int], request: TimeRequest, everywhere: bool) -> list[TimeAxis]:
     """Return what is asked for of many cells, each exactly as if it were alone.
 
     Parameters
     ----------
-    cells : list of Cable
-        Built under the assumptions.
+    forest : Forest
+        The cells under one choice of assumptions, of which membrane and shunt are used.
     farthest : list of int
         Per cell the node of its farthest tip.
-    assumptions : Assumptions
-        Membrane and shunt are used.
     request : TimeRequest
         What is asked for.
     everywhere : bool
         Transients at every node, instead of only at the soma and the farthest tip.
     """
+    cells, assumptions = [cables[0] for cables in forest.cells], forest.many[0]
     nothing = [None] * len(cells)
-    lags = delays(cells, assumptions) if request.delays else nothing
+    lags = delays_in(forest) if request.delays else nothing
     modes = time_constants(cells, assumptions, request.time_constants) if request.time_constants else nothing
     brief: list[Transients] | list[None] = nothing
     if request.current is not None:

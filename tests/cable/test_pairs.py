@@ -91,7 +91,8 @@ def test_pairs_of_larger_irregular_trees_are_the_dense_inverse(key, hz):
     cell = cable(trees.irregular(300, key, soma=key % 2 == 0))
     nodes = np.arange(len(cell.parent))
     got = coupling(cell, DEFAULTS, nodes, hz)
-    np.testing.assert_allclose(got.Z, impedances(cell, DEFAULTS, hz), rtol=1e-9, atol=0)
+    # The dense matrix has condition numbers up to 2e9: it is the inverse that is off by 1e-9.
+    np.testing.assert_allclose(got.Z, impedances(cell, DEFAULTS, hz), rtol=1e-8, atol=0)
 
 
 @pytest.mark.parametrize("hz", [0.0, 1000.0])

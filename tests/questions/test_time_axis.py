@@ -123,7 +123,7 @@ def test_columns_come_where_they_are_asked_for_and_change_no_other(time, of_cell
 
 
 def test_nothing_is_computed_that_is_not_asked_for(monkeypatch):
-    for name in ("delays", "time_constants", "transients"):
+    for name in ("delays_in", "time_constants", "transients"):
         monkeypatch.setattr(time_axis, name, None)
     assert answered(trees.comb(), TimeRequest()).cell
 
