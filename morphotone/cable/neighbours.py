@@ -8,6 +8,8 @@ middle points (Lagrange's remainder), which is below 1e-9 where it is used.
 import numpy as np
 from numpy.typing import NDArray
 
+from morphotone.cable.contour import by_rows
+
 Index = NDArray[np.int64]
 Real = NDArray[np.float64]
 
@@ -15,7 +17,7 @@ LEFT, RIGHT = 3, 4
 """How many grid points a place needs on either side."""
 
 _OFFSETS = np.arange(-LEFT, RIGHT + 1)
-_COEFFICIENTS = np.linalg.inv(np.vander(_OFFSETS.astype(np.float64), increasing=True)).T
+_COEFFICIENTS: Real = np.linalg.inv(np.vander(_OFFSETS.astype(np.float64), increasing=True)).T
 _NEWTON_STEPS = 6  # each doubles the digits, and the first guess has more than one
 
 
@@ -29,7 +31,7 @@ def polynomials(curves: Real, at: Index) -> Real:
         A grid point of each row, `LEFT` to points − 1 − `RIGHT`; it is 0 of the polynomial's variable,
         which counts grid steps.
     """
-    return np.take_along_axis(curves, at[:, None] + _OFFSETS, axis=1) @ _COEFFICIENTS
+    return by_rows(np.take_along_axis(curves, at[:, None] + _OFFSETS, axis=1), _COEFFICIENTS)
 
 
 def values(coefficients: Real, x: Real) -> Real:
