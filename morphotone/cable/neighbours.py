@@ -17,7 +17,9 @@ LEFT, RIGHT = 3, 4
 """How many grid points a place needs on either side."""
 
 _OFFSETS = np.arange(-LEFT, RIGHT + 1)
-_COEFFICIENTS: Real = np.linalg.inv(np.vander(_OFFSETS.astype(np.float64), increasing=True)).T
+_COEFFICIENTS = np.asarray(
+    np.linalg.inv(np.vander(_OFFSETS.astype(np.float64), increasing=True)).T, np.float64
+)
 _NEWTON_STEPS = 6  # each doubles the digits, and the first guess has more than one
 
 
