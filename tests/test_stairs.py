@@ -18,6 +18,7 @@ PACKAGE = CHECKOUT / "morphotone"
 FLOORS = {
     "errors": 0,
     "units": 0,
+    "stages": 0,
     "reading": 1,
     "cable": 2,
     "questions": 3,

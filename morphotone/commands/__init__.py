@@ -5,10 +5,15 @@ when its command is the one called.
 """
 
 import argparse
+import signal
 import sys
+import threading
+import time
 import traceback
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from importlib import import_module
+from types import FrameType
 
 from morphotone.errors import MorphotoneError, ReadingError, TurnedAwayError
 
@@ -30,6 +35,9 @@ assumptions; they are for research, not for clinical or device decisions.
 """
 
 _RESUMED = ("survey", "map")  # commands with a ledger
+
+_ENDING = ("SIGINT", "SIGTERM", "SIGHUP")  # Ctrl-C, the system or a scheduler, a terminal that closes
+_PATIENCE_SECONDS = 5.0
 
 ALL_WELL, TURNED_AWAY, WRONG_USAGE, INTERRUPTED = 0, 1, 2, 130
 
@@ -55,7 +63,8 @@ def main(argv: Sequence[str] | None = None) -> int:
         parser.print_help()
         return WRONG_USAGE
     try:
-        return int(import_module(f"morphotone.commands.{chosen}").run(args))
+        with _interruptions():
+            return int(import_module(f"morphotone.commands.{chosen}").run(args))
     except KeyboardInterrupt:
         goes_on = "; the same command goes on from here" if chosen in _RESUMED else ""
         print(f"interrupted{goes_on}", file=sys.stderr)
@@ -65,6 +74,34 @@ def main(argv: Sequence[str] | None = None) -> int:
             traceback.print_exc()
         print(f"morphotone {chosen}: {error}", file=sys.stderr)
         return TURNED_AWAY if isinstance(error, ReadingError | TurnedAwayError) else WRONG_USAGE
+
+
+@contextmanager
+def _interruptions() -> Iterator[None]:
+    """Have the signals that ask a process to end raise KeyboardInterrupt, with the signal's name.
+
+    For some seconds after one, others are taken for the same: what is finished is being entered then. A
+    signal that whoever started the process had it ignore (nohup, a job in the background) stays ignored.
+    """
+    last = -_PATIENCE_SECONDS
+
+    def interrupt(number: int, _: FrameType | None) -> None:
+        nonlocal last
+        before, last = last, time.monotonic()
+        if last - before >= _PATIENCE_SECONDS:
+            raise KeyboardInterrupt(signal.Signals(number).name)
+
+    ours = {signal.SIG_DFL, signal.default_int_handler}
+    numbers = [getattr(signal, name) for name in _ENDING if hasattr(signal, name)]
+    in_main = threading.current_thread() is threading.main_thread()  # no other may set a handler
+    before = {n: handler for n in numbers if in_main and (handler := signal.getsignal(n)) in ours}
+    for number in before:
+        signal.signal(number, interrupt)
+    try:
+        yield
+    finally:
+        for number, handler in before.items():
+            signal.signal(number, handler)
 
 
 def _parser(arguments: Sequence[str]) -> tuple[argparse.ArgumentParser, str | None]:

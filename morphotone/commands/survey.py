@@ -1,6 +1,7 @@
 """`morphotone survey`: the night's run over a folder, to CSV tables."""
 
 import argparse
+import hashlib
 import os
 import sys
 from collections.abc import Sequence
@@ -9,8 +10,10 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from functools import partial
 from importlib.metadata import version
+from math import inf
 from pathlib import Path
 from tempfile import TemporaryDirectory
+from time import sleep
 from typing import Any
 
 import joblib
@@ -20,20 +23,27 @@ from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.commands.contents import content_of, is_known
 from morphotone.commands.options import add_assumption_options, assumptions_of
+from morphotone.errors import ResultsError
 from morphotone.night.folder import PATTERNS, find_files
-from morphotone.night.ledger import Ledger
+from morphotone.night.ledger import FILE as LEDGER
+from morphotone.night.ledger import Ledger, LedgerInUseError
+from morphotone.night.limits import NO_LIMITS, USUAL_MINUTES, Limits, usual_limits
 from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER, Item, Outcome, Status
 from morphotone.night.pool import pool_of
 from morphotone.night.progress import Progress, progress_on
 from morphotone.night.record import run_record, write_record
+from morphotone.night.request import ask_for_tables, tables_asked_for, tables_given
 from morphotone.night.results import atomic, export, export_each
 from morphotone.night.runner import Tally
 from morphotone.night.runner import run as run_night
+from morphotone.night.sitting import Sitting
 from morphotone.questions.survey import Answer, Request, answers, cell_name, headers
 from morphotone.questions.time_axis import TimeRequest
 from morphotone.showing.tables import csv_rows, csv_texts
+from morphotone.stages import stage
 
 NAME = "survey"
+_ASKING_SECONDS = 0.3  # between two looks whether the tables are there
 _LEADING = ["file", "cell"]  # columns that say whose row it is
 _TYPES = dict.fromkeys(
     ("file", "cell", "domain", "domains_differ", "peeling_warnings", "reason", "sentence"), "str"
@@ -50,7 +60,8 @@ what is written into RESULTS:
   findings.csv      one row per observation about a file
   turned_away.csv   one row per file not analysed, with the reason
   assumptions.toml  what was assumed, whole
-  run.json          the record: versions, assumptions, counts, SHA-256 of the inputs, times
+  run.json          the record: versions, assumptions, counts, SHA-256 of the inputs, sittings, times
+  log.txt           what happened, when, to what, over all sittings
   ledger.sqlite     what is finished: the same command again goes on from there
 
 units: um, MOhm, nS, Hz; every column is explained in the README
@@ -97,6 +108,8 @@ def survey(
     transient_ms: tuple[float, float] | None = None,
     patterns: Sequence[str] = PATTERNS,
     workers: int = 1,
+    minutes_per_cell: float | None = None,
+    GB_per_cell: float | None = None,
     strict: bool = False,
 ) -> Survey:
     """Survey a folder of reconstructions.
@@ -123,6 +136,8 @@ def survey(
         Which file names count.
     workers : int
         Number of processes; 0 for one per processor.
+    minutes_per_cell, GB_per_cell : float, optional
+        Time and memory after which a file is turned away; unless given, what suits the machine.
     strict : bool
         Stop at the first file turned away.
 
@@ -139,8 +154,17 @@ def survey(
     request = Request(assumptions or Assumptions(), keep_unfit, samples, time)
     with ExitStack() as stack:
         target = Path(into if into is not None else stack.enter_context(TemporaryDirectory()))
+        count = workers if workers > 0 else joblib.cpu_count()
+        limits = usual_limits(count, minutes_per_cell, GB_per_cell)
         tally = write_survey(
-            folder, target, request, patterns=patterns, workers=workers, strict=strict, progress=None
+            folder,
+            target,
+            request,
+            patterns=patterns,
+            workers=count,
+            limits=limits,
+            strict=strict,
+            progress=None,
         )
         return read_survey(target, tally)
 
@@ -154,45 +178,116 @@ def write_survey(
     workers: int,
     strict: bool,
     progress: Progress | None,
+    limits: Limits = NO_LIMITS,
 ) -> Tally:
     """Survey a folder and write the tables; parameters and errors as for `survey`."""
     started = datetime.now(UTC)
     found = find_files(folder, patterns, exclude=into)
     names = [file.name for file in found]
-    columns = {table: ",".join(_LEADING + rest) for table, rest in headers(request).items()}
-    by_sample = columns.pop("samples", None)
     conditions = _fingerprint(request)
-    with Ledger(into, conditions) as ledger:
+    text = request.assumptions.to_toml()
+    with (
+        Ledger(into, conditions) as ledger,
+        Sitting(ledger, hashlib.sha256(text.encode()).hexdigest()) as sitting,
+    ):
+        known = sum(name in ledger.known() for name in names)
+        sitting.say(
+            f"{len(names)} files found, {known} of them known from earlier sittings; {workers} workers; "
+            f"{limits.described()}"
+        )
         tally = run_night(
             found,
             partial(outcomes, request=request),
             ledger=ledger,
             progress=progress,
-            pool=pool_of(workers if workers > 0 else joblib.cpu_count()),
+            pool=pool_of(workers),
+            limits=limits,
+            witness=sitting,
+            meanwhile=partial(_tables_if_asked, ledger, names, request, sitting),
             strict=strict,
         )
-        export(ledger, names, {**columns, TURNED_AWAY: TURNED_AWAY_HEADER})
-        if by_sample is not None:
-            export_each(ledger, names, "samples", by_sample)
+        with stage("export"):
+            _write_tables(ledger, names, request)
+        tables_given(into)
         with atomic(into / "assumptions.toml") as stream:
-            stream.write(request.assumptions.to_toml())
+            stream.write(text)
+        sitting.end("ended")
         details = {
             "folder": str(folder),
             "patterns": list(patterns),
             **conditions,
             "warnings": list(request.assumptions.warnings),
+            "workers": workers,
+            "limits": {"minutes_per_cell": limits.minutes, "GB_per_cell": limits.gigabytes},
+            "sittings": ledger.sittings(),
         }
         record = run_record(started=started, tally=tally, ledger=ledger, names=names, details=details)
         write_record(into / "run.json", record)
     return tally
 
 
+def _write_tables(ledger: Ledger, names: Sequence[str], request: Request) -> None:
+    """Write the tables of what is finished of these files."""
+    columns = {table: ",".join(_LEADING + rest) for table, rest in headers(request).items()}
+    by_sample = columns.pop("samples", None)
+    export(ledger, names, {**columns, TURNED_AWAY: TURNED_AWAY_HEADER})
+    if by_sample is not None:
+        export_each(ledger, names, "samples", by_sample)
+
+
+def _tables_if_asked(ledger: Ledger, names: Sequence[str], request: Request, sitting: Sitting) -> None:
+    """Write the tables if another process asks for them, in the middle of a run."""
+    if not tables_asked_for(ledger.folder):
+        return
+    with stage("export"):
+        _write_tables(ledger, names, request)
+    tables_given(ledger.folder)
+    known = ledger.known()
+    sitting.say(
+        f"tables written on request: {sum(name in known for name in names)} of {len(names)} files finished"
+    )
+
+
+def tables_now(
+    folder: str | os.PathLike[str], into: Path, request: Request, *, patterns: Sequence[str]
+) -> None:
+    """Write the tables of what is finished by now: from the ledger, or by the run that is at work.
+
+    Raises
+    ------
+    ResultsError
+        There is no ledger yet, it belongs to another run, or the folder cannot be written to.
+    """
+    if not (into / LEDGER).exists():
+        raise ResultsError(f"{into} holds no {LEDGER}: no survey has begun there; check --into")
+    names = [file.name for file in find_files(folder, patterns, exclude=into)]
+    asked = False
+    while not asked or tables_asked_for(into):
+        try:
+            with Ledger(into, _fingerprint(request)) as ledger:
+                _write_tables(ledger, names, request)
+                tables_given(into)
+                return
+        except LedgerInUseError:
+            if not asked:
+                ask_for_tables(into)
+                asked = True
+                print(
+                    "a run is at work there and was asked for its tables; waiting",
+                    file=sys.stderr,
+                    flush=True,
+                )
+        sleep(_ASKING_SECONDS)
+
+
 def outcomes(items: list[Item], request: Request) -> list[Outcome]:
     """Work on a batch of the night's items; a file whose bytes are known is left as it is."""
-    contents = {item.name: content_of(item) for item in items}
-    unchanged = {item.name for item in items if is_known(contents[item.name], item.known_sha256)}
+    with stage("read"):
+        contents = {item.name: content_of(item) for item in items}
+        unchanged = {item.name for item in items if is_known(contents[item.name], item.known_sha256)}
     given = answers([(name, content) for name, content in contents.items() if name not in unchanged], request)
-    parts = _parts(given)
+    with stage("tables"):
+        parts = _parts(given)
     worked = {answer.name: _outcome(answer, parts[answer.name]) for answer in given}
     return [
         Outcome(item.name, "unchanged", sha256=item.known_sha256 or "")
@@ -297,7 +392,34 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
         "--workers", metavar="N", type=int, default=0, help="processes (default: one per processor)"
     )
+    parser.add_argument(
+        "--minutes-per-cell",
+        metavar="MIN",
+        type=_positive,
+        default=USUAL_MINUTES,
+        help="time after which a file is turned away as too_long (default: %(default)g)",
+    )
+    parser.add_argument(
+        "--GB-per-cell",
+        metavar="GB",
+        type=_positive,
+        help="memory beyond which a file is turned away as too_large (default: the free memory shared out "
+        "among the workers)",
+    )
     parser.add_argument("--strict", action="store_true", help="stop at the first file turned away")
+    parser.add_argument(
+        "--tables-now",
+        action="store_true",
+        help="write the tables of what is finished by now, and stop; from another terminal while the same "
+        "command is running, too",
+    )
+
+
+def _positive(text: str) -> float:
+    value = float(text)
+    if not 0 < value < inf:
+        raise argparse.ArgumentTypeError(f"read {text!r}, expected a number greater than 0")
+    return value
 
 
 def _current(transient_ms: Sequence[float] | None) -> SynapticCurrent | None:
@@ -310,12 +432,19 @@ def _time_of(args: argparse.Namespace) -> TimeRequest:
 
 def run(args: argparse.Namespace) -> int:
     """Run the survey, say how it went, and return the exit code."""
+    request = Request(assumptions_of(args), args.keep_unfit, args.samples, _time_of(args))
+    if args.tables_now:
+        tables_now(args.folder, args.into, request, patterns=args.pattern)
+        print(f"tables of what is finished by now: {args.into}")
+        return 0
+    workers = args.workers if args.workers > 0 else joblib.cpu_count()
     tally = write_survey(
         args.folder,
         args.into,
-        Request(assumptions_of(args), args.keep_unfit, args.samples, _time_of(args)),
+        request,
         patterns=args.pattern,
-        workers=args.workers,
+        workers=workers,
+        limits=usual_limits(workers, args.minutes_per_cell, args.GB_per_cell),
         strict=args.strict,
         progress=progress_on(sys.stderr),
     )

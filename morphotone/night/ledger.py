@@ -33,6 +33,7 @@ create table if not exists outcomes(
     finished_at text not null);
 create table if not exists parts(
     name text not null, table_name text not null, text blob not null, primary key (name, table_name));
+create table if not exists sittings(number integer primary key, facts text not null);
 """
 
 _WAYS_OUT = {
@@ -44,6 +45,10 @@ _WAYS_OUT = {
     sqlite3.SQLITE_FULL: "the disk is full; make room and start again: what is finished is kept",
     sqlite3.SQLITE_IOERR: "the disk does not obey; check it and start again: what is finished is kept",
 }
+
+
+class LedgerInUseError(ResultsError):
+    """Another run has the ledger open."""
 
 
 @dataclass(frozen=True)
@@ -129,6 +134,19 @@ class Ledger:
             if row is not None:
                 yield name, row[0]
 
+    def note_sitting(self, number: int, facts: Mapping[str, Any]) -> None:
+        """Put down what is known of a sitting (JSON types), in the place of what was."""
+        with self._said_plainly(), self._connection:
+            self._connection.execute(
+                "insert or replace into sittings values (?, ?)", (number, json.dumps(facts))
+            )
+
+    def sittings(self) -> list[dict[str, Any]]:
+        """Return what is known of each sitting, in order."""
+        with self._said_plainly():
+            query = "select facts from sittings order by number"
+            return [json.loads(facts) for (facts,) in self._connection.execute(query)]
+
     def _set_up(self) -> None:
         # The order matters: only a connection that is exclusive before it turns to the write-ahead log
         # does without shared memory, which network disks do not offer.
@@ -170,7 +188,8 @@ class Ledger:
             code = cast(int, getattr(error, "sqlite_errorcode", 0)) & 0xFF
             if code not in _WAYS_OUT:
                 raise
-            raise ResultsError(f"{self.path}: {_WAYS_OUT[code]} ({error})") from error
+            kind = LedgerInUseError if code == sqlite3.SQLITE_BUSY else ResultsError
+            raise kind(f"{self.path}: {_WAYS_OUT[code]} ({error})") from error
 
 
 def _prepare(folder: Path) -> None:

@@ -6,20 +6,23 @@ knows, so that the same list gives the same batches and the same bytes.
 
 from __future__ import annotations
 
-import traceback
+import time
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from contextlib import suppress
 from dataclasses import dataclass
 from functools import partial
 from itertools import chain
-from pathlib import Path
 
 from morphotone.errors import TurnedAwayError
+from morphotone.night.attempt import Worked, attempt, turned_away
 from morphotone.night.folder import Found
 from morphotone.night.ledger import Entry, Ledger
+from morphotone.night.limits import NO_LIMITS, Limits
 from morphotone.night.outcome import TURNED_AWAY, BatchFunction, Item, Outcome
 from morphotone.night.pool import Batch, Pool, WorkerDiedError, in_this_process
 from morphotone.night.progress import Progress, Silent, Step
+from morphotone.night.sitting import Nobody, Witness
+from morphotone.stages import stage
 
 # Bytes of files in a batch: a second or so of work at most, so that little is lost when a run is stopped; in
 # a small folder less, so that many workers have work and end together, but more than handing it out costs.
@@ -47,6 +50,9 @@ def run(
     ledger: Ledger,
     progress: Progress | None = None,
     pool: Pool = in_this_process,
+    limits: Limits = NO_LIMITS,
+    witness: Witness | None = None,
+    meanwhile: Callable[[], None] = lambda: None,
     batch_bytes: int | None = None,
     strict: bool = False,
 ) -> Tally:
@@ -54,8 +60,8 @@ def run(
 
     An exception in `function` costs one file, not its batch: the batch is gone through again one file at
     a time, and the file that fails is turned away with the reason "program_error". With a pool of workers,
-    a file at which one dies (no memory left) is found likewise: "worker_died". Neither
-    leaves a hash behind, so that the next run tries these files again.
+    a file at which one dies (no memory left) is found likewise: "worker_died". None of
+    these leaves a hash behind, so that the next run tries the file again.
 
     Parameters
     ----------
@@ -69,6 +75,13 @@ def run(
         Told about each finished batch.
     pool : Pool
         Who works on the batches.
+    limits : Limits
+        For one cell: a file beyond them is turned away with the reason "too_long" or "too_large". In this
+        process, work that does not come back at all cannot be ended.
+    witness : Witness, optional
+        Told what happens.
+    meanwhile : callable
+        Called after each batch, and each second without one, unless the work is in this process.
     batch_bytes : int, optional
         A batch is closed when its files on disk reach this size, bytes; unless given, a size that suits
         the whole.
@@ -92,12 +105,17 @@ def run(
     known, unchanged = ledger.known(), 0
     sound = [file for file in found if not file.problem]
     batches = _batches(sound, known, batch_bytes or _suitable_bytes(sound))
-    closed = [_turned_away(file.name, "unreadable", file.problem) for file in found if file.problem]
-    progress = progress or Silent()
+    closed = [turned_away(file.name, "unreadable", file.problem) for file in found if file.problem]
+    progress, witness = progress or Silent(), witness or Nobody()
+    work = partial(attempt, function=function, limits=limits, ends_process=pool is not in_this_process)
     progress.begin(len(found), sum(sizes.values()))
     try:
-        for outcomes in chain([closed], _finished(batches, partial(_attempt, function=function), pool)):
-            ledger.record([outcome for outcome in outcomes if outcome.status != "unchanged"])
+        for worked in chain([Worked(closed)], _finished(batches, work, pool, limits, witness)):
+            outcomes = worked.outcomes
+            with stage("ledger"):
+                ledger.record([outcome for outcome in outcomes if outcome.status != "unchanged"])
+            witness.enter(outcomes, worked.seconds)
+            meanwhile()
             unchanged += sum(outcome.status == "unchanged" for outcome in outcomes)
             entries = {outcome.name: _entry(outcome, known) for outcome in outcomes}
             progress.advance(_step(entries, sizes))
@@ -129,9 +147,13 @@ def _batches(found: Iterable[Found], known: Mapping[str, Entry], batch_bytes: in
 
 
 def _finished(
-    batches: Iterable[Batch], function: Callable[[Batch], list[Outcome]], pool: Pool
-) -> Iterator[list[Outcome]]:
-    """Yield the outcomes of each batch as it is finished, in any order; an empty list now and then meanwhile.
+    batches: Iterable[Batch],
+    function: Callable[[Batch], Worked],
+    pool: Pool,
+    limits: Limits,
+    witness: Witness,
+) -> Iterator[Worked]:
+    """Yield what came of each batch as it is finished, in any order; nothing worked now and then meanwhile.
 
     When a worker dies, all that was under way is lost. The batches that had been handed out are the
     suspects: each of their files gets a worker of its own. Then the others go on.
@@ -142,65 +164,32 @@ def _finished(
         try:
             for done in pool(waiting, handed_out, function):
                 if done is None:
-                    yield []
+                    yield Worked([])
                     continue
-                index, outcomes = done
+                index, worked = done
                 del waiting[index]
-                yield outcomes
-        except WorkerDiedError:
-            for index in handed_out:
-                yield from (_alone(item, function, pool) for item in waiting.pop(index, []))
+                yield worked
+        except WorkerDiedError as death:
+            suspects = [item for index in handed_out for item in waiting.pop(index, [])]
+            witness.say(f"a worker died; {len(suspects)} files under way are tried one by one ({death})")
+            yield from (_alone(item, function, pool, limits) for item in suspects)
 
 
-def _attempt(batch: Batch, function: BatchFunction) -> list[Outcome]:
-    """Work on a batch; if that fails, on each of its files, so that only the one that fails is lost."""
-    try:
-        return _checked(function(batch), batch)
-    except Exception as error:
-        if len(batch) == 1:
-            return [_program_error(batch[0], error)]
-    # Not above, where the error holds on to the memory that the batch took.
-    return [outcome for item in batch for outcome in _attempt([item], function)]
-
-
-def _alone(item: Item, function: Callable[[Batch], list[Outcome]], pool: Pool) -> list[Outcome]:
+def _alone(item: Item, function: Callable[[Batch], Worked], pool: Pool, limits: Limits) -> Worked:
     """Work on one file in a worker that may die of it; only one that dies again is held against the file."""
     for _ in range(_TRIES_ALONE):
+        begun = time.monotonic()
         with suppress(WorkerDiedError):
             for done in pool({0: [item]}, [], function):
                 if done is not None:
                     return done[1]
+        if limits.seconds is not None and time.monotonic() - begun > limits.seconds:
+            return Worked([turned_away(item.name, "too_long", limits.too_long())])
     sentence = (
         "the process that worked on this file was ended by the system, as happens when memory runs out; "
         "try again with fewer workers, or on a machine with more memory"
     )
-    return [_turned_away(item.name, "worker_died", sentence)]
-
-
-def _checked(outcomes: list[Outcome], batch: list[Item]) -> list[Outcome]:
-    """Hold the function to its word: one outcome per item, none unchanged that was not known."""
-    asked, given = [item.name for item in batch], [outcome.name for outcome in outcomes]
-    if asked != given:
-        raise RuntimeError(f"outcomes are for {given}, expected {asked}")
-    for item, outcome in zip(batch, outcomes, strict=True):
-        if outcome.status == "unchanged" and outcome.sha256 != item.known_sha256:
-            raise RuntimeError(f"{item.name} is called unchanged, but its hash is not the known one")
-    return outcomes
-
-
-def _program_error(item: Item, error: Exception) -> Outcome:
-    """Turn a file away for a fault of the program, saying where in the program it was."""
-    place = traceback.extract_tb(error.__traceback__)[-1]
-    text = " ".join(str(error).split())
-    sentence = (
-        f"{type(error).__name__}: {text} ({Path(place.filename).name}, line {place.lineno}): a fault of the "
-        "program, not of the file; please report it"
-    )
-    return _turned_away(item.name, "program_error", sentence)
-
-
-def _turned_away(name: str, reason: str, sentence: str) -> Outcome:
-    return Outcome(name, "turned away", reason=reason, sentence=sentence)
+    return Worked([turned_away(item.name, "worker_died", sentence)])
 
 
 def _entry(outcome: Outcome, known: Mapping[str, Entry]) -> Entry:

@@ -23,6 +23,7 @@ from morphotone.questions.trust import findings_table, unfit_sentence
 from morphotone.reading.reconstruction import Reconstruction, reconstruct
 from morphotone.reading.repair import mend_radii
 from morphotone.reading.vetting import Vetting, grade_of, vet_reconstruction
+from morphotone.stages import stage
 
 _ENDING = re.compile(r"\.swc(\.gz)?\Z", re.IGNORECASE)
 # The least that has every column: from it the headers of tables without rows are known.
@@ -130,11 +131,13 @@ def answers(files: Sequence[tuple[str, bytes | ReadingError]], request: Request)
     ready = [each for each in prepared if isinstance(each, Prepared)]
     # Absurd files (kept although unfit) may overflow; their infinities stand in the table for what they are.
     with np.errstate(over="ignore", under="ignore", divide="ignore", invalid="ignore"):
-        cells = iter(cells_of(ready, request))
-        return [
-            _tabulated(each.name, next(cells), request) if isinstance(each, Prepared) else each
-            for each in prepared
-        ]
+        with stage("solve"):
+            cells = iter(cells_of(ready, request))
+        with stage("tables"):
+            return [
+                _tabulated(each.name, next(cells), request) if isinstance(each, Prepared) else each
+                for each in prepared
+            ]
 
 
 def headers(request: Request) -> dict[str, list[str]]:
@@ -155,19 +158,22 @@ def prepare(name: str, content: bytes | ReadingError, request: Request) -> Prepa
         return Answer(name, "", 0, nothing, reason=content.reason, sentence=str(content))
     sha256 = hashlib.sha256(content).hexdigest()
     try:
-        rec = reconstruct(
-            content, file=name, cell=cell_name(name), unit_um=assumptions.unit_um, sha256=sha256
-        )
+        with stage("read"):
+            rec = reconstruct(
+                content, file=name, cell=cell_name(name), unit_um=assumptions.unit_um, sha256=sha256
+            )
     except ReadingError as error:
         return Answer(name, sha256, 0, nothing, reason=error.reason, sentence=str(error))
-    vetting = _in_view_of(assumptions, vet_reconstruction(rec, assumptions.thresholds))
+    with stage("vet"):
+        vetting = _in_view_of(assumptions, vet_reconstruction(rec, assumptions.thresholds))
     try:
         if vetting.grade == "unfit" and not request.keep_unfit:
             raise ReadingError(unfit_sentence(name, vetting), "unfit")
         mended = mend_radii(rec, assumptions.thresholds)
         findings = vetting.findings + mended.findings[len(rec.findings) :]
         vetting = Vetting(findings, grade_of(findings))
-        return Prepared(name, mended, vetting, build_cases(mended, [assumptions]))
+        with stage("build"):
+            return Prepared(name, mended, vetting, build_cases(mended, [assumptions]))
     except ReadingError as error:
         table = findings_table(vetting.findings, vetting.grade)
         return Answer(name, sha256, len(rec.number), table, reason=error.reason, sentence=str(error))

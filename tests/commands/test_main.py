@@ -1,6 +1,7 @@
 """The program as a whole: help, version, commands there are and are not, exit codes, what is loaded when."""
 
 import re
+import signal
 import subprocess
 import sys
 from importlib.metadata import version
@@ -108,3 +109,33 @@ def test_as_a_process_it_leaves_with_its_code_and_prints_utf_8(tmp_path):
     assert done.returncode == 1
     assert done.stderr == b""
     assert "µ.swc" in done.stdout.decode("utf-8")
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="signals to a process are a POSIX matter")
+def test_a_signal_to_end_is_an_interrupt_and_a_second_one_does_not_break_it_off(monkeypatch, capsys):
+    before = signal.getsignal(signal.SIGTERM)
+    cleaned_up = []
+
+    def interrupted(args):
+        try:
+            signal.raise_signal(signal.SIGTERM)
+        except KeyboardInterrupt as error:
+            signal.raise_signal(signal.SIGINT)
+            cleaned_up.append(str(error))
+            raise
+
+    monkeypatch.setattr(survey, "run", interrupted)
+    assert run("survey", "x", "--into", "y") == 130
+    assert cleaned_up == ["SIGTERM"]
+    assert capsys.readouterr().err == "interrupted; the same command goes on from here\n"
+    assert signal.getsignal(signal.SIGTERM) is before
+
+
+@pytest.mark.skipif(not hasattr(signal, "SIGHUP"), reason="no terminal hangs up on Windows")
+def test_a_signal_that_was_to_be_ignored_stays_ignored(monkeypatch):
+    before = signal.signal(signal.SIGHUP, signal.SIG_IGN)  # as nohup does
+    monkeypatch.setattr(survey, "run", lambda args: signal.raise_signal(signal.SIGHUP) or 0)
+    try:
+        assert run("survey", "x", "--into", "y") == 0
+    finally:
+        signal.signal(signal.SIGHUP, before)

@@ -79,7 +79,7 @@ def test_small_folder_from_end_to_end(small, results, capsys):
     ]
     assert {path.name for path in results.iterdir()} == {
         *("cells.csv", "branches.csv", "findings.csv", "turned_away.csv", "samples"),
-        *("assumptions.toml", "run.json", "ledger.sqlite"),
+        *("assumptions.toml", "run.json", "log.txt", "ledger.sqlite"),
     }
     assert {
         path.relative_to(results / "samples").as_posix() for path in results.rglob("samples/**/*.csv")

@@ -11,6 +11,8 @@ import time
 from dataclasses import replace
 from pathlib import Path
 
+import numpy as np
+
 from morphotone.night.outcome import Item, Outcome, csv_line
 
 TABLES = {"roots": "file,number,root", "turned_away": "file,reason,sentence"}
@@ -58,6 +60,18 @@ def roots_deadly(batch: list[Item], culprit: str) -> list[Outcome]:
     """Take the process down, as the system does when memory runs out."""
     if any(item.name == culprit for item in batch):
         os._exit(9)
+    return roots(batch)
+
+
+def roots_hungry(batch: list[Item], slow: str, stalled: str, greedy: str) -> list[Outcome]:
+    """Never end in Python for one file, in the system for another; take two gigabytes for a third."""
+    for item in batch:
+        while item.name == slow:
+            time.sleep(0.01)
+        if item.name == stalled:
+            os.read(os.pipe()[0], 1)
+        if item.name == greedy:
+            np.ones(2 * 10**9, np.uint8)
     return roots(batch)
 
 

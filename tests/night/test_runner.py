@@ -16,11 +16,13 @@ from morphotone.errors import MorphotoneError
 from morphotone.night import runner
 from morphotone.night.folder import Found, find_files
 from morphotone.night.ledger import Ledger
+from morphotone.night.limits import Limits
 from morphotone.night.outcome import BatchFunction, Item, Outcome
 from morphotone.night.pool import in_processes, pool_of
 from morphotone.night.progress import Step
 from morphotone.night.results import export
 from morphotone.night.runner import Tally, run
+from morphotone.night.sitting import Sitting
 from tests.night import roots
 
 SMALL = 12_000  # bytes: three of the small files a batch, with what opening each of them costs
@@ -160,12 +162,42 @@ def test_a_worker_that_dies_costs_one_file(
     assert said["a/04.swc"].startswith("worker_died: the process that worked on this file was ended")
 
 
+@pytest.mark.slow
 def test_one_death_is_not_held_against_a_file_that_is_well_alone(
     found: Callable[[], list[Found]], tmp_path: Path
 ) -> None:
     function = partial(roots.roots_unlucky, culprit="a/04.swc", deaths=tmp_path / "deaths")
     assert night(found(), function, tmp_path / "out", workers=2).analysed == 11
     assert (tmp_path / "deaths").read_text(encoding="utf-8") == "died\n" * 2
+
+
+@pytest.mark.slow
+def test_the_file_beyond_a_limit_is_found_and_the_others_go_on(
+    found: Callable[[], list[Found]], tmp_path: Path
+) -> None:
+    limits = Limits(seconds=1.0, size=300_000_000, grace=1.0)
+    function = partial(roots.roots_hungry, slow="a/02.swc", stalled="b/03.swc", greedy="b/05.swc")
+    assert night(found(), function, tmp_path / "out", workers=2, limits=limits).analysed == 8
+    said = turned_away(tmp_path / "out")
+    assert said["a/02.swc"].startswith("too_long: this file took longer than 0.0166667 minutes, the limit")
+    assert said["b/03.swc"].startswith("too_long: this file took longer than")
+    if sys.platform == "linux":
+        assert said["b/05.swc"].startswith("too_large: this file needs more memory than 0.3 GB, the limit")
+    # none is held for known: the next run tries them all again
+    assert night(found(), roots.roots, tmp_path / "out").unchanged == 9
+
+
+def test_what_happens_is_witnessed(found: Callable[[], list[Found]], tmp_path: Path) -> None:
+    with Ledger(tmp_path / "out", {}) as ledger, Sitting(ledger, "ab12") as sitting:
+        function = partial(roots.roots_deadly, culprit="a/04.swc")
+        run(found(), function, ledger=ledger, pool=pool_of(2), batch_bytes=1, witness=sitting)
+        sitting.end("ended")
+        (facts,) = ledger.sittings()
+    assert (facts["entered"], facts["how"]) == ({"analysed": 10, "turned_away": 2}, "ended")
+    log = (tmp_path / "out" / "log.txt").read_text(encoding="utf-8")
+    assert "assumptions' SHA-256 ab12" in log
+    assert "a worker died; " in log
+    assert "turned away: b/07.swc: negative: no root of -1.0\n" in log
 
 
 def test_work_is_handed_out_no_faster_than_outcomes_are_taken(
@@ -175,10 +207,10 @@ def test_work_is_handed_out_no_faster_than_outcomes_are_taken(
         batches = runner._batches(found(), ledger.known(), batch_bytes=1)
     handed_out: list[int] = []
     pool = in_processes(2)(dict(enumerate(batches)), handed_out, roots.roots)
-    next(pool)
+    assert any(done is not None for done in pool)
     time.sleep(0.3)  # long enough for the workers to finish everything, if they were given it
     assert len(handed_out) == 4
-    assert len(list(pool)) == 11
+    assert sum(done is not None for done in pool) == 11
     assert handed_out == list(range(12))
 
 
