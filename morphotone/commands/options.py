@@ -2,10 +2,12 @@
 
 import argparse
 from dataclasses import replace
+from math import inf
 from pathlib import Path
 
 from morphotone.cable.assumptions import Assumptions
 from morphotone.commands.assumptions import load_assumptions, print_warnings
+from morphotone.night.limits import USUAL_MINUTES
 
 
 def add_assumption_options(parser: argparse.ArgumentParser) -> None:
@@ -40,3 +42,31 @@ def assumptions_of(args: argparse.Namespace) -> Assumptions:
     assumptions = replace(assumptions, **given)
     print_warnings(assumptions)
     return assumptions
+
+
+def add_worker_options(parser: argparse.ArgumentParser) -> None:
+    """Add --workers and the limits for each cell."""
+    parser.add_argument(
+        "--workers", metavar="N", type=int, default=0, help="processes (default: one per processor)"
+    )
+    parser.add_argument(
+        "--minutes-per-cell",
+        metavar="MIN",
+        type=_positive,
+        default=USUAL_MINUTES,
+        help="time after which a file is turned away as too_long (default: %(default)g)",
+    )
+    parser.add_argument(
+        "--GB-per-cell",
+        metavar="GB",
+        type=_positive,
+        help="memory beyond which a file is turned away as too_large (default: the free memory shared out "
+        "among the workers)",
+    )
+
+
+def _positive(text: str) -> float:
+    value = float(text)
+    if not 0 < value < inf:
+        raise argparse.ArgumentTypeError(f"read {text!r}, expected a number greater than 0")
+    return value

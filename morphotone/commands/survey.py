@@ -10,10 +10,8 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from functools import partial
 from importlib.metadata import version
-from math import inf
 from pathlib import Path
 from tempfile import TemporaryDirectory
-from time import sleep
 from typing import Any
 
 import joblib
@@ -22,29 +20,26 @@ import pandas as pd
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.commands.contents import content_of, is_known
-from morphotone.commands.options import add_assumption_options, assumptions_of
-from morphotone.errors import ResultsError
+from morphotone.commands.options import add_assumption_options, add_worker_options, assumptions_of
+from morphotone.commands.tables_now import tables_if_asked, tables_now, write_tables
 from morphotone.night.folder import PATTERNS, find_files
-from morphotone.night.ledger import FILE as LEDGER
-from morphotone.night.ledger import Ledger, LedgerInUseError
-from morphotone.night.limits import NO_LIMITS, USUAL_MINUTES, Limits, usual_limits
-from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER, Item, Outcome, Status
+from morphotone.night.ledger import Ledger
+from morphotone.night.limits import NO_LIMITS, Limits, usual_limits
+from morphotone.night.outcome import Item, Outcome, Status
 from morphotone.night.pool import pool_of
 from morphotone.night.progress import Progress, progress_on
 from morphotone.night.record import run_record, write_record
-from morphotone.night.request import ask_for_tables, tables_asked_for, tables_given
-from morphotone.night.results import atomic, export, export_each
+from morphotone.night.request import tables_given
+from morphotone.night.results import atomic
 from morphotone.night.runner import Tally
 from morphotone.night.runner import run as run_night
 from morphotone.night.sitting import Sitting
-from morphotone.questions.survey import Answer, Request, answers, cell_name, headers
+from morphotone.questions.survey import Answer, Request, answers, cell_name
 from morphotone.questions.time_axis import TimeRequest
 from morphotone.showing.tables import csv_rows, csv_texts
 from morphotone.stages import stage
 
 NAME = "survey"
-_ASKING_SECONDS = 0.3  # between two looks whether the tables are there
-_LEADING = ["file", "cell"]  # columns that say whose row it is
 _TYPES = dict.fromkeys(
     ("file", "cell", "domain", "domains_differ", "peeling_warnings", "reason", "sentence"), "str"
 ) | dict.fromkeys(("line", "sample", "count"), "Int64")
@@ -203,11 +198,11 @@ def write_survey(
             pool=pool_of(workers),
             limits=limits,
             witness=sitting,
-            meanwhile=partial(_tables_if_asked, ledger, names, request, sitting),
+            meanwhile=partial(tables_if_asked, ledger, names, request, sitting),
             strict=strict,
         )
         with stage("export"):
-            _write_tables(ledger, names, request)
+            write_tables(ledger, names, request)
         tables_given(into)
         with atomic(into / "assumptions.toml") as stream:
             stream.write(text)
@@ -224,60 +219,6 @@ def write_survey(
         record = run_record(started=started, tally=tally, ledger=ledger, names=names, details=details)
         write_record(into / "run.json", record)
     return tally
-
-
-def _write_tables(ledger: Ledger, names: Sequence[str], request: Request) -> None:
-    """Write the tables of what is finished of these files."""
-    columns = {table: ",".join(_LEADING + rest) for table, rest in headers(request).items()}
-    by_sample = columns.pop("samples", None)
-    export(ledger, names, {**columns, TURNED_AWAY: TURNED_AWAY_HEADER})
-    if by_sample is not None:
-        export_each(ledger, names, "samples", by_sample)
-
-
-def _tables_if_asked(ledger: Ledger, names: Sequence[str], request: Request, sitting: Sitting) -> None:
-    """Write the tables if another process asks for them, in the middle of a run."""
-    if not tables_asked_for(ledger.folder):
-        return
-    with stage("export"):
-        _write_tables(ledger, names, request)
-    tables_given(ledger.folder)
-    known = ledger.known()
-    sitting.say(
-        f"tables written on request: {sum(name in known for name in names)} of {len(names)} files finished"
-    )
-
-
-def tables_now(
-    folder: str | os.PathLike[str], into: Path, request: Request, *, patterns: Sequence[str]
-) -> None:
-    """Write the tables of what is finished by now: from the ledger, or by the run that is at work.
-
-    Raises
-    ------
-    ResultsError
-        There is no ledger yet, it belongs to another run, or the folder cannot be written to.
-    """
-    if not (into / LEDGER).exists():
-        raise ResultsError(f"{into} holds no {LEDGER}: no survey has begun there; check --into")
-    names = [file.name for file in find_files(folder, patterns, exclude=into)]
-    asked = False
-    while not asked or tables_asked_for(into):
-        try:
-            with Ledger(into, _fingerprint(request)) as ledger:
-                _write_tables(ledger, names, request)
-                tables_given(into)
-                return
-        except LedgerInUseError:
-            if not asked:
-                ask_for_tables(into)
-                asked = True
-                print(
-                    "a run is at work there and was asked for its tables; waiting",
-                    file=sys.stderr,
-                    flush=True,
-                )
-        sleep(_ASKING_SECONDS)
 
 
 def outcomes(items: list[Item], request: Request) -> list[Outcome]:
@@ -389,23 +330,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         default=list(PATTERNS),
         help="names of the files to take (default: %(default)s; upper and lower case alike)",
     )
-    parser.add_argument(
-        "--workers", metavar="N", type=int, default=0, help="processes (default: one per processor)"
-    )
-    parser.add_argument(
-        "--minutes-per-cell",
-        metavar="MIN",
-        type=_positive,
-        default=USUAL_MINUTES,
-        help="time after which a file is turned away as too_long (default: %(default)g)",
-    )
-    parser.add_argument(
-        "--GB-per-cell",
-        metavar="GB",
-        type=_positive,
-        help="memory beyond which a file is turned away as too_large (default: the free memory shared out "
-        "among the workers)",
-    )
+    add_worker_options(parser)
     parser.add_argument("--strict", action="store_true", help="stop at the first file turned away")
     parser.add_argument(
         "--tables-now",
@@ -413,13 +338,6 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         help="write the tables of what is finished by now, and stop; from another terminal while the same "
         "command is running, too",
     )
-
-
-def _positive(text: str) -> float:
-    value = float(text)
-    if not 0 < value < inf:
-        raise argparse.ArgumentTypeError(f"read {text!r}, expected a number greater than 0")
-    return value
 
 
 def _current(transient_ms: Sequence[float] | None) -> SynapticCurrent | None:
@@ -434,7 +352,7 @@ def run(args: argparse.Namespace) -> int:
     """Run the survey, say how it went, and return the exit code."""
     request = Request(assumptions_of(args), args.keep_unfit, args.samples, _time_of(args))
     if args.tables_now:
-        tables_now(args.folder, args.into, request, patterns=args.pattern)
+        tables_now(args.folder, args.into, request, _fingerprint(request), args.pattern)
         print(f"tables of what is finished by now: {args.into}")
         return 0
     workers = args.workers if args.workers > 0 else joblib.cpu_count()
