@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     from morphotone.cable.tree import Cable, build
     from morphotone.commands.map import Maps, draw_map, draw_maps
     from morphotone.commands.rank import rank
+    from morphotone.commands.report import Report, report
     from morphotone.commands.survey import Survey, survey
     from morphotone.commands.tabulate import Tabulated, tabulate
     from morphotone.commands.vet import vet
@@ -56,6 +57,8 @@ _HOMES = {
     "draw_map": "morphotone.commands.map",
     "draw_maps": "morphotone.commands.map",
     "rank": "morphotone.commands.rank",
+    "Report": "morphotone.commands.report",
+    "report": "morphotone.commands.report",
     "Survey": "morphotone.commands.survey",
     "survey": "morphotone.commands.survey",
     "Tabulated": "morphotone.commands.tabulate",
@@ -88,6 +91,7 @@ __all__ = [
     "Ranking",
     "ReadingError",
     "Reconstruction",
+    "Report",
     "ResultsError",
     "Survey",
     "SynapticCurrent",
@@ -106,6 +110,7 @@ __all__ = [
     "potentials",
     "rank",
     "read",
+    "report",
     "solve",
     "survey",
     "tabulate",

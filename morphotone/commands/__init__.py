@@ -23,6 +23,7 @@ COMMANDS = {
     "map": "one cell or a folder to look at: figure of its attenuation, coloured mesh, table",
     "rank": "which synapses are electrotonically far or weak, in what order",
     "tabulate": "tables of groups for a paper, with tests, and its methods in words",
+    "report": "what happened overnight, as one HTML page",
     "assumptions": "print a commented assumptions file with the defaults, or check one",
 }
 
