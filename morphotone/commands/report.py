@@ -15,7 +15,7 @@ from morphotone.errors import MorphotoneError, ResultsError
 from morphotone.night.results import atomic
 from morphotone.questions.groups import Grouped, grouped
 from morphotone.reading.groups import groups_of, read_groups
-from morphotone.showing.page import NEEDED, Morning, Picture, page
+from morphotone.showing.page import NEEDED, NUMBERS, Morning, Picture, page
 
 NAME = "report"
 FILE = "report.html"  # in the results, unless --into says otherwise
@@ -116,11 +116,15 @@ def report(
 
 def _check_columns(finished: Finished) -> None:
     for name, columns in NEEDED.items():
-        missing = [column for column in columns if column not in getattr(finished, name)]
+        table = getattr(finished, name)
+        missing = [column for column in columns if column not in table]
+        if name == "cells" and len(table):
+            numbers = set(table.select_dtypes("number"))
+            missing += [column for column in NUMBERS if column in table and column not in numbers]
         if missing:
             raise ResultsError(
-                f"{finished.folder / name}.csv: written by Morphotone {finished.record['morphotone']}, lacks "
-                f"{', '.join(missing)}, which the page of Morphotone {version('morphotone')} is made of; run "
+                f"{finished.folder / name}.csv: written by Morphotone {finished.record['morphotone']}, and "
+                f"Morphotone {version('morphotone')} finds no usable {', '.join(missing)} in it for a page; run "
                 "the survey again into another folder"
             )
 

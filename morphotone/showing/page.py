@@ -28,19 +28,23 @@ from morphotone.showing.page_assumed import assumed, doubts, limits, outside
 from morphotone.showing.page_figures import WIDTH, Spread, spread
 from morphotone.showing.titles import plain, title
 
+#: Numeric columns of ``cells.csv`` that are drawn and stand in the table.
+NUMBERS = (
+    "R_in_MOhm",
+    "lambda_um",
+    "X_tips_mean",
+    "attenuation_to_soma_farthest",
+    "attenuation_from_soma_farthest",
+)
 #: Columns of the tables without which there is no page.
 NEEDED = {
-    "cells": (
-        *("file", "cell", "grade", "samples", "length_um", "R_in_MOhm", "lambda_um", "X_tips_mean"),
-        *("attenuation_to_soma_farthest", "attenuation_from_soma_farthest"),
-    ),
+    "cells": ("file", "cell", "grade", *NUMBERS),
     "findings": ("file", "code", "severity", "sentence", "effect"),
     "turned_away": ("file", "reason", "sentence"),
 }
 GRADES = ("sound", "doubtful", "unfit")
 _SEVERITIES = ("unfit", "doubtful", "note")
 _SHOWN = 25  # links, or cells to look at, before the rest is counted
-_NUMBERS = NEEDED["cells"][5:]
 _FURTHER = re.compile(r"(attenuation_to_soma_farthest_.+Hz|tau0_ms|delay_total_farthest_ms)")
 _DIGITS = 4
 
@@ -121,7 +125,7 @@ def page(morning: Morning) -> str:
         far=FAR,
         shown=_SHOWN,
         grades=_grades(morning),
-        run=_run(morning.record),
+        run=_run(morning),
         sittings=_flat(morning.record.get("sittings")),
         stages=_stages(morning.record),
         looks=looks,
@@ -142,7 +146,7 @@ def page(morning: Morning) -> str:
 
 def _columns(cells: pd.DataFrame) -> list[str]:
     """Return the numeric columns of the table, and of the drawings."""
-    return [*_NUMBERS, *filter(_FURTHER.fullmatch, map(str, cells))]
+    return [*NUMBERS, *filter(_FURTHER.fullmatch, map(str, cells))]
 
 
 def _median(values: pd.Series) -> float:
@@ -157,23 +161,24 @@ def _grades(morning: Morning) -> list[tuple[str, int]]:
     return [(name, count) for name, count in [*told, ("turned away", len(morning.turned_away))] if count]
 
 
-def _run(record: Mapping[str, Any]) -> list[tuple[str, str]]:
+def _run(morning: Morning) -> list[tuple[str, str]]:
     """Return what ran, as terms and their values."""
+    record = morning.record
     counts = record["counts"]
-    machine = record.get("machine", {})
-    packages = record.get("packages", {})
+    versions = {"Python": record["python"], **record["packages"]}
     told = {
         "Folder": record["folder"],
         "Started": _moment(record.get("started")),
         "Ended": _moment(record.get("ended")),
         "Took": _took(record.get("started"), record.get("ended")),
-        "Files": f"{counts.get('found', 0)} found"
-        + (f", {counts['unchanged']} of them unchanged since an earlier run" if counts.get("unchanged") else ""),
+        "Unchanged files": f"{counts['unchanged']}, taken over from an earlier run"
+        if counts.get("unchanged")
+        else "",
         "Samples": f"{counts.get('samples', 0):,}".replace(",", " "),
-        "Frequencies": ", ".join(f"{hz:g} Hz" for hz in (0.0, *record["assumptions"]["frequencies"]["hz"])),
+        "Frequencies": ", ".join(f"{hz:g} Hz" for hz in (0.0, *morning.assumptions.hz)),
         "Files of grade unfit": "analysed all the same" if record.get("keep_unfit") else "turned away",
-        "Machine": ", ".join(str(value) for value in machine.values()),
-        "Versions": ", ".join([f"Python {record['python']}", *(f"{k} {v}" for k, v in packages.items())]),
+        "Machine": ", ".join(map(str, record.get("machine", {}).values())),
+        "Versions": ", ".join(f"{name} {number}" for name, number in versions.items()),
         "Command": " ".join(str(word) for word in record.get("command", ())),
     }
     return [(term, str(value)) for term, value in told.items() if value]
@@ -226,10 +231,9 @@ def _stages(record: Mapping[str, Any]) -> list[tuple[str, str]]:
 
 
 def _spreads(morning: Morning, columns: Sequence[str]) -> list[Spread]:
-    chosen = [column for column in columns if column not in ("samples", "length_um")]
     return [
         spread(plain(title(column)), morning.cells[column].to_numpy(np.float64), morning.groups)
-        for column in chosen
+        for column in columns
     ]
 
 

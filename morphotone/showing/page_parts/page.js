@@ -40,7 +40,7 @@
 
   // Opening a row.
   const pictureOf = ([figure, thumbnail, mesh, samples], file) => {
-    const told = document.createDocumentFragment();
+    const told = made("div", "", { class: "picture" });
     if (thumbnail) {
       const image = made("img", "", { src: thumbnail, alt: `Attenuation map of ${file}` });
       if (figure) told.append(made("a", "", { href: figure })); else told.append(image);
@@ -56,11 +56,10 @@
   const opened = row => {
     const [file, links, findings, reasons] = details.cells[numberOf(row)];
     const inside = made("div", "", { class: "opened" });
-    inside.append(made("p", file));
-    if (reasons.length) inside.append(made("p", `Stands out: ${reasons.join("; ")}.`));
-    inside.append(links.length ? pictureOf(links, file)
-      : made("p", "No figure of this cell: morphotone map draws it, --maps says where it is."));
-    if (!findings.length) inside.append(made("p", "No findings."));
+    const words = made("div");
+    words.append(made("p", file));
+    if (reasons.length) words.append(made("p", `Stands out: ${reasons.join("; ")}.`));
+    if (!findings.length) words.append(made("p", "No findings."));
     const list = made("ul");
     for (const [severity, code, sentence] of findings) {
       const [title, effect] = details.kinds[code] || [code, ""];
@@ -68,7 +67,10 @@
       item.append(made("b", `${severity}, ${title}`, { class: severity }), `: ${sentence} `, made("small", effect));
       list.append(item);
     }
-    if (findings.length) inside.append(list);
+    if (findings.length) words.append(list);
+    if (!links.length) words.append(made("p", "No figure: morphotone map draws it, and report --maps links it."));
+    else inside.append(pictureOf(links, file));
+    inside.append(words);
     const place = made("td", "", { colspan: row.cells.length });
     place.append(inside);
     const more = made("tr", "", { class: "more", id: `more-${numberOf(row)}` });
@@ -136,7 +138,7 @@
       open(target, true);
       target.cells[0].firstElementChild.focus({ preventScroll: true });
     }
-    target.scrollIntoView({ block: rows.includes(target) ? "center" : "start" });
+    target.scrollIntoView();
   };
   addEventListener("hashchange", visit);
 
