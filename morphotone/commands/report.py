@@ -124,8 +124,8 @@ def _check_columns(finished: Finished) -> None:
         if missing:
             raise ResultsError(
                 f"{finished.folder / name}.csv: written by Morphotone {finished.record['morphotone']}, and "
-                f"Morphotone {version('morphotone')} finds no usable {', '.join(missing)} in it for a page; run "
-                "the survey again into another folder"
+                f"Morphotone {version('morphotone')} finds no usable {', '.join(missing)} in it for a page; "
+                "run the survey again into another folder"
             )
 
 
