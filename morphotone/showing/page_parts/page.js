@@ -149,7 +149,7 @@
       const button = event.target.closest("th button");
       if (button) open(button.closest("tr"), button.getAttribute("aria-expanded") === "false");
     });
-    fields.forEach(each => each.addEventListener("input", choose));
+    fields.forEach(each => each.addEventListener(each.tagName === "SELECT" ? "change" : "input", choose));
     byId("all").addEventListener("click", everything);
     document.querySelectorAll(".pick").forEach(button => button.addEventListener("click", () => {
       fields.forEach(each => { each.value = each.id === "code" ? button.dataset.code : ""; });
