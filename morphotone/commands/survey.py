@@ -36,6 +36,7 @@ from morphotone.night.runner import run as run_night
 from morphotone.night.sitting import Sitting
 from morphotone.questions.survey import Answer, Request, answers, cell_name
 from morphotone.questions.time_axis import TimeRequest
+from morphotone.reading.swc import EXACT
 from morphotone.showing.tables import csv_rows, csv_texts
 from morphotone.stages import stage
 
@@ -43,9 +44,6 @@ NAME = "survey"
 _TYPES = dict.fromkeys(
     ("file", "cell", "domain", "domains_differ", "peeling_warnings", "reason", "sentence"), "str"
 ) | dict.fromkeys(("line", "sample", "count"), "Int64")
-# From 3.1 on pandas reads every number back equal, and warns who asks for it.
-_PANDAS = tuple(int(part) for part in pd.__version__.split(".")[:2])
-_EXACT: dict[str, Any] = {"float_precision": "round_trip"} if _PANDAS < (3, 1) else {}
 
 _EPILOG = """\
 what is written into RESULTS:
@@ -285,7 +283,7 @@ def read_survey(folder: Path, tally: Tally) -> Survey:
 
 def read_table(path: Path) -> pd.DataFrame:
     """Read a table back with equal numbers, and with names that look like missing values left alone."""
-    table: pd.DataFrame = pd.read_csv(path, keep_default_na=False, na_values=[""], dtype=_TYPES, **_EXACT)
+    table: pd.DataFrame = pd.read_csv(path, keep_default_na=False, na_values=[""], dtype=_TYPES, **EXACT)
     return table
 
 

@@ -15,6 +15,7 @@ import re
 import zlib
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -47,6 +48,10 @@ _UTF16_MARKS = (b"\xff\xfe", b"\xfe\xff")
 
 # From here on the C parser goes piece by piece, which then saves more than the pieces cost.
 _LARGE_TEXT = 8_000_000  # bytes
+
+# Numbers are read as Python reads them. From 3.1 on pandas does so by itself, and warns who asks for it.
+_PANDAS = tuple(int(part) for part in pd.__version__.split(".")[:2])
+EXACT: dict[str, Any] = {"float_precision": "round_trip"} if _PANDAS < (3, 1) else {}
 
 _WHOLE = [COLUMNS.index(name) for name in WHOLE_COLUMNS]
 
@@ -228,7 +233,7 @@ def _columns(text: bytes, start: int) -> NDArray[np.float64] | None:
         stream = io.BytesIO(text)  # the same memory until somebody writes to it
         stream.seek(start)
         try:
-            frame = pd.read_csv(
+            frame: pd.DataFrame = pd.read_csv(
                 stream,
                 sep=separator,
                 comment="#",
@@ -240,6 +245,7 @@ def _columns(text: bytes, start: int) -> NDArray[np.float64] | None:
                 engine="c",
                 low_memory=len(text) > _LARGE_TEXT,
                 encoding_errors="replace",
+                **EXACT,
             )
         except ValueError:  # the parser's errors are ValueErrors too
             continue

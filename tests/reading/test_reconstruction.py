@@ -32,6 +32,7 @@ def test_a_standard_file_is_kept_as_it_stands():
     rec = reconstruct(CELL, file="b/a.swc", cell="the cell")
     assert (rec.cell, rec.file, rec.unit_um, rec.comments) == ("the cell", "b/a.swc", 1.0, ("made by hand",))
     assert rec.sha256 == hashlib.sha256(CELL).hexdigest()
+    assert reconstruct(CELL, file="a.swc", cell="a", sha256="known already").sha256 == "known already"
     np.testing.assert_array_equal(rec.number, [1, 2, 3])
     np.testing.assert_array_equal(rec.kind, [1, 3, 3])
     np.testing.assert_array_equal(rec.parent, [-1, 0, 1])

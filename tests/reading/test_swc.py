@@ -324,6 +324,31 @@ def test_a_file_too_large_is_unreadable(tmp_path, monkeypatch):
         read_bytes(path)
 
 
+@given(
+    st.lists(
+        st.builds(
+            format,
+            st.floats(-1e99, 1e99),
+            st.sampled_from(["", ".3f", ".9g", ".16e", ".17g", ".25g", ".40f", "+.20E"]),
+        ),
+        min_size=4,
+        max_size=4,
+    )
+)
+def test_numbers_are_what_python_reads(texts):
+    table = parse(b"1 1 0 0 0 5 -1\n2 3 " + " ".join(texts).encode() + b" 1\n", "a.swc")
+    assert [*table.position[1], table.radius[1]] == [float(text) for text in texts]
+
+
+def test_a_large_text_is_read_like_a_small_one(monkeypatch):
+    data = "\n".join(f"{n} 3 {n / 3!r} {n / 7!r} -0.1 0.2 {n - 1 or -1}" for n in range(1, 40_000)).encode()
+    whole = parse(data, "a.swc")
+    monkeypatch.setattr(swc, "_LARGE_TEXT", 0)
+    pieces = parse(data, "a.swc")
+    for name in ("number", "kind", "position", "radius", "parent", "line"):
+        np.testing.assert_array_equal(getattr(pieces, name), getattr(whole, name))
+
+
 coordinate = st.floats(-1e6, 1e6).map(lambda value: float(f"{value:.9g}"))
 
 
@@ -356,9 +381,8 @@ def test_any_layout_of_a_tree_is_the_same_tree(drawn):
     table = parse(text.encode(), "a.swc")
     np.testing.assert_array_equal(table.number, [row[0] for row in rows])
     np.testing.assert_array_equal(table.kind, [row[1] for row in rows])
-    # older pandas rounds some decimals to the neighbouring float
-    np.testing.assert_allclose(table.position, [row[2:5] for row in rows], rtol=4e-16)
-    np.testing.assert_allclose(table.radius, [row[5] for row in rows], rtol=4e-16)
+    np.testing.assert_array_equal(table.position, [row[2:5] for row in rows])
+    np.testing.assert_array_equal(table.radius, [row[5] for row in rows])
     parents = [-1 if row < 0 else table.number[row] for row in table.parent]
     np.testing.assert_array_equal(parents, [row[6] for row in rows])
     lines = re.split("\r\n|\r|\n", text)

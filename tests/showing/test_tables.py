@@ -11,7 +11,7 @@ from hypothesis import example, given
 from hypothesis import strategies as st
 from hypothesis.extra.numpy import arrays
 
-from morphotone.commands.survey import _EXACT
+from morphotone.reading.swc import EXACT
 from morphotone.showing import tables
 from morphotone.showing.tables import csv_rows, csv_table, csv_texts
 
@@ -86,7 +86,7 @@ def test_pandas_reads_numbers_back_equal():
     values = np.concatenate((EXOTIC, rng.normal(size=1000), 10 ** rng.uniform(-300, 300, 1000)))
     values = np.concatenate((values, -values))
     (text,) = written({"x": values, "same": values.tolist()})
-    frame = pd.read_csv(io.StringIO(text), header=None, **_EXACT)
+    frame = pd.read_csv(io.StringIO(text), header=None, **EXACT)
     for column in (1, 2):
         np.testing.assert_array_equal(frame[column].to_numpy(), values)
 
@@ -193,7 +193,7 @@ def test_a_long_table_is_written_in_pieces_and_reads_as_one():
     long, short = {"x": values, "n": np.arange(count)}, {"x": values[:1], "n": np.arange(1)}
     texts = written(short, long, short, names=[["a"], ["b"], ["c"]])
     assert texts[::2] == ["a,0.5,0\r\n", "c,0.5,0\r\n"]
-    frame = pd.read_csv(io.StringIO(texts[1]), header=None, **_EXACT)
+    frame = pd.read_csv(io.StringIO(texts[1]), header=None, **EXACT)
     np.testing.assert_array_equal(frame[1].to_numpy(), values)
     np.testing.assert_array_equal(frame[2].to_numpy(), np.arange(count))
     assert set(frame[0]) == {"b"}
