@@ -26,7 +26,7 @@ from morphotone.stages import stage
 
 # Bytes of files in a batch: a second or so of work at most, so that little is lost when a run is stopped; in
 # a small folder less, so that many workers have work and end together, but more than handing it out costs.
-_LEAST_BYTES, _MOST_BYTES = 200_000, 2_000_000
+_LEAST_BYTES, _MOST_BYTES = 600_000, 2_000_000
 _USUAL_BATCHES = 64
 _FILE_COST = 4_000  # bytes: what opening a file costs, as if it were that much longer
 _TRIES_ALONE = 2  # a worker may also be ended by somebody else, whatever it works on
