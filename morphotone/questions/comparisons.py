@@ -41,8 +41,10 @@ COMPARISON_COLUMNS = (
 _LEAST = 2  # values of a group that is tested
 _FEW_FOR_CHI2 = 5  # below this in any group H is not χ² (common practice), so labels are permuted
 _EXACT_PAIRS = 2500  # up to which the exact distribution of U is worked out
-#: Ways to deal values into groups up to which all are gone through, else so many are drawn.
+#: Ways to deal values into groups up to which H has its exact p, else so many are drawn.
 DEALS = 15_000
+_DEALS_OF_A_PAIR = 4_000  # the same of tied values for U, of which there are many more tests
+_NAMED = 6  # groups left out that a note names
 
 
 def holm(p: ArrayLike) -> Real:
@@ -179,7 +181,8 @@ def _values(column: pd.Series) -> Real:
 def _of_column(column: str, samples: list[Sample], how: Bootstrap) -> list[dict[str, Any]]:
     tested = [(name, values) for name, values in samples if len(values) >= _LEAST]
     left_out = [name for name, values in samples if len(values) < _LEAST]
-    note = f"fewer than {_LEAST} values, left out: {'; '.join(left_out)}" if left_out else ""
+    names = left_out[:_NAMED] + ["…"] * (len(left_out) > _NAMED)
+    note = f"fewer than {_LEAST} values, left out: {'; '.join(names)}" if left_out else ""
     pooled = np.concatenate([values for _, values in tested]) if tested else np.empty(0)
     if len(tested) < 2 or pooled.min() == pooled.max():
         reason = "all values equal: no test" if len(tested) > 1 else "fewer than two groups to test"
@@ -260,7 +263,7 @@ def _mann_whitney(x: Real, y: Real) -> tuple[float, float, str]:
     tied = len(np.unique([*x, *y])) < len(x) + len(y)
     if not tied and len(x) * len(y) <= _EXACT_PAIRS:
         method = "exact"
-    elif tied and _deals([x, y]) <= DEALS:
-        method = stats.PermutationMethod(n_resamples=DEALS)
+    elif tied and _deals([x, y]) <= _DEALS_OF_A_PAIR:
+        method = stats.PermutationMethod(n_resamples=_DEALS_OF_A_PAIR)
     found = stats.mannwhitneyu(x, y, alternative="two-sided", method=method)
     return float(found.statistic), float(found.pvalue), "normal" if method == "asymptotic" else "exact"

@@ -83,7 +83,8 @@ def electrotonus(source: Source) -> str:
     return " ".join(
         [
             "Each cell was treated as a tree of passive cables with sealed ends ⟨Rall1959⟩; a sample and "
-            f"its parent made a frustum, and stems were cylinders{_branch_start(source.assumptions)}.",
+            "its parent made a frustum, and the first piece of a stem, from the soma's surface on, a cylinder"
+            f"{_branch_start(source.assumptions)}.",
             *_membrane(source.assumptions),
             *_solution(source),
             "The membrane's constants were assumed and no correction for temperature was made; "
@@ -133,8 +134,11 @@ def _files(source: Source) -> Iterator[str]:
         )
     grades = source.used["grade"].value_counts()
     told = [f"{grades[grade]:,} {grade}" for grade in ("sound", "doubtful", "unfit") if grade in grades]
-    graded = listed(told) if len(told) > 1 else f"all of them {grades.index[0]}"
-    yield f"Vetting for faults that bear on cable analysis graded {graded}."
+    graded = listed(told) if len(told) > 1 else f"all {grades.index[0]}"
+    yield (
+        f"Of the {counted(used, 'cell')} used, vetting for faults that bear on cable analysis graded "
+        f"{graded}."
+    )
 
 
 def _reason(reason: str, findings: pd.DataFrame) -> str:
@@ -204,31 +208,33 @@ def _pieces(source: Source) -> Iterator[str]:
 def _branch_start(assumptions: Assumptions) -> str:
     if assumptions.branch_start == "parent radius":
         return ""
-    return ", and so was the first piece of a daughter at a branch point"
+    return ", as did the first piece of a daughter at a branch point"
 
 
 def _membrane(assumptions: Assumptions) -> Iterator[str]:
     general = assumptions.membrane
-    yield (
-        "The membrane was given "
-        f"{_constants(general)}{' unless stated otherwise' * bool(assumptions.domains)}."
-    )
-    spines = {_domain(code): of.spine_factor for code, of in assumptions.domains.items()}
-    factors = [
-        f"{factor:.12g} for {name}" for name, factor in spines.items() if factor != general.spine_factor
-    ]
-    if general.spine_factor != 1:
-        factors = [f"{general.spine_factor:.12g}", *factors]
+    differs = any(_constants(of) != _constants(general) for of in assumptions.domains.values())
+    yield f"The membrane was given {_constants(general)}{' unless stated otherwise' if differs else ''}."
+    for code, of in assumptions.domains.items():
+        if _constants(of) != _constants(general):
+            name = _domain(code)
+            yield f"{name[0].upper()}{name[1:]} had {_constants(of)}."
+    yield from _spines(assumptions)
+    if assumptions.soma_shunt_nS:
+        yield f"The soma had a leak of {assumptions.soma_shunt_nS:.12g} nS besides."
+
+
+def _spines(assumptions: Assumptions) -> Iterator[str]:
+    general = assumptions.membrane.spine_factor
+    own = {_domain(code): of.spine_factor for code, of in assumptions.domains.items()}
+    factors = [f"{factor:.12g} for {name}" for name, factor in own.items() if factor != general]
+    if general != 1:
+        factors.insert(0, f"{general:.12g}{' in general' if factors else ''}")
     if factors:
         yield (
             "Membrane of spines that were not traced was added as a factor ‹F› on area, with ‹R_m›/‹F› and "
             f"‹C_m›·‹F› ⟨Holmes1989 RappYaromSegev1992⟩: {listed(factors)}."
         )
-    for code, of in assumptions.domains.items():
-        if _constants(of) != _constants(general):
-            yield f"In {_domain(code)} these were {_constants(of)}."
-    if assumptions.soma_shunt_nS:
-        yield f"The soma had a leak of {assumptions.soma_shunt_nS:.12g} nS besides."
 
 
 def _constants(membrane: Membrane) -> str:

@@ -193,6 +193,12 @@ def test_a_group_of_one_is_left_out_with_a_note():
     assert row["note"] == "fewer than 2 values, left out: b"
 
 
+def test_a_note_does_not_name_hundreds_of_groups():
+    groups = {f"g{i}": [float(i)] for i in range(200)} | {"a": [1.0, 2.0], "b": [2.0, 3.0]}
+    (row,) = comparisons(table(**groups), ["class"], ["x"]).to_dict("records")
+    assert row["note"] == "fewer than 2 values, left out: g0; g1; g2; g3; g4; g5; …"
+
+
 @pytest.mark.parametrize(
     ("groups", "note"),
     [

@@ -69,8 +69,8 @@ def test_files_are_accounted_for():
     assert text.startswith(
         "Of 8 reconstructions in the SWC format ⟨Cannon1998⟩, 5 were analysed and 3 turned away: 1 with "
         "samples in a loop, 1 (of a new kind) and 1 as unfit for cable analysis (sizes no neuron has). The "
-        "4 cells with a group were used; 1 other analysed cell had none. Vetting for faults that bear on "
-        "cable analysis graded 3 sound and 1 doubtful."
+        "4 cells with a group were used; 1 other analysed cell had none. Of the 4 cells used, vetting for "
+        "faults that bear on cable analysis graded 3 sound and 1 doubtful."
     )
 
 
@@ -88,10 +88,10 @@ def test_of_a_clean_study_little_is_told():
     sphere = CELLS.iloc[[0, 2]].assign(orphans_left_out=0)
     text = reconstructions(source(lines=["a,x,", "c,y,"], cells=sphere, findings=FINDINGS[:0], away=AWAY[:0]))
     assert text == (
-        "Of 2 reconstructions in the SWC format ⟨Cannon1998⟩, 2 were analysed. Vetting for faults that bear "
-        "on cable analysis graded all of them sound. Coordinates and radii were taken as micrometres, "
-        "without correction for shrinkage. The soma was taken as isopotential, its membrane as that of a "
-        "sphere (2)."
+        "Of 2 reconstructions in the SWC format ⟨Cannon1998⟩, 2 were analysed. Of the 2 cells used, vetting "
+        "for faults that bear on cable analysis graded all sound. Coordinates and radii were taken as "
+        "micrometres, without correction for shrinkage. The soma was taken as isopotential, its membrane as "
+        "that of a sphere (2)."
     )
 
 
@@ -144,19 +144,19 @@ def test_domains_spines_and_a_shunt_are_told():
     chosen = Assumptions(membrane=general, domains=own, soma_shunt_nS=2.5, hz=(10.0, 1000.0))
     text = plain(electrotonus(source(chosen)))
     assert "C_m = 1 µF/cm² unless stated otherwise." in text
-    spines = "1.2, 1 for the axon, 1.9 for basal dendrites and 1 for cable of type 7."
+    spines = "1.2 in general, 1 for the axon, 1.9 for basal dendrites and 1 for cable of type 7."
     assert f"R_m/F and C_m·F ⟨Holmes1989 RappYaromSegev1992⟩: {spines}" in text
-    assert "In basal dendrites these were R_m = 9,000 Ω cm², R_i" in text
-    assert "In cable of type 7 these were R_m = 20,000 Ω cm²" in text
-    assert "In the axon these" not in text
+    assert "Basal dendrites had R_m = 9,000 Ω cm², R_i" in text
+    assert "Cable of type 7 had R_m = 20,000 Ω cm²" in text
+    assert "The axon had" not in text
     assert "The soma had a leak of 2.5 nS besides." in text
     assert "for steady current and at 10 Hz and 1,000 Hz followed" in text
 
 
 def test_daughters_of_their_own_radius_are_told():
-    assert "own radius" not in electrotonus(source())
+    assert "daughter" not in electrotonus(source())
     text = electrotonus(source(Assumptions(branch_start="own radius")))
-    assert "stems were cylinders, and so was the first piece of a daughter at a branch point." in text
+    assert "a cylinder, as did the first piece of a daughter at a branch point." in text
 
 
 def test_the_time_axis_is_told_where_it_was_asked_for():
