@@ -44,6 +44,7 @@ _EXACT_PAIRS = 2500  # up to which the exact distribution of U is worked out
 #: Ways to deal values into groups up to which H has its exact p, else so many are drawn.
 DEALS = 15_000
 _DEALS_OF_A_PAIR = 4_000  # the same of tied values for U, of which there are many more tests
+_MOST = 50  # groups whose pairs are compared, 1,225 of them; nobody reads more
 _NAMED = 6  # groups left out that a note names
 
 
@@ -158,7 +159,8 @@ def comparisons(
     -------
     DataFrame
         One row per test, `COMPARISON_COLUMNS`; none where there is only one group. Groups of one value are
-        left out, with a note; a quantity that cannot be tested has a row that says why.
+        left out, with a note, as are the pairs of more than 50 groups; a quantity that cannot be tested has a
+        row that says why.
     """
     how = how or Bootstrap()
     groups = [(", ".join(names), rows) for names, rows in groups_of(table, by)]
@@ -190,8 +192,10 @@ def _of_column(column: str, samples: list[Sample], how: Bootstrap) -> list[dict[
         return [_row(column, test, n=len(pooled), note="; ".join(filter(None, [reason, note])))]
     if len(tested) == 2:
         return [_pair(column, tested[0], tested[1], how, note)]
+    pairs = list(combinations(tested, 2)) if len(tested) <= _MOST else []
+    note += "" if pairs else f"{'; ' * bool(note)}more than {_MOST} groups, pairs not compared"
     every = _all_groups(column, [values for _, values in tested], how, note)
-    return [every, *(_pair(column, first, second, how) for first, second in combinations(tested, 2))]
+    return [every, *(_pair(column, first, second, how) for first, second in pairs)]
 
 
 def _row(column: str, test: str, **known: Any) -> dict[str, Any]:

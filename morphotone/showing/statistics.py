@@ -76,26 +76,24 @@ def _percent(how: Bootstrap) -> str:
 def _tests(comparisons: pd.DataFrame, how: Bootstrap, family: Family) -> Iterator[str]:
     made = comparisons[comparisons["p"].notna()]
     many, pairs = (made[made["test"] == test] for test in (KRUSKAL_WALLIS, MANN_WHITNEY))
-    if pairs.empty:
+    if made.empty:
         return
+    by_pairs = f"the two-sided Mann–Whitney test ⟨MannWhitney1947⟩ ({_by(pairs)})"
+    of_pairs = f"Cliff's ‹δ› ⟨Cliff1993⟩ with Newcombe's {_percent(how)} interval (method 5 ⟨Newcombe2006⟩)"
     if len(many):
+        and_pairs = f" and in pairs with {by_pairs}" if len(pairs) else ""
         yield (
-            f"Groups were compared with the Kruskal–Wallis test ⟨KruskalWallis1952⟩ ({_by(many)}) and in "
-            f"pairs with the two-sided Mann–Whitney test ⟨MannWhitney1947⟩ ({_by(pairs)})."
+            f"Groups were compared with the Kruskal–Wallis test ⟨KruskalWallis1952⟩ ({_by(many)}){and_pairs}."
         )
-    else:
-        yield (
-            "The two groups were compared with the two-sided Mann–Whitney test ⟨MannWhitney1947⟩ "
-            f"({_by(pairs)})."
-        )
-    yield f"‹p› values were corrected by Holm's method ⟨Holm1979⟩ {_family(many, pairs, family)}."
-    effect = f"Cliff's ‹δ› ⟨Cliff1993⟩ with Newcombe's {_percent(how)} interval (method 5 ⟨Newcombe2006⟩)"
-    if len(many):
         effect = (
             f"‹ε›² = ‹H›/(‹n› − 1) ⟨TomczakTomczak2014⟩ with the {_percent(how)} interval of a noncentral χ² "
-            f"distribution ⟨Andrews1954 Steiger2004⟩, for pairs {effect}"
+            f"distribution ⟨Andrews1954 Steiger2004⟩{', for pairs ' if len(pairs) else ''}"
         )
-    yield f"Effect sizes are {effect}."
+    else:
+        yield f"The two groups were compared with {by_pairs}."
+        effect = ""
+    yield f"‹p› values were corrected by Holm's method ⟨Holm1979⟩ {_family(many, pairs, family)}."
+    yield f"Effect sizes are {effect}{of_pairs if len(pairs) else ''}."
 
 
 def _by(tests: pd.DataFrame) -> str:
@@ -107,5 +105,5 @@ def _family(many: pd.DataFrame, pairs: pd.DataFrame, family: Family) -> str:
         return "over the pairs of groups of each quantity" if len(many) else "within each quantity"
     if len(many):
         one = "the Kruskal–Wallis test" if len(many) == 1 else f"all {len(many):,} Kruskal–Wallis tests"
-        return f"over {one}, and over all {len(pairs):,} tests of pairs"
+        return f"over {one}" + (f", and over all {len(pairs):,} tests of pairs" if len(pairs) else "")
     return "over one test" if len(pairs) == 1 else f"over all {len(pairs):,} tests"

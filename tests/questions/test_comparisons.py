@@ -199,6 +199,13 @@ def test_a_note_does_not_name_hundreds_of_groups():
     assert row["note"] == "fewer than 2 values, left out: g0; g1; g2; g3; g4; g5; …"
 
 
+def test_the_pairs_of_very_many_groups_are_not_compared():
+    groups = {f"g{i}": [float(i), i + 0.5, i + 1, i + 2, i + 3] for i in range(51)} | {"alone": [1.0]}
+    (row,) = comparisons(table(**groups), ["class"], ["x"]).to_dict("records")
+    assert row["test"] == "Kruskal–Wallis"
+    assert row["note"] == "fewer than 2 values, left out: alone; more than 50 groups, pairs not compared"
+
+
 @pytest.mark.parametrize(
     ("groups", "note"),
     [

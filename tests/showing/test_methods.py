@@ -220,6 +220,15 @@ def test_one_group_is_told_without_tests_and_many_are_not_named():
     assert "bootstrap" not in text  # of one value each there are no intervals
 
 
+def test_very_many_groups_are_told_without_pairs():
+    cells = pd.concat([CELLS.assign(file=[f"{name}{i}.swc" for name in "abcde"]) for i in range(60)])
+    cells = cells.assign(R_in_MOhm=range(300)).reset_index(drop=True)
+    text = told(lines=[f"{name}{i},{i}," for name in "abcde" for i in range(60)], cells=cells)
+    assert "compared with the Kruskal–Wallis test ⟨KruskalWallis1952⟩ (p by the χ² approximation)." in text
+    assert text.endswith("of a noncentral χ² distribution ⟨Andrews1954 Steiger2004⟩.")
+    assert "Mann" not in text
+
+
 def test_every_citation_is_known_and_comes_out_in_both_forms():
     chosen = Assumptions(membrane=Membrane(spine_factor=1.5))
     texts = {"Cells & more": reconstructions(source()), "Cable": electrotonus(source(chosen))}
