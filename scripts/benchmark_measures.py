@@ -83,8 +83,7 @@ STAGES = (
     ("tables", "morphotone.commands.survey.csv_rows"),
     ("tables", "morphotone.commands.survey.csv_texts"),
     ("write", "morphotone.night.ledger.Ledger.record"),
-    ("write", "morphotone.commands.survey.export"),
-    ("write", "morphotone.commands.survey.export_each"),
+    ("write", "morphotone.commands.survey.write_tables"),
     ("write", "morphotone.commands.survey.write_record"),
 )
 REST = "rest"
