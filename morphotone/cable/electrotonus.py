@@ -192,8 +192,8 @@ class Electrotonus:
 
     def at(self, nodes: Index) -> "Electrotonus":
         """Return the same for some rows only, -1 being none."""
-        rows = np.arange(self.rows.start, self.rows.stop) if isinstance(self.rows, slice) else self.rows
-        return replace(self, rows=np.where(nodes < 0, -1, rows[nodes]))
+        rows = nodes + self.rows.start if isinstance(self.rows, slice) else self.rows[nodes]
+        return replace(self, rows=np.where(nodes < 0, -1, rows))
 
     def by_sample(self) -> "Electrotonus":
         """Return the same with one row per sample of the file instead of one per node."""

@@ -22,11 +22,13 @@ def branch_table(cell: Cell) -> Columns:
     length, L = branches.total(cable.length), branches.total(cell.L)
     least, greatest = cell.lambdas
     d_first, d_end = 2.0 * cable.r_end[head], 2.0 * cable.r_end[end]
+    kinds = cable.kind[end].tolist()
+    names = {kind: domain_name(kind) for kind in set(kinds)}
     columns: Columns = {
         "branch": np.arange(1, len(head) + 1),
         "parent_branch": branches.parent + 1,
         "order": branches.order,
-        "domain": [domain_name(kind) for kind in cable.kind[end].tolist()],
+        "domain": [names[kind] for kind in kinds],
         "sample_start": cell.rec.number[cable.sample[cable.parent[head]]],
         "sample_end": cell.rec.number[cable.sample[end]],
         "children": branches.children,
@@ -47,7 +49,7 @@ def branch_table(cell: Cell) -> Columns:
     }
     for case, suffix in enumerate(case_suffixes(electrotonus)):
         columns |= {
-            f"R_in_end_MOhm{suffix}": np.abs(electrotonus.Z_in[end, case]),
+            f"R_in_end_MOhm{suffix}": cell.R_in_MOhm[1][:, case],
             f"attenuation_to_soma_end{suffix}": np.exp(electrotonus.log_attenuation_to_soma[end, case]),
             f"attenuation_from_soma_end{suffix}": np.exp(electrotonus.log_attenuation_from_soma[end, case]),
         }

@@ -68,13 +68,19 @@ def branches_of(parent: Index) -> Branches:
     heads = starts[parent]
     heads[0] = False
     head = np.flatnonzero(heads)
-    leads = np.where(heads, np.arange(len(parent)), parent)
+    # By stretches of nodes i, i + 1, … each the child of the one before, far fewer than the nodes.
+    broken = heads.copy()
+    broken[1:] |= parent[1:] != np.arange(len(parent) - 1)
+    broken[0] = True
+    stretch = np.cumsum(broken) - 1
+    first = np.flatnonzero(broken)
+    leads = np.where(heads[first], np.arange(len(first)), stretch[parent[first]])
     leads[0] = 0
-    while not np.array_equal(leads, leads[leads]):  # doubles the stretch of cable seen each time
-        leads = leads[leads]
-    number = np.full(len(parent), -1)
-    number[head] = np.arange(len(head))
-    of_node = number[leads]
+    while not np.array_equal(further := leads[leads], leads):  # doubles the stretch of cable seen each time
+        leads = further
+    number = np.full(len(first), -1)
+    number[heads[first]] = np.arange(len(head))
+    of_node = number[leads].take(stretch)
     ends = np.flatnonzero(starts[1:]) + 1
     end = np.empty_like(head)
     end[of_node[ends]] = ends

@@ -9,7 +9,6 @@ from numpy.typing import NDArray
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.electrotonus import Electrotonus
 from morphotone.cable.forest import Membrane, membrane_of
-from morphotone.cable.frustum import electrotonic_lengths
 from morphotone.cable.traced import AXON
 from morphotone.cable.tree import Cable
 from morphotone.questions.branches import Branches, branches_of
@@ -78,10 +77,13 @@ class Cell:
     @cached_property
     def L(self) -> Real:
         """Electrotonic length of each frustum at 0 Hz."""
-        cable = self.cable
-        return electrotonic_lengths(
-            cable.r_start, cable.r_end, cable.length, self.membrane.R_i, self.membrane.leak
-        )
+        return self.electrotonus.L[:, 0]
+
+    @cached_property
+    def R_in_MOhm(self) -> tuple[Real, Real]:
+        """Input resistance at the soma and at the ends of branches, MΩ, shape (cases,), (branches, cases)."""
+        R_in = self.electrotonus.at(np.append(0, self.branches.end)).R_in_MOhm
+        return R_in[0], R_in[1:]
 
     @cached_property
     def lambdas(self) -> tuple[Real, Real]:
@@ -96,6 +98,13 @@ class Cell:
         dendritic: Mask = (self.cable.kind != SOMA) & (self.cable.kind != AXON)
         dendritic[0] = False
         return dendritic
+
+    @cached_property
+    def dendritic_membrane(self) -> Real:
+        """Dendritic membrane that stands for each node, the starts of its daughters' frusta included, µm2."""
+        at_start, at_end = (np.where(self.dendritic, part, 0.0) for part in self.areas)
+        of_daughters = np.bincount(self.cable.parent[1:], weights=at_start[1:], minlength=len(at_end))
+        return np.asarray(at_end + of_daughters)
 
     @cached_property
     def farthest_tip(self) -> int:

@@ -24,6 +24,7 @@ Mask = NDArray[np.bool_]
 
 # The domains with columns of their own; every other code is counted as "other".
 _DOMAINS = {AXON: "axon", 3: "basal", 4: "apical"}
+_DOMAIN_NAMES = (*_DOMAINS.values(), "other")
 _FAR = (0.5, 1.0)  # X beyond which the share of dendritic membrane is told
 
 
@@ -42,7 +43,9 @@ def cell_row(cell: Cell, time_constants: int = 0) -> dict[str, Any]:
     row: dict[str, Any] = {"sha256": cell.rec.sha256, "grade": cell.vetting.grade}
     for severity in SEVERITIES:
         row[f"findings_{severity}"] = sum(f.severity == severity for f in cell.vetting.findings)
-    row |= _counts(cell) | _sizes(cell) | _space_constants(cell) | _rall_conditions(cell) | _distances(cell)
+    domain = _domain_of_nodes(cell.cable.kind)
+    row |= _counts(cell) | _sizes(cell, domain) | _space_constants(cell, domain)
+    row |= _rall_conditions(cell) | _distances(cell)
     for case, suffix in enumerate(case_suffixes(cell.electrotonus)):
         row |= {name + suffix: value for name, value in _attenuation(cell, case)}
     row |= time_row(cell.time, cell.farthest_tip, time_constants)
@@ -55,7 +58,7 @@ def _counts(cell: Cell) -> dict[str, Any]:
     root_branches = not len(traced.soma.members) and stems > 1
     return {
         "samples": len(cell.rec.number),
-        "samples_analysed": int((cell.cable.node >= 0).sum()),
+        "samples_analysed": int(np.count_nonzero(cell.cable.node >= 0)),
         "branches": len(branches.head),
         "stems": stems,
         "branch_points": int((branches.children > 1).sum()) + int(root_branches),
@@ -70,7 +73,7 @@ def _counts(cell: Cell) -> dict[str, Any]:
     }
 
 
-def _sizes(cell: Cell) -> dict[str, float]:
+def _sizes(cell: Cell, domain: NDArray[np.int8]) -> dict[str, float]:
     """Return cable length (µm) and membrane area (µm2) by domain, and the membrane's capacitance (pF)."""
     soma_area = cell.cable.traced.soma.area
     soma_capacity = float(membrane_of(np.array([SOMA]), cell.assumptions).capacity[0])
@@ -80,34 +83,41 @@ def _sizes(cell: Cell) -> dict[str, float]:
         "length_um": float(cell.cable.length.sum()),
         "area_um2": float(cell.area.sum()) + soma_area,
     }
-    for name, here in _domains(cell.cable.kind):
-        sizes[f"length_{name}_um"] = float(cell.cable.length[here].sum())
-        sizes[f"area_{name}_um2"] = float(cell.area[here].sum())
+    lengths, areas = (_by_domain(domain, values) for values in (cell.cable.length, cell.area))
+    for name, length, area in zip(_DOMAIN_NAMES, lengths, areas, strict=True):
+        sizes |= {f"length_{name}_um": float(length), f"area_{name}_um2": float(area)}
     return sizes | {"capacitance_pF": farads * PICOFARAD_PER_F_CM2_UM2}
 
 
-def _domains(kind: Index) -> Iterator[tuple[str, Mask]]:
-    """Yield name and nodes of every domain that has columns; node 0 belongs to none."""
-    other = np.arange(len(kind)) > 0
-    for code, name in _DOMAINS.items():
-        here = kind == code
-        here[0] = False
-        other &= ~here
-        yield name, here
-    yield "other", other
+def _domain_of_nodes(kind: Index) -> NDArray[np.int8]:
+    """Return which of the domains with columns each node is in; node 0 is in none and stands behind all."""
+    domain = np.full(len(kind), len(_DOMAINS), np.int8)  # other
+    for which, code in enumerate(_DOMAINS):
+        domain[kind == code] = which
+    domain[0] = len(_DOMAIN_NAMES)
+    return domain
 
 
-def _space_constants(cell: Cell) -> dict[str, float]:
+def _by_domain(domain: NDArray[np.int8], amount: Real) -> Real:
+    """Return the sum of an amount per frustum in each domain."""
+    return np.asarray(np.bincount(domain, amount, len(_DOMAIN_NAMES) + 1)[:-1], np.float64)
+
+
+def _space_constants(cell: Cell, domain: NDArray[np.int8]) -> dict[str, float]:
     """Return λ (µm): cable length over L, and the least and greatest local value, in all and by domain."""
-    least, greatest = cell.lambdas
+    least, greatest = np.full(len(_DOMAIN_NAMES) + 1, np.inf), np.zeros(len(_DOMAIN_NAMES) + 1)
+    np.minimum.at(least, domain, cell.lambdas[0])
+    np.maximum.at(greatest, domain, cell.lambdas[1])
+    lengths, Ls = (_by_domain(domain, values) for values in (cell.cable.length, cell.L))
+    found = np.bincount(domain, minlength=len(least))[:-1] > 0
     columns = {}
-    everywhere = np.arange(len(least)) > 0
-    for name, here in [("", everywhere), *((f"_{name}", here) for name, here in _domains(cell.cable.kind))]:
-        found = bool(here.any())
-        length = cell.cable.length[here].sum()
-        columns[f"lambda{name}_um"] = float(length / cell.L[here].sum()) if found else np.nan
-        columns[f"lambda{name}_least_um"] = float(least[here].min()) if found else np.nan
-        columns[f"lambda{name}_greatest_um"] = float(greatest[here].max()) if found else np.nan
+    each = zip(_DOMAIN_NAMES, np.eye(len(_DOMAIN_NAMES), dtype=bool), strict=True)
+    for name, which in [("", found), *((f"_{name}", mask) for name, mask in each)]:
+        there = bool(found[which].any())
+        ratio = lengths[which].sum() / Ls[which].sum() if there else np.nan
+        columns[f"lambda{name}_um"] = float(ratio)
+        columns[f"lambda{name}_least_um"] = float(least[:-1][which].min()) if there else np.nan
+        columns[f"lambda{name}_greatest_um"] = float(greatest[:-1][which].max()) if there else np.nan
     return columns
 
 
@@ -157,10 +167,10 @@ def share_beyond(cell: Cell, limit: float, chosen: Mask) -> float:
         return float("nan")
     X = cell.electrotonus.X[:, 0]
     beyond = limit < X
-    within = (~beyond).astype(np.float64)
-    crossing = np.flatnonzero(beyond & (X[cable.parent] < limit))
-    within[crossing] = _share_within(cell, limit, crossing)
-    return float((area * (1.0 - within)).sum() / area.sum())
+    crossing = np.flatnonzero(beyond & (X.take(cable.parent) < limit))
+    outside = area * beyond
+    outside[crossing] *= 1.0 - _share_within(cell, limit, crossing)
+    return float(outside.sum() / area.sum())
 
 
 def _share_within(cell: Cell, limit: float, which: Index) -> Real:
@@ -182,13 +192,13 @@ def _attenuation(cell: Cell, case: int) -> Iterator[tuple[str, float]]:
         "to": np.exp(electrotonus.log_attenuation_to_soma[:, case]),
         "from": np.exp(electrotonus.log_attenuation_from_soma[:, case]),
     }
-    yield "R_in_MOhm", float(np.abs(electrotonus.Z_in[0, case]))
+    yield "R_in_MOhm", float(cell.R_in_MOhm[0][case])
     for direction, values in attenuation.items():
         yield f"attenuation_{direction}_soma_farthest", float(values[farthest])
-    at_start, at_end = (np.where(cell.dendritic, part, 0.0) for part in cell.areas)
-    total = (at_start + at_end).sum()
+    membrane = cell.dendritic_membrane
+    total = membrane.sum()
     for direction, values in attenuation.items():
-        whole = (at_end * values).sum() + (at_start * values[cell.cable.parent]).sum()
+        whole = (membrane * values).sum()
         yield f"attenuation_{direction}_soma_mean", float(whole / total) if total else np.nan
 
 
