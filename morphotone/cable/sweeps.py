@@ -11,6 +11,7 @@ seventeen.  What happens to a cell depends on that cell alone, not on its neighb
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import NamedTuple
 
 import numpy as np
@@ -70,8 +71,22 @@ class Runs(NamedTuple):
     of_node: Index
 
 
+class Streams(NamedTuple):
+    """Paths of runs on which the Horton–Strahler order stays the same; a root is a stream of its own.
+
+    ``order``, ``length`` (nodes) and ``hangs_on`` (the node above, -1 for a root) are per stream; ``of_run``
+    and ``below``, the nodes of the stream that lie farther out than the run, per run.
+    """
+
+    order: Index
+    length: Index
+    hangs_on: Index
+    of_run: Index
+    below: Index
+
+
 _HANG = 63  # stands behind every possible number of foldings in the sorting key of a stream's nodes
-_LAST = 64 * (_HANG + 1)  # stands behind every order: a root's; keys leave 51 bits for two node numbers
+_LAST = 64 * (_HANG + 1)  # stands behind every order: a root's
 
 
 def schedule(parent: Index) -> Schedule:
@@ -85,33 +100,37 @@ def schedule(parent: Index) -> Schedule:
     Notes
     -----
     Linear in the nodes.  Only the tree of *runs* is walked in Python, tens of times smaller than the
-    tree of nodes in files that list branches one after the other.
+    tree of nodes in files that list branches one after the other.  Indices are found at *positions*: stream
+    by stream, each from its tip end, where what comes next in a stream is next in memory.
     """
     runs = _runs(parent)
-    order, above, stream, hangs_on = _streams(runs, parent)
+    streams = _streams(runs, parent)
     nodes = np.arange(len(parent))
-    rank = above[runs.of_node] + runs.last[runs.of_node] - nodes  # from the stream's tip end, 0 1 2 …
-    stream_of = stream[runs.of_node]
-    length = np.bincount(stream_of, minlength=len(hangs_on))
-    start = np.concatenate(([0], np.cumsum(length)[:-1]))
-    member = np.empty(len(parent), np.int64)  # nodes, stream by stream from the tip end
-    member[start[stream_of] + rank] = nodes
+    start = np.cumsum(streams.length) - streams.length
+    position = (start[streams.of_run] + streams.below + runs.last).take(runs.of_node) - nodes
+    member = np.empty_like(position)
+    member[position] = nodes
 
+    rank = nodes - np.repeat(start, streams.length)
     lowest = rank & -rank  # 2^level: the stride at which the node is folded away
-    level = np.where(rank > 0, np.frexp(np.maximum(lowest, 1).astype(np.float64))[1] - 1, _HANG)
-    above_rank = rank + lowest
-    inside = (rank > 0) & (above_rank < length[stream_of])
-    up = np.where(inside, member[np.where(inside, start[stream_of] + above_rank, 0)], hangs_on[stream_of])
-    key = order[runs.of_node] * (_HANG + 1) + level
-    is_root = parent < 0
-    key[is_root] = _LAST
-    # By step, then (for hanging) by parent, then by node: one sort of whole numbers that are all different.
-    together = (key * len(nodes) + np.where(level == _HANG, up, 0)) * len(nodes) + nodes
-    sequence = np.argsort(together)
+    level = np.frexp(lowest.astype(np.float64))[1] - 1
+    level[start] = _HANG
+    inside = rank + lowest < np.repeat(streams.length, streams.length)
+    inside[start] = False
+    up = np.where(inside, nodes + lowest, np.repeat(position[streams.hangs_on], streams.length))
+    key = (np.repeat(streams.order * (_HANG + 1), streams.length) + level).astype(np.int16)
+    roots = position[parent < 0]
+    key[roots] = _LAST
+    sequence = np.argsort(key, kind="stable")
+    hanging = np.flatnonzero(key.take(sequence) % (_HANG + 1) == _HANG)
+    by_parent = np.lexsort((member[start], streams.hangs_on, key[start]))
+    sequence[hanging] = start[by_parent[: len(hanging)]]  # roots come last
     place = np.empty_like(sequence)
     place[sequence] = nodes
-    down = member[start[stream_of] + rank - lowest]
-    return Schedule(sequence, place, _steps(key, sequence, place, up, down), int(is_root.sum()))
+    steps = _steps(
+        key.take(sequence), place.take(up.take(sequence)), place.take((nodes - lowest).take(sequence))
+    )
+    return Schedule(member.take(sequence), place.take(position), steps, len(roots))
 
 
 def _runs(parent: Index) -> Runs:
@@ -125,59 +144,54 @@ def _runs(parent: Index) -> Runs:
     return Runs(first, last, np.cumsum(~onward) - 1)
 
 
-def _streams(runs: Runs, parent: Index) -> tuple[Index, Index, Index, Index]:
-    """Return per run its order, the nodes below it in its stream, its stream; per stream where it hangs.
+def _streams(runs: Runs, parent: Index) -> Streams:
+    """Return the streams of a forest.
 
     Horton–Strahler order as in Strahler 1957, Trans Am Geophys Union 38:913–920: a tip has order 1; where
     two or more streams of the highest order meet the order grows by one, else the highest flows on.
     """
     count = len(runs.first)
     hook = parent[runs.first]
-    parent_run = np.where(hook >= 0, runs.of_node[hook], -1).tolist()
-    size = (runs.last - runs.first + 1).tolist()
-    highest, ties, heir = [0] * count, [0] * count, [-1] * count
-    order, below = [1] * count, [0] * count
+    parent_run = np.where(hook >= 0, runs.of_node[hook], -1)
+    order, highest, ties, heir = [1] * count, [0] * count, [2] * count, [-1] * count
+    upward = parent_run.tolist()
     for run in range(count - 1, -1, -1):
-        if highest[run]:
-            if ties[run] > 1:
-                order[run], heir[run] = highest[run] + 1, -1
-            else:
-                order[run] = highest[run]
-                below[run] = below[heir[run]] + size[heir[run]]
-        up = parent_run[run]
+        own = order[run] = highest[run] + (ties[run] > 1)
+        up = upward[run]
         if up >= 0:
-            if order[run] > highest[up]:
-                highest[up], ties[up], heir[up] = order[run], 1, run
-            elif order[run] == highest[up]:
+            if own > highest[up]:
+                highest[up], ties[up], heir[up] = own, 1, run
+            elif own == highest[up]:
                 ties[up] += 1
-    is_root = [up < 0 for up in parent_run]
-    stream = [0] * count
-    hangs_on: list[int] = []
-    for run in range(count):
-        up = parent_run[run]
-        if up >= 0 and not is_root[up] and heir[up] == run:
-            stream[run] = stream[up]
-        else:
-            stream[run] = len(hangs_on)
-            hangs_on.append(int(hook[run]))
-    below = [0 if root else nodes for root, nodes in zip(is_root, below, strict=True)]
-    return np.array(order), np.array(below), np.array(stream), np.array(hangs_on)
+    flows_on = np.where(
+        np.array(ties) == 1, heir, -1
+    )  # the run in which a run's stream comes from farther out
+    flows_on[parent_run < 0] = -1
+    each = np.arange(count)
+    top = np.where((parent_run >= 0) & (flows_on[parent_run] == each), parent_run, each)
+    while not np.array_equal(further := top[top], top):  # doubles the stretch of stream seen each time
+        top = further
+    tops, of_run = np.unique(top, return_inverse=True)
+    from_tip = np.lexsort((-each, of_run))  # stream by stream, each from its tip end
+    size = (runs.last - runs.first + 1)[from_tip]
+    length = np.bincount(of_run, runs.last - runs.first + 1).astype(np.int64)
+    below = np.empty(count, np.int64)
+    below[from_tip] = np.cumsum(size) - size - np.repeat(np.cumsum(length) - length, np.bincount(of_run))
+    return Streams(np.array(order)[tops], length, hook[tops], of_run, below)
 
 
-def _steps(key: Index, sequence: Index, place: Index, up: Index, down: Index) -> tuple[Step, ...]:
-    keys = key[sequence]
-    edges = np.flatnonzero(np.diff(keys)) + 1
+def _steps(key: NDArray[np.int16], parent: Index, child: Index) -> tuple[Step, ...]:
+    """Cut places in order of elimination where the key changes; roots are in no step."""
+    edges = [0, *(np.flatnonzero(np.diff(key)) + 1).tolist(), len(key)]
     steps = []
-    for first, last in zip([0, *edges.tolist()], [*edges.tolist(), len(keys)], strict=True):
-        if keys[first] == _LAST:
+    for first, last in pairwise(edges):
+        if key[first] == _LAST:
             break
-        nodes = sequence[first:last]
-        parent = place[up[nodes]]
-        if keys[first] % (_HANG + 1) == _HANG:
-            groups = np.flatnonzero(np.diff(parent, prepend=-1))
-            steps.append(Step(first, last, parent, None, groups))
+        if key[first] % (_HANG + 1) == _HANG:
+            groups = np.flatnonzero(np.diff(parent[first:last], prepend=-1))
+            steps.append(Step(first, last, parent[first:last], None, groups))
         else:
-            steps.append(Step(first, last, parent, place[down[nodes]], parent[:0]))
+            steps.append(Step(first, last, parent[first:last], child[first:last], parent[:0]))
     return tuple(steps)
 
 
