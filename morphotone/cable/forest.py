@@ -177,7 +177,9 @@ def _frusta_of(cells: Sequence[Sequence[Cable]], many: Sequence[Assumptions]) ->
     alike = all(cable is cables[0] for cables in cells for cable in cables)
     columns = 1 if alike else len(many)
     r_start, r_end, length = (
-        np.concatenate([np.stack([getattr(c, name) for c in cables[:columns]], axis=1) for cables in cells])
+        np.stack(
+            [np.concatenate([getattr(cables[c], name) for cables in cells]) for c in range(columns)], axis=1
+        )
         for name in ("r_start", "r_end", "length")
     )
     kind = np.concatenate([cable.kind for cable in first])

@@ -47,7 +47,7 @@ ODD = (
 )
 
 # A class is a bound of |Q| with a bound of |ε|; a frustum has the first bounds that it does not exceed.
-SIZES = (1e-4, 1e-2)
+SIZES = (1e-4, 1e-3, 1e-2)
 TAPERS = (0.0, 1 / 16, 1 / 8)
 OTHER = -1  # beyond the last bounds: not for this series
 _NEGLIGIBLE = 2e-17

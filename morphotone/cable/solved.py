@@ -85,27 +85,46 @@ class Solved:
     @cached_property
     def phase_to_soma(self) -> Real:
         """Phase of V_site/V_soma for current at the site, summed along the path."""
-        return path_sums(self.plan, np.angle(1.0 + self._fall_to_soma))
+        return self._phase(self._through_to_soma)
 
     @cached_property
     def phase_from_soma(self) -> Real:
         """Phase of V_soma/V_site for current at the soma, summed along the path."""
-        return path_sums(self.plan, np.angle(1.0 + self._fall_from_soma))
+        return self._phase(self._through_from_soma)
 
     @cached_property
     def _log_magnitudes(self) -> Real:
         """The two logarithms side by side, so that one walk along the paths serves both."""
-        falls = np.concatenate((self._fall_to_soma, self._fall_from_soma), axis=1)
-        logarithms = np.log(np.abs(1.0 + falls)) if np.iscomplexobj(falls) else np.log1p(falls)
-        return path_sums(self.plan, logarithms)
+        axial = self.pieces.axial
+        magnitudes = np.empty((len(axial), 2 * axial.shape[1]))
+        to_soma, from_soma = np.split(magnitudes, 2, axis=1)
+        with np.errstate(divide="ignore", over="ignore", invalid="ignore"):  # where nothing gets through
+            if np.iscomplexobj(axial):
+                size = np.abs(axial)
+                np.divide(np.abs(axial + self._through_to_soma), size, out=to_soma)
+                np.divide(np.abs(axial + self._through_from_soma), size, out=from_soma)
+                np.log(magnitudes, out=magnitudes)
+            else:
+                np.divide(self._through_to_soma, axial, out=to_soma)
+                np.divide(self._through_from_soma, axial, out=from_soma)
+                np.log1p(magnitudes, out=magnitudes)
+        return path_sums(self.plan, magnitudes)
 
     @property
-    def _fall_to_soma(self) -> Values:
-        return _quotient(self.pieces.start + self.looks.beyond, self.pieces.axial)
+    def _through_to_soma(self) -> Values:
+        """What the current toward the soma flows into beyond the piece, µS."""
+        through: Values = self.pieces.start + self.looks.beyond
+        return through
 
     @property
-    def _fall_from_soma(self) -> Values:
-        return _quotient(self.pieces.end + self.looks.away, self.pieces.axial)
+    def _through_from_soma(self) -> Values:
+        """What the current away from the soma flows into beyond the piece, µS."""
+        through: Values = self.pieces.end + self.looks.away
+        return through
+
+    def _phase(self, through: Values) -> Real:
+        with np.errstate(divide="ignore", over="ignore", invalid="ignore"):
+            return path_sums(self.plan, np.angle(1.0 + through / self.pieces.axial))
 
     def _logarithm(self, magnitude: Real, phase: str) -> Values:
         """Return the complex logarithm, or the real one where all is real."""
@@ -114,10 +133,3 @@ class Solved:
         logarithm = np.empty(magnitude.shape, np.complex128)
         logarithm.real, logarithm.imag = magnitude, getattr(self, phase)
         return logarithm
-
-
-def _quotient(shunt: Values, axial: Values) -> Values:
-    """Return a quotient that is infinite where nothing gets through."""
-    with np.errstate(divide="ignore", over="ignore", invalid="ignore"):
-        quotient: Values = shunt / axial
-        return quotient

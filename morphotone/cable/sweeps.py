@@ -260,10 +260,10 @@ def _fold_and_hang(plan: Schedule, pieces: Pi, total: Values, looked_into: Value
         below = Pi(*(part.take(child, axis=0) for part in pieces))
         lower.append(below)
         middle = end[at] + total[at] + below.start
-        pivot = axial[at] + below.axial + middle
-        share = below.axial / pivot
+        inverse = 1.0 / (axial[at] + below.axial + middle)  # one division, which is dear for complex numbers
+        share = below.axial * inverse
         axial[child] = axial[at] * share
-        start[child] = start[at] + middle * (axial[at] / pivot)
+        start[child] = start[at] + middle * (axial[at] * inverse)
         end[child] = below.end + middle * share
     return lower
 

@@ -73,7 +73,7 @@ def _counts(cell: Cell) -> dict[str, Any]:
     }
 
 
-def _sizes(cell: Cell, domain: NDArray[np.int8]) -> dict[str, float]:
+def _sizes(cell: Cell, domain: Index) -> dict[str, float]:
     """Return cable length (µm) and membrane area (µm2) by domain, and the membrane's capacitance (pF)."""
     soma_area = cell.cable.traced.soma.area
     soma_capacity = float(membrane_of(np.array([SOMA]), cell.assumptions).capacity[0])
@@ -89,21 +89,21 @@ def _sizes(cell: Cell, domain: NDArray[np.int8]) -> dict[str, float]:
     return sizes | {"capacitance_pF": farads * PICOFARAD_PER_F_CM2_UM2}
 
 
-def _domain_of_nodes(kind: Index) -> NDArray[np.int8]:
+def _domain_of_nodes(kind: Index) -> Index:
     """Return which of the domains with columns each node is in; node 0 is in none and stands behind all."""
-    domain = np.full(len(kind), len(_DOMAINS), np.int8)  # other
+    domain = np.full(len(kind), len(_DOMAINS))  # other
     for which, code in enumerate(_DOMAINS):
         domain[kind == code] = which
     domain[0] = len(_DOMAIN_NAMES)
     return domain
 
 
-def _by_domain(domain: NDArray[np.int8], amount: Real) -> Real:
+def _by_domain(domain: Index, amount: Real) -> Real:
     """Return the sum of an amount per frustum in each domain."""
     return np.asarray(np.bincount(domain, amount, len(_DOMAIN_NAMES) + 1)[:-1], np.float64)
 
 
-def _space_constants(cell: Cell, domain: NDArray[np.int8]) -> dict[str, float]:
+def _space_constants(cell: Cell, domain: Index) -> dict[str, float]:
     """Return λ (µm): cable length over L, and the least and greatest local value, in all and by domain."""
     least, greatest = np.full(len(_DOMAIN_NAMES) + 1, np.inf), np.zeros(len(_DOMAIN_NAMES) + 1)
     np.minimum.at(least, domain, cell.lambdas[0])

@@ -40,8 +40,8 @@ def test_up_to_the_corners_of_every_class(size: float, taper: float, phase: comp
 
 def test_a_class_is_told_by_the_first_bounds_that_are_not_exceeded() -> None:
     size = np.array([0.0, *short.SIZES, 0.011, 0.005, 0.0, np.inf])
-    taper = np.array([0.0, 1e-9, 0.07, 0.0, 0.126, 1 / 8, 0.0])
-    expected = [0, 2, 5, short.OTHER, short.OTHER, 4, short.OTHER]
+    taper = np.array([0.0, 1e-9, 0.07, 0.0, 0.0, 0.126, 1 / 8, 0.0])
+    expected = [0, 3, 7, 2, short.OTHER, short.OTHER, 6, short.OTHER]
     assert short.class_of(size, taper).tolist() == expected
 
 
