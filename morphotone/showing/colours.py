@@ -51,7 +51,7 @@ class Style(NamedTuple):
 PALETTE = (
     Style("#0072B2", ()),  # blue
     Style("#E69F00", (5.0, 1.5)),  # orange
-    Style("#009E73", (1.6, 0.6)),  # bluish green
+    Style("#009E73", (2.2, 1.0)),  # bluish green
     Style("#D55E00", (5.0, 1.5, 1.2, 1.5)),  # vermilion
     Style("#CC79A7", (6.0, 1.0)),  # reddish purple
     Style("#56B4E9", (3.0, 1.2)),  # sky blue

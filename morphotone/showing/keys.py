@@ -5,18 +5,19 @@ import re
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
-from matplotlib.lines import Line2D
 from numpy.typing import NDArray
 
 from morphotone.questions.portrait import Portrait
 from morphotone.showing.colours import CONTINUOUS, INK, Scale
 from morphotone.showing.panels import BACK, ENDLESS, LINE, OTHER, styles_of
-from morphotone.showing.sheet import SMALL, Box, axes_at, factor_ticks, number_text, round_length
+from morphotone.showing.sheet import SMALL, Box, axes_at, even_ticks, factor_ticks, number_text, text_width_mm
 
 Real = NDArray[np.float64]
 
 _NUMBERED, _NUMBERED_SMALL = 12, 8  # sites with a number, in boxes from 50 mm on and below; others have a dot
 _DISC = 1.45  # mm, radius of the disc that holds a number
+
+_SPECIMEN, _KEY_ROW = 7.0, 2.8  # mm: a line shown and the gap behind it, from row to row
 
 _WORDS = {
     "sample": "sample number",
@@ -57,7 +58,7 @@ def column_words(column: str) -> str:
 
 def draw_colour_bar(figure: Figure, box: Box, scale: Scale, logarithmic: bool) -> Axes:
     """Draw the shades of a scale across a box 9 mm high: words, shades, ticks, from above."""
-    axes = axes_at(figure, box.inside(top=3.4, bottom=3.6))
+    axes = axes_at(figure, box.inside(top=3.4, bottom=3.6), "colour bar")
     axes.set_title(scale.label, fontsize=SMALL, loc="left", pad=2.0)
     shades = np.linspace(0.0, 1.0, CONTINUOUS.N)[None, :]
     least, greatest = scale.least, scale.greatest
@@ -70,47 +71,36 @@ def draw_colour_bar(figure: Figure, box: Box, scale: Scale, logarithmic: bool) -
         return axes
     axes.imshow(shades, cmap=CONTINUOUS, aspect="auto", extent=(0.0, 1.0, 0.0, 1.0))
     most = max(2, int(box.width / 8.0))
-    places, labels = _ticks(least, greatest, logarithmic, most)
+    places, labels = (
+        factor_ticks(least, greatest, most) if logarithmic else even_ticks(least, greatest, box.width)
+    )
     axes.set_xticks(scale.place(places), labels)
     return axes
 
 
-def _ticks(least: float, greatest: float, logarithmic: bool, most: int) -> tuple[Real, list[str]]:
-    if logarithmic:
-        return factor_ticks(least, greatest, most)
-    step = round_length((greatest - least) / 2.0)
-    places = np.arange(np.ceil(least / step - 1e-9), np.floor(greatest / step + 1e-9) + 1) * step
-    while len(places) > most:
-        places = places[::2]
-    return places, [number_text(float(f"{place:.6g}")) for place in places]
-
-
-def draw_key(figure: Figure, box: Box, portrait: Portrait) -> None:
-    """Explain the lines of the courses and the trees, in one or two rows across a box."""
-    handles = [
-        Line2D([], [], lw=2 * LINE, label=_in_words(name, portrait), **style.line)
+def draw_key(figure: Figure, box: Box, portrait: Portrait) -> Axes:
+    """Explain the lines of the courses and the trees, in rows across a box."""
+    items = [
+        (_in_words(name, portrait), {"lw": 2 * LINE, **style.line})
         for name, style in styles_of(portrait).items()
     ]
-    handles.append(Line2D([], [], label="from the soma", **BACK))
+    items.append(("from the soma (in colour: toward it)", BACK))
     if np.isfinite(portrait.endless.lambda_um):
-        stem = f"endless cable, λ {number_text(round(portrait.endless.lambda_um))} µm"
-        handles.append(Line2D([], [], label=stem, **ENDLESS))
-    axes = axes_at(figure, box)
+        items.append((f"endless cable, λ {number_text(round(portrait.endless.lambda_um))} µm", ENDLESS))
+    axes = axes_at(figure, box, "key")
     axes.set_axis_off()
-    axes.legend(
-        handles=handles,
-        loc="upper left",
-        bbox_to_anchor=(0.0, 1.0),
-        ncols=max(1, min(len(handles), int(box.width / 24.0))),
-        fontsize=SMALL,
-        frameon=False,
-        borderpad=0.0,
-        borderaxespad=0.0,
-        handlelength=2.4,
-        handletextpad=0.5,
-        columnspacing=1.2,
-        labelspacing=0.3,
-    )
+    axes.set_xlim(0.0, box.width)
+    axes.set_ylim(box.height, 0.0)
+    left, row = 0.0, 0
+    for words, line in items:
+        width = _SPECIMEN + text_width_mm(words, SMALL)
+        if left and left + width > box.width:
+            left, row = 0.0, row + 1
+        middle = (row + 0.5) * _KEY_ROW
+        axes.plot([left, left + _SPECIMEN - 1.0], [middle, middle], clip_on=False, **line)
+        axes.text(left + _SPECIMEN, middle, words, fontsize=SMALL, va="center_baseline")
+        left += width + 3.0
+    return axes
 
 
 def _in_words(name: str, portrait: Portrait) -> str:

@@ -32,6 +32,7 @@ from morphotone.showing.sheet import (
     house_style,
     number_text,
     round_length,
+    text_width_mm,
     wrapped,
     write_at,
 )
@@ -43,7 +44,8 @@ _HEAD = 9.5
 _LINE_MM = 2.6  # from one line of small type to the next
 _TITLE_MM = 4.5  # a panel's letter and title above it
 _BELOW_CELL = 11.0  # its scale bar and the colour bar
-_LEFT, _BELOW = 9.0, 7.5  # what a course needs for its scales
+_LEFT, _BELOW = 10.5, 7.5  # what a course needs for its scales
+_LEFT_SHARED = 9.0
 _GAP = 4.0
 _TOP = _EDGE + _HEAD + _TITLE_MM
 _MEASURES = ("path_um", "X", "to_soma", "from_soma")
@@ -75,7 +77,8 @@ def map_figure(portrait: Portrait, width_mm: float = 175, plane: Plane = "xy") -
         Which coordinates go across and up.
     """
     scale = scale_of(portrait.values, column_words(portrait.column))
-    foot = wrapped(_foot(portrait), width_mm - 2 * _EDGE, SMALL)
+    inner = width_mm - 2 * _EDGE
+    foot = wrapped(_foot(portrait, inner), inner, SMALL)
     layout = _layout(width_mm, _aspect(portrait, plane))
     with house_style():
         figure = blank_sheet(width_mm, layout.bottom + len(foot) * _LINE_MM + _EDGE)
@@ -104,7 +107,11 @@ def _one_column(inner: float, aspect: float) -> Layout:
     below = Box(_EDGE, cell.bottom, inner, _BELOW_CELL)
     key = Box(_EDGE, below.bottom + 2.0, inner, 8.0)
     courses = Box(_EDGE, key.bottom + _TITLE_MM, inner, 30.0)
-    frames = [box.inside(left=_LEFT) for box in courses.columns(2, 1.0)]
+    middle = (inner - _LEFT - _LEFT_SHARED) / 2.0  # the second has the first one's words at its scale
+    frames = [
+        Box(_EDGE + _LEFT, courses.top, middle, courses.height),
+        Box(courses.right - middle, courses.top, middle, courses.height),
+    ]
     trees = Box(_EDGE, courses.bottom + _BELOW + 1.5 * _TITLE_MM, inner, 62.0)
     boxes = [box for row in trees.rows(2, 2.0) for box in row.columns(2, _GAP)]
     return Layout(cell, below, key, frames, boxes, [], trees.bottom + 2.0)
@@ -112,7 +119,7 @@ def _one_column(inner: float, aspect: float) -> Layout:
 
 def _two_columns(inner: float, aspect: float) -> Layout:
     if aspect < 0.6:
-        cell = Box(_EDGE, _TOP, inner, float(np.clip(inner * aspect, 35.0, 62.0)))
+        cell = Box(_EDGE, _TOP, inner, float(np.clip(inner * aspect, 35.0, 55.0)))
         below = Box(_EDGE, cell.bottom, inner, _BELOW_CELL)
         key = Box(_EDGE, below.bottom + 2.0, inner, 4.0)
         courses = Box(_EDGE, key.bottom + _TITLE_MM, inner, 38.0)
@@ -122,7 +129,7 @@ def _two_columns(inner: float, aspect: float) -> Layout:
         height = float(np.clip(0.5 * inner * aspect, 80.0, 100.0))
         left, right = Box(_EDGE, _TOP, inner, height + _BELOW_CELL).columns(2, _GAP)
         cell, below = left.inside(bottom=_BELOW_CELL), left.inside(top=height)
-        key = Box(right.left + _LEFT, _TOP - _TITLE_MM, right.width - _LEFT, 5.0)
+        key = Box(right.left, _TOP - _TITLE_MM, right.width, 6.0)
         courses = right.inside(top=6.0, bottom=_BELOW, left=_LEFT)
         frames = courses.rows(2, _BELOW + _TITLE_MM)
         bottom = left.bottom
@@ -142,8 +149,11 @@ def _draw_panels(figure: Figure, layout: Layout, portrait: Portrait, scale: Scal
     if marks is not None:
         mark_sites(axes, layout.cell, marks.position[:, [across, up]], marks.rank)
     draw_key(figure, layout.key, portrait)
+    beside = layout.courses[1].left - layout.courses[0].right
     for box, measure in zip(layout.courses, _MEASURES[:2], strict=True):
         axes = draw_course(figure, box, portrait, measure)
+        if box is layout.courses[1] and 0.0 < beside < _LEFT:
+            axes.set_ylabel("")
         if marks is not None:
             places = np.stack((getattr(marks.distances, measure), marks.distances.to_soma), axis=1)
             mark_sites(axes, box, places, marks.rank)
@@ -151,9 +161,10 @@ def _draw_panels(figure: Figure, layout: Layout, portrait: Portrait, scale: Scal
         draw_tree(figure, box, portrait, measure, plane)
     for box, measure in zip(layout.flats, _MEASURES, strict=False):
         draw_flat(figure, box, portrait, measure)
+    named = zip(layout.courses, "bc", ("against path", "against X"), strict=True)
+    courses = zip(named, (_LEFT, min(_LEFT, beside) if beside > 0.0 else _LEFT), strict=True)
     titles = [
-        (layout.courses[0].inside(left=-_LEFT), "b", "against path"),
-        (layout.courses[1].inside(left=-_LEFT), "c", "against X"),
+        *((box.inside(left=-margin), letter, words) for (box, letter, words), margin in courses),
         (layout.trees[0], "d", "directions kept, lengths replaced (morphoelectrotonic transform)"),
         *((box, "e", "laid out flat, one row for each tip") for box in layout.flats[:1]),
     ]
@@ -173,7 +184,7 @@ def _draw_below_cell(figure: Figure, box: Box, axes: Axes, portrait: Portrait, s
     per_mm = (right - left) / box.width
     bar = Box(box.left, box.top + 3.0, 0.4 * box.width, box.height - 3.0)
     length = round_length(0.3 * box.width * per_mm)
-    strip = axes_at(figure, bar)
+    strip = axes_at(figure, bar, "bar cell")
     strip.set_axis_off()
     draw_length_bar(strip, per_mm, bar, f"{number_text(length)} µm", length)
     place = Box(box.left + 0.45 * box.width, box.top + 1.0, 0.53 * box.width, 9.0)
@@ -184,31 +195,42 @@ def _draw_head(figure: Figure, portrait: Portrait, width_mm: float) -> None:
     """Write the cell's name and its first numbers."""
     cell = portrait.cell
     case = int(np.flatnonzero(cell.electrotonus.hz == portrait.hz)[0])
+    tips = len(cell.branches.tips)
     to_soma, from_soma = (values[cell.farthest_tip] for values in portrait.distances[2:])
     facts = [
         f"R_in {_three(abs(cell.electrotonus.Z_in[0, case]))} MΩ",
-        f"{number_text(round(float(cell.cable.length.sum())))} µm of cable",
-        f"{len(cell.branches.tips)} tips",
+        f"{_three(cell.cable.length.sum())} µm of cable",
+        f"{tips} tip" if tips == 1 else f"{tips} tips",
         f"farthest tip: attenuation {_three(np.exp(to_soma))} toward, "
         f"{_three(np.exp(from_soma))} from the soma",
     ]
-    write_at(figure, _EDGE, _EDGE, _shortened(cell.rec.cell, width_mm), fontsize=TITLE, fontweight="bold")
+    write_at(
+        figure,
+        _EDGE,
+        _EDGE,
+        _shortened(cell.rec.cell, width_mm - 2 * _EDGE, TITLE, bold=True),
+        fontsize=TITLE,
+        fontweight="bold",
+    )
     for number, line in enumerate(wrapped(facts, width_mm - 2 * _EDGE, SMALL)[:2]):
         write_at(figure, _EDGE, _EDGE + 4.2 + number * _LINE_MM, line, fontsize=SMALL)
 
 
-def _shortened(name: str, width_mm: float) -> str:
+def _shortened(name: str, width_mm: float, points: float, bold: bool = False) -> str:
     """Return a name that fits across the page, its middle left out if need be."""
-    letters = int((width_mm - 2 * _EDGE) / 2.1)
-    return name if len(name) <= letters else f"{name[: letters // 2 - 1]}…{name[-(letters // 2 - 1) :]}"
+    kept, shown = len(name) // 2, name
+    while kept > 1 and text_width_mm(shown, points, bold) > width_mm:
+        kept -= 1
+        shown = f"{name[:kept]}…{name[-kept:]}"
+    return shown
 
 
 def _three(value: float) -> str:
     return number_text(float(f"{value:.3g}"))
 
 
-def _foot(portrait: Portrait) -> list[str]:
-    """Return what was assumed and where the cell comes from, in phrases."""
+def _foot(portrait: Portrait, width_mm: float) -> list[str]:
+    """Return what was assumed and where the cell comes from, in phrases that fit a width."""
     rec, assumed = portrait.cell.rec, portrait.cell.assumptions
     rule = portrait.cell.cable.traced.soma.rule
     membrane = assumed.membrane
@@ -224,8 +246,10 @@ def _foot(portrait: Portrait) -> list[str]:
         f"axon {assumed.axon}",
         f"soma: {rule}" if rule != "none" else "no soma: the root sample stands for it",
         "passive membrane, sealed ends",
+        "sites numbered by rank, 1 the most attenuated" if portrait.marks is not None else "",
         f"lines at least {THINNEST:g} points wide",
-        f"{rec.file.rsplit('/', 1)[-1]}, SHA-256 {rec.sha256[:12]}…, {portrait.cell.vetting.grade}",
+        _shortened(rec.file.rsplit("/", 1)[-1], width_mm, SMALL),
+        f"SHA-256 {rec.sha256[:12]}…, {portrait.cell.vetting.grade}",
         f"morphotone {version('morphotone')}, for research use",
     ]
     return [phrase for phrase in phrases if phrase]

@@ -19,6 +19,7 @@ from morphotone.showing.sheet import (
     SMALL,
     Box,
     axes_at,
+    even_ticks,
     factor_ticks,
     number_text,
     round_factor,
@@ -41,6 +42,7 @@ MEASURES = {
 BACK: dict[str, Any] = {"color": FAINT, "lw": 0.3}
 ENDLESS: dict[str, Any] = {"color": INK, "lw": 0.8, "linestyle": (0, (4.0, 2.0))}
 _MARGIN = 0.03  # of the drawn extent, left free on each side
+_SHORTEST_BAR = 1e-5  # µm, X, or log attenuation, which six digits do not tell from none
 _BAR_STRIP = 5.0  # mm below a tree for its scale bar
 
 
@@ -83,7 +85,7 @@ def draw_cell(figure: Figure, box: Box, portrait: Portrait, scale: Scale, plane:
     radius = (cable.r_start[1:] + cable.r_end[1:]) / 2.0
     points = np.concatenate((start, end, outline))
     extent = Extent(points, np.concatenate((radius, radius, around)), box)
-    axes = axes_at(figure, box)
+    axes = axes_at(figure, box, "cell")
     back_to_front = np.argsort(portrait.ends[1][1:, depth], kind="stable")
     lines = LineCollection(
         list(np.stack((start, end), axis=1)[back_to_front]),
@@ -162,14 +164,15 @@ def draw_tree(figure: Figure, box: Box, portrait: Portrait, measure: str, plane:
     across, up, _ = PLANES[plane]
     place = portrait.transformed(measure)[:, [across, up]]
     extent = Extent(place, 0.0, axes_box)
-    axes = axes_at(figure, axes_box)
+    axes = axes_at(figure, axes_box, f"tree {measure}")
     _add_runs(axes, portrait, [place[run.nodes] for run in portrait.runs])
     axes.plot(*place[0], marker="o", ms=2.5, mfc=INK, mec="none")
     extent.apply(axes)
-    strip = axes_at(figure, Box(box.left, box.bottom - _BAR_STRIP, box.width, _BAR_STRIP))
+    strip = axes_at(figure, Box(box.left, box.bottom - _BAR_STRIP, box.width, _BAR_STRIP), f"bar {measure}")
     strip.set_axis_off()
-    if extent.size.max() > 0:
-        length, words = _tree_bar(measure, 0.5 * box.width * extent.per_mm)
+    greatest = 0.5 * box.width * extent.per_mm
+    if extent.size.max() > 0 and greatest > _SHORTEST_BAR:
+        length, words = _tree_bar(measure, greatest)
         draw_length_bar(strip, extent.per_mm, Box(0, 0, box.width, _BAR_STRIP), words, length)
     return axes
 
@@ -187,7 +190,7 @@ def _tree_bar(measure: str, greatest: float) -> tuple[float, str]:
 
 def draw_flat(figure: Figure, box: Box, portrait: Portrait, measure: str) -> Axes:
     """Draw the tree laid out flat: distance from the soma in one measure across, tips side by side."""
-    axes = axes_at(figure, box)
+    axes = axes_at(figure, box, f"flat {measure}")
     distance = getattr(portrait.distances, measure)
     _add_runs(axes, portrait, list(_elbows(portrait, distance)))
     greatest = float(distance.max()) or 1.0
@@ -214,7 +217,7 @@ def _elbows(portrait: Portrait, distance: Real) -> Iterator[Real]:
 
 def draw_course(figure: Figure, box: Box, portrait: Portrait, measure: str) -> Axes:
     """Draw attenuation against a distance, every branch as a line, over that of the endless cable."""
-    axes = axes_at(figure, box)
+    axes = axes_at(figure, box, f"course {measure}")
     distances = portrait.distances
     across = getattr(distances, measure)
     back = LineCollection(
@@ -236,21 +239,16 @@ def draw_course(figure: Figure, box: Box, portrait: Portrait, measure: str) -> A
     axes.set_xlabel("path from the soma (µm)" if measure == "path_um" else MEASURES[measure])
     axes.set_ylabel("attenuation (log scale)")
     _set_scale(axes, "x", measure, farthest, box.width)
-    _set_scale(axes, "y", "to_soma", 1.05 * greatest, box.height)
+    _set_scale(axes, "y", "to_soma", greatest, box.height)
     return axes
 
 
 def _set_scale(axes: Axes, which: Literal["x", "y"], measure: str, greatest: float, length_mm: float) -> None:
     """Set ticks from 0 to the greatest: round numbers, or attenuations on their logarithms."""
-    most = max(2, int(length_mm / (8.0 if which == "x" else 5.0)))
     if measure in ("path_um", "X"):
-        step = round_length(greatest / 2.0)
-        ticks = np.arange(0.0, greatest * (1 + 1e-9), step)
-        while len(ticks) > most:
-            ticks = ticks[::2]
-        labels = [number_text(float(f"{tick:.6g}")) for tick in ticks]
+        ticks, labels = even_ticks(0.0, greatest, length_mm)
     else:
-        ticks, labels = factor_ticks(0.0, greatest, most)
+        ticks, labels = factor_ticks(0.0, greatest, max(2, int(length_mm / (8.0 if which == "x" else 5.0))))
     (axes.set_xticks if which == "x" else axes.set_yticks)(ticks, labels)
 
 

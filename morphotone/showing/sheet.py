@@ -16,6 +16,8 @@ from matplotlib import style
 from matplotlib.axes import Axes
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
+from matplotlib.font_manager import FontProperties
+from matplotlib.textpath import TextToPath
 from numpy.typing import NDArray
 
 from morphotone.showing.colours import INK
@@ -31,8 +33,10 @@ TITLE, TEXT, SMALL = 8.0, 6.5, 5.5  # points; journals ask for 5 to 8 (common pr
 # More lines than this make a vector file large and slow to open: they become an image, the words stay words.
 MOST_VECTOR_LINES = 4000
 
+_EQUAL = 1e-5  # a span of logarithms below which six digits do not tell attenuations apart
+_FONT = "DejaVu Sans"  # comes with matplotlib, so that every machine has it
 _SETTINGS = {
-    "font.family": ["DejaVu Sans"],  # comes with matplotlib, so that every machine has it
+    "font.family": [_FONT],
     "font.size": TEXT,
     "text.color": INK,
     "axes.labelcolor": INK,
@@ -105,9 +109,9 @@ def blank_sheet(width_mm: float, height_mm: float, dpi: float = DPI) -> Figure:
     return figure
 
 
-def axes_at(figure: Figure, box: Box) -> Axes:
-    """Return new axes that fill a box."""
-    return figure.add_axes(_share(figure, box))
+def axes_at(figure: Figure, box: Box, name: str) -> Axes:
+    """Return new axes that fill a box, under a name to find them by (`Axes.get_label`)."""
+    return figure.add_axes(_share(figure, box), label=name)
 
 
 def write_at(figure: Figure, left: float, top: float, text: str, **words: Any) -> None:
@@ -161,6 +165,24 @@ def round_factor(greatest: float) -> float:
     return 1.0 + round_length(float(np.expm1(greatest)))
 
 
+def even_ticks(least: float, greatest: float, length_mm: float) -> tuple[Real, list[str]]:
+    """Return where on an axis across the page to put ticks at round numbers, and the numbers to write there.
+
+    Parameters
+    ----------
+    least, greatest : float
+        Ends of the axis, the second above the first.
+    length_mm : float
+        Its length, which decides how many numbers find room.
+    """
+    step = round_length((greatest - least) / 2.0)
+    ticks = np.arange(np.ceil(least / step - 1e-9), np.floor(greatest / step + 1e-9) + 1) * step
+    labels = [number_text(float(f"{tick:.6g}")) for tick in ticks]
+    room = max(text_width_mm(label, SMALL) for label in labels) + 3.0
+    every = max(1, int(np.ceil(room * len(ticks) / length_mm)))
+    return ticks[::every], labels[::every]
+
+
 def factor_ticks(least: float, greatest: float, most: int = 6) -> tuple[Real, list[str]]:
     """Return where on an axis of log attenuation to put ticks, and the attenuations to write there.
 
@@ -176,18 +198,24 @@ def factor_ticks(least: float, greatest: float, most: int = 6) -> tuple[Real, li
     places : ndarray
         Natural logarithms.
     labels : list of str
-        The factors: 1, 2, 5, 10 and so on, or steps of one length where the axis spans less than a factor 3.
+        The factors: 1, 2, 5, 10 and so on; steps of one length where the axis spans less than a factor 3;
+        the least alone where all are equal to the digits a label has.
     """
-    if greatest - least < np.log(3.0):
+    if greatest - least < _EQUAL:
+        factors = [float(np.exp(least))]
+    elif greatest - least < np.log(3.0):
         factors = _even_factors(float(np.exp(least)), float(np.exp(greatest)), most)
     else:
         factors = _round_factors(least, greatest, most)
-    return np.log(factors), [number_text(factor) for factor in factors]
+    return np.log(factors), [_factor_text(factor) for factor in factors]
+
+
+def _factor_text(factor: float) -> str:
+    """Return an attenuation for an axis, where 10⁴ takes less room than 10,000."""
+    return number_text(factor) if factor < 1e4 else _power_text(factor)
 
 
 def _even_factors(low: float, high: float, most: int) -> list[float]:
-    if not high > low:
-        return [low]
     step = round_length((high - low) / 2.0)
     for wider in (1.0, 2.0, 2.5, 5.0, 10.0):
         first, last = np.ceil(low / (step * wider) - 1e-9), np.floor(high / (step * wider) + 1e-9)
@@ -211,22 +239,31 @@ def number_text(value: float) -> str:
     """Return a number as a scale shows it: thousands apart, or a power of ten where it is very large."""
     size = abs(value)
     if size and not 1e-4 <= size < 1e6:
-        power = int(np.floor(np.log10(size) + 1e-9))
-        lead = f"{value / 10.0**power:.3g}"
-        raised = str(power).translate(str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹"))
-        return f"10{raised}" if lead == "1" else f"{lead}·10{raised}"
+        return _power_text(value)
     text = f"{value:.6g}"
     return f"{value:,.0f}" if "." not in text and size >= 1e4 else text.replace("-", "−")
 
 
+def _power_text(value: float) -> str:
+    power = int(np.floor(np.log10(abs(value)) + 1e-9))
+    lead = f"{value / 10.0**power:.3g}".replace("-", "−")
+    raised = str(power).translate(str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹"))
+    return f"10{raised}" if lead == "1" else f"{lead}·10{raised}"
+
+
+def text_width_mm(text: str, points: float, bold: bool = False) -> float:
+    """Return how wide a line of text is in the house's font."""
+    font = FontProperties(family=_FONT, size=points, weight="bold" if bold else "normal")
+    width, _, _ = TextToPath().get_text_width_height_descent(text, font, ismath=False)
+    return float(width) / POINTS_PER_MM
+
+
 def wrapped(parts: Sequence[str], width_mm: float, points: float) -> list[str]:
-    """Return phrases put into lines that fit a width, by the mean width of this font's letters."""
-    # DejaVu Sans: a line of running text takes about 0.56 of the size per letter; 0.6 leaves room.
-    letters = int(width_mm * POINTS_PER_MM / (0.6 * points))
+    """Return phrases put together to lines that fit a width; none is cut in two."""
     lines = [""]
     for part in parts:
         joined = f"{lines[-1]} · {part}" if lines[-1] else part
-        if len(joined) <= letters or not lines[-1]:
+        if not lines[-1] or text_width_mm(joined, points) <= width_mm:
             lines[-1] = joined
         else:
             lines.append(part)
