@@ -33,7 +33,7 @@ TITLE, TEXT, SMALL = 8.0, 6.5, 5.5  # points; journals ask for 5 to 8 (common pr
 # More lines than this make a vector file large and slow to open: they become an image, the words stay words.
 MOST_VECTOR_LINES = 4000
 
-_EQUAL = 1e-5  # a span of logarithms below which six digits do not tell attenuations apart
+_EQUAL = 5e-5  # a span of logarithms below which six digits are too few for three ticks
 _FONT = "DejaVu Sans"  # comes with matplotlib, so that every machine has it
 _SETTINGS = {
     "font.family": [_FONT],
@@ -176,7 +176,9 @@ def even_ticks(least: float, greatest: float, length_mm: float) -> tuple[Real, l
         Its length, which decides how many numbers find room.
     """
     step = round_length((greatest - least) / 2.0)
-    ticks = np.arange(np.ceil(least / step - 1e-9), np.floor(greatest / step + 1e-9) + 1) * step
+    ticks = (
+        np.arange(np.ceil(least / step - 1e-9), np.floor(greatest / step + 1e-9) + 1) * step + 0.0
+    )  # no -0
     labels = [number_text(float(f"{tick:.6g}")) for tick in ticks]
     room = max(text_width_mm(label, SMALL) for label in labels) + 3.0
     every = max(1, int(np.ceil(room * len(ticks) / length_mm)))
@@ -216,13 +218,15 @@ def _factor_text(factor: float) -> str:
 
 
 def _even_factors(low: float, high: float, most: int) -> list[float]:
+    """Return factors in steps of one round length, counted from 1, where there is no attenuation."""
     step = round_length((high - low) / 2.0)
     for wider in (1.0, 2.0, 2.5, 5.0, 10.0):
-        first, last = np.ceil(low / (step * wider) - 1e-9), np.floor(high / (step * wider) + 1e-9)
+        first = np.ceil((low - 1.0) / (step * wider) - 1e-9)
+        last = np.floor((high - 1.0) / (step * wider) + 1e-9)
         if last - first < most:
             break
     decimals = int(max(0, 2 - np.floor(np.log10(step))))
-    return [round(float(i * step * wider), decimals) for i in np.arange(first, last + 1)]
+    return [round(float(1.0 + i * step * wider), decimals) for i in np.arange(first, last + 1)]
 
 
 def _round_factors(least: float, greatest: float, most: int) -> list[float]:
