@@ -231,7 +231,8 @@ def _even_factors(low: float, high: float, most: int) -> list[float]:
 
 def _round_factors(least: float, greatest: float, most: int) -> list[float]:
     powers = range(int(np.floor(least / np.log(10.0))) - 1, int(np.ceil(greatest / np.log(10.0))) + 1)
-    for steps, every in (((1.0, 2.0, 5.0), 1), *(((1.0,), every) for every in (1, 2, 5, 10, 20, 50, 100))):
+    decades = (1, 2, 5, 10, 20, 50, 100, 200)
+    for steps, every in [((1.0, 2.0, 5.0), 1), *(((1.0,), every) for every in decades)]:
         factors = [step * 10.0**power for power in powers if power % every == 0 for step in steps]
         factors = [each for each in factors if least - 1e-9 <= np.log(each) <= greatest + 1e-9]
         if len(factors) <= most:
