@@ -27,10 +27,11 @@ from morphotone.commands.drawing import (
     outcomes,
 )
 from morphotone.commands.marked import sites_on
-from morphotone.commands.options import add_assumption_options, assumptions_of
+from morphotone.commands.options import add_assumption_options, add_worker_options, assumptions_of
 from morphotone.errors import ReadingError
 from morphotone.night.folder import PATTERNS, Found, find_files, written_name
 from morphotone.night.ledger import Ledger
+from morphotone.night.limits import NO_LIMITS, Limits, usual_limits
 from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER
 from morphotone.night.pool import pool_of
 from morphotone.night.progress import Progress, progress_on
@@ -169,6 +170,7 @@ def draw_maps(
     farthest_um: float = FARTHEST_UM,
     patterns: Sequence[str] = PATTERNS,
     workers: int = 1,
+    limits: Limits = NO_LIMITS,
     strict: bool = False,
     progress: Progress | None = None,
 ) -> Maps:
@@ -195,6 +197,8 @@ def draw_maps(
         Which file names of a folder count.
     workers : int
         Number of processes; 0 for one per processor.
+    limits : Limits, optional
+        Time and memory beyond which a file is turned away; none unless given.
     strict : bool
         Stop at the first file turned away.
     progress : Progress, optional
@@ -230,6 +234,7 @@ def draw_maps(
             ledger=ledger,
             progress=progress,
             pool=pool_of(workers if workers > 0 else joblib.cpu_count()),
+            limits=limits,
             batch_bytes=1,  # one cell at a time: drawing it takes as long as a survey of many
             strict=strict,
         )
@@ -350,9 +355,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         default=list(PATTERNS),
         help="names of the files to take (default: %(default)s; upper and lower case alike)",
     )
-    parser.add_argument(
-        "--workers", metavar="N", type=int, default=0, help="processes (default: one per processor)"
-    )
+    add_worker_options(parser)
     parser.add_argument("--strict", action="store_true", help="stop at the first file turned away")
 
 
@@ -366,6 +369,7 @@ def run(args: argparse.Namespace) -> int:
         colour=args.colour,
         mesh=args.mesh,
     )
+    workers = args.workers if args.workers > 0 else joblib.cpu_count()
     made = draw_maps(
         args.path,
         args.into,
@@ -375,7 +379,8 @@ def run(args: argparse.Namespace) -> int:
         keep_unfit=args.keep_unfit,
         farthest_um=args.farthest_um,
         patterns=args.pattern,
-        workers=args.workers,
+        workers=workers,
+        limits=usual_limits(workers, args.minutes_per_cell, args.GB_per_cell),
         strict=args.strict,
         progress=progress_on(sys.stderr),
     )

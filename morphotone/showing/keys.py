@@ -14,7 +14,8 @@ from morphotone.showing.sheet import SMALL, Box, axes_at, even_ticks, factor_tic
 
 Real = NDArray[np.float64]
 
-_NUMBERED, _NUMBERED_SMALL = 12, 8  # sites with a number, in boxes from 50 mm on and below; others have a dot
+NUMBERED, _NUMBERED_SMALL = 12, 8  # sites with a number, in boxes from 50 mm on and below; others have a dot
+_FEW = 40  # sites; the dots of more are smaller
 _DISC = 1.45  # mm, radius of the disc that holds a number
 
 _SPECIMEN, _KEY_ROW = 7.0, 2.8  # mm: a line shown and the gap behind it, from row to row
@@ -131,7 +132,7 @@ def mark_sites(axes: Axes, box: Box, places: Real, ranks: NDArray[np.int64]) -> 
         *places.T,
         ls="none",
         marker="o",
-        ms=2.2,
+        ms=2.2 if len(places) <= _FEW else 1.4,
         mfc="white",
         mec=INK,
         mew=0.5,
@@ -143,7 +144,7 @@ def mark_sites(axes: Axes, box: Box, places: Real, ranks: NDArray[np.int64]) -> 
     per_mm = np.array([(right - left) / box.width, (top - bottom) / box.height])
     on_page = (places - [left, bottom]) / per_mm
     order = np.argsort(ranks, kind="stable")
-    shown = order[: _NUMBERED if box.width >= 50.0 else _NUMBERED_SMALL]
+    shown = order[: NUMBERED if box.width >= 50.0 else _NUMBERED_SMALL]
     for site, disc in zip(shown.tolist(), _free_places(on_page, shown, box), strict=True):
         spot = disc * per_mm + [left, bottom]
         axes.plot(*zip(places[site], spot, strict=True), color=INK, lw=0.3, zorder=4, clip_on=False)

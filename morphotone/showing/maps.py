@@ -11,7 +11,14 @@ from morphotone.cable.assumptions import Membrane
 from morphotone.questions.portrait import Portrait
 from morphotone.reading.reconstruction import domain_name
 from morphotone.showing.colours import Scale, scale_of
-from morphotone.showing.keys import column_words, draw_colour_bar, draw_key, is_logarithmic, mark_sites
+from morphotone.showing.keys import (
+    NUMBERED,
+    column_words,
+    draw_colour_bar,
+    draw_key,
+    is_logarithmic,
+    mark_sites,
+)
 from morphotone.showing.panels import (
     PLANES,
     THINNEST,
@@ -246,13 +253,22 @@ def _foot(portrait: Portrait, width_mm: float) -> list[str]:
         f"axon {assumed.axon}",
         f"soma: {rule}" if rule != "none" else "no soma: the root sample stands for it",
         "passive membrane, sealed ends",
-        "sites numbered by rank, 1 the most attenuated" if portrait.marks is not None else "",
+        _sites_in_words(portrait),
         f"lines at least {THINNEST:g} points wide",
         _shortened(rec.file.rsplit("/", 1)[-1], width_mm, SMALL),
         f"SHA-256 {rec.sha256[:12]}…, {portrait.cell.vetting.grade}",
         f"morphotone {version('morphotone')}, for research use",
     ]
     return [phrase for phrase in phrases if phrase]
+
+
+def _sites_in_words(portrait: Portrait) -> str:
+    """Return what the numbers beside sites mean."""
+    count = 0 if portrait.marks is None else len(portrait.marks.rank)
+    if not count:
+        return ""
+    which = "sites" if count <= NUMBERED else f"{count} sites, the first {NUMBERED}"
+    return f"{which} numbered by rank, 1 the most attenuated"
 
 
 def _own_constants(domain: str, own: Membrane, general: Membrane) -> str:
