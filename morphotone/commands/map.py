@@ -31,7 +31,7 @@ from morphotone.commands.options import add_assumption_options, add_worker_optio
 from morphotone.errors import ReadingError
 from morphotone.night.folder import PATTERNS, Found, find_files, written_name
 from morphotone.night.ledger import Ledger
-from morphotone.night.limits import NO_LIMITS, Limits, usual_limits
+from morphotone.night.limits import usual_limits
 from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER
 from morphotone.night.pool import pool_of
 from morphotone.night.progress import Progress, progress_on
@@ -170,7 +170,8 @@ def draw_maps(
     farthest_um: float = FARTHEST_UM,
     patterns: Sequence[str] = PATTERNS,
     workers: int = 1,
-    limits: Limits = NO_LIMITS,
+    minutes_per_cell: float | None = None,
+    GB_per_cell: float | None = None,
     strict: bool = False,
     progress: Progress | None = None,
 ) -> Maps:
@@ -197,8 +198,8 @@ def draw_maps(
         Which file names of a folder count.
     workers : int
         Number of processes; 0 for one per processor.
-    limits : Limits, optional
-        Time and memory beyond which a file is turned away; none unless given.
+    minutes_per_cell, GB_per_cell : float, optional
+        Time and memory after which a file is turned away; unless given, what suits the machine.
     strict : bool
         Stop at the first file turned away.
     progress : Progress, optional
@@ -222,6 +223,7 @@ def draw_maps(
     alone = Path(path).is_file()
     found = [_one_file(Path(path))] if alone else find_files(path, patterns, exclude=into)
     sites = sites_on(found, synapses, alone)
+    count = workers if workers > 0 else joblib.cpu_count()
     asked = {**_fingerprint(request, shown), "farthest_um": farthest_um, "sites_sha256": sites.sha256}
     with Ledger(into, asked) as ledger:
         before = ledger.known()
@@ -233,8 +235,8 @@ def draw_maps(
             partial(outcomes, work=work),
             ledger=ledger,
             progress=progress,
-            pool=pool_of(workers if workers > 0 else joblib.cpu_count()),
-            limits=limits,
+            pool=pool_of(count),
+            limits=usual_limits(count, minutes_per_cell, GB_per_cell),
             batch_bytes=1,  # one cell at a time: drawing it takes as long as a survey of many
             strict=strict,
         )
@@ -369,7 +371,6 @@ def run(args: argparse.Namespace) -> int:
         colour=args.colour,
         mesh=args.mesh,
     )
-    workers = args.workers if args.workers > 0 else joblib.cpu_count()
     made = draw_maps(
         args.path,
         args.into,
@@ -379,8 +380,9 @@ def run(args: argparse.Namespace) -> int:
         keep_unfit=args.keep_unfit,
         farthest_um=args.farthest_um,
         patterns=args.pattern,
-        workers=workers,
-        limits=usual_limits(workers, args.minutes_per_cell, args.GB_per_cell),
+        workers=args.workers,
+        minutes_per_cell=args.minutes_per_cell,
+        GB_per_cell=args.GB_per_cell,
         strict=args.strict,
         progress=progress_on(sys.stderr),
     )

@@ -40,7 +40,7 @@ def test_the_examples_of_help_work(beside_the_samples, capsys, name, codes):
 
 
 def test_every_command_has_its_example_tried():
-    assert set(COMMANDS) == {"vet", "survey", "map", "rank", "tabulate", "assumptions"}
+    assert set(COMMANDS) == {"vet", "survey", "map", "rank", "tabulate", "report", "assumptions"}
 
 
 def test_version(capsys):
