@@ -2,7 +2,7 @@
 
 import json
 import os
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from importlib.metadata import version
 from pathlib import Path
@@ -28,7 +28,12 @@ _COLUMNS = {
     "findings": ("file", "grade", "code", "severity"),
     "turned_away": ("file", "reason", "sentence"),
 }
-_KEYS = ("morphotone", "python", "packages", "counts", "assumptions", "folder", "warnings")
+_KEYS = {
+    **dict.fromkeys(("morphotone", "python", "folder", "assumptions", "warnings"), ()),
+    **dict.fromkeys(("delays", "time_constants", "transient_ms"), ()),
+    "packages": ("numpy", "scipy"),
+    "counts": ("found",),
+}
 
 
 @dataclass(frozen=True, eq=False)
@@ -90,10 +95,16 @@ def _record(folder: Path) -> dict[str, Any]:
         raise ResultsError(f"{path}: cannot be read ({error.strerror}); {way_out}") from error
     except ValueError as error:
         raise ResultsError(f"{path}: no JSON ({error}); {way_out}") from error
-    missing = [key for key in _KEYS if not isinstance(record, dict) or key not in record]
+    missing = _missing(record, _KEYS) or [
+        f"{key}.{inner}" for key, needed in _KEYS.items() for inner in _missing(record[key], needed)
+    ]
     if missing:
         raise ResultsError(f"{path}: is no survey's record, {missing[0]!r} is not in it; {way_out}")
     return dict(record)
+
+
+def _missing(found: object, keys: Iterable[str]) -> list[str]:
+    return [key for key in keys if not isinstance(found, dict) or key not in found]
 
 
 def _table(folder: Path, name: str, record: Mapping[str, Any]) -> pd.DataFrame:
@@ -125,7 +136,7 @@ def _doubts(folder: Path, record: Mapping[str, Any], tables: Mapping[str, pd.Dat
         doubts.append(
             f"{folder} was written by Morphotone {record['morphotone']}, this is {version('morphotone')}"
         )
-    found = record["counts"].get("found", 0)
+    found = record["counts"]["found"]
     rows = len(tables["cells"]) + len(tables["turned_away"])
     if rows != found:
         doubts.append(

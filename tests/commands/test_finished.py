@@ -20,7 +20,7 @@ def changed(results, **changes):
     """Write a record with some keys changed, or gone where they are None."""
     path = results / "run.json"
     record = json.loads(path.read_text(encoding="utf-8")) | changes
-    kept = {key: value for key, value in record.items() if value is not None}
+    kept = {key: value for key, value in record.items() if value is not None or key not in changes}
     path.write_text(json.dumps(kept), encoding="utf-8")
 
 
@@ -66,6 +66,13 @@ def test_a_record_that_is_none_is_refused(results, text, match):
 def test_a_ranking_is_no_survey(results):
     changed(results, folder=None)
     with pytest.raises(ResultsError, match="no survey's record, 'folder' is not in it"):
+        read_finished(results)
+
+
+@pytest.mark.parametrize("packages", [[], {"numpy": "2.1"}])
+def test_a_record_without_all_it_takes_is_refused(results, packages):
+    changed(results, packages=packages)
+    with pytest.raises(ResultsError, match=r"'packages\.(numpy|scipy)' is not in it"):
         read_finished(results)
 
 
