@@ -20,7 +20,10 @@ from morphotone.showing.page import NEEDED, NUMBERS, Morning, Picture, page
 NAME = "report"
 FILE = "report.html"  # in the results, unless --into says otherwise
 _MAPS = "maps"  # below the results, unless --maps says otherwise
-_TABLES = ("cells", "branches", "findings", "turned_away")
+_FILES = (
+    *("cells.csv", "branches.csv", "findings.csv", "turned_away.csv"),
+    *("assumptions.toml", "run.json", "log.txt"),
+)
 _PICTURES = ("figure", "thumbnail", "mesh", "table")
 
 _EPILOG = """\
@@ -142,8 +145,7 @@ def _group_of_each(found: Grouped, by: str) -> list[str]:
 
 
 def _tables(folder: Path, page_folder: Path) -> dict[str, str]:
-    paths = (folder / f"{name}.csv" for name in _TABLES)
-    return {path.name: _link(path, page_folder) for path in paths if path.is_file()}
+    return {name: _link(folder / name, page_folder) for name in _FILES if (folder / name).is_file()}
 
 
 def _pictures(

@@ -9,6 +9,7 @@ import base64
 import hashlib
 import json
 import re
+from collections import Counter
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from datetime import datetime
@@ -47,6 +48,7 @@ _SEVERITIES = ("unfit", "doubtful", "note")
 _SHOWN = 25  # links, or cells to look at, before the rest is counted
 _FURTHER = re.compile(r"(attenuation_to_soma_farthest_.+Hz|tau0_ms|delay_total_farthest_ms)")
 _DIGITS = 4
+_SLICE = 250  # rows shown until more are asked for: browsers lay out thousands slowly
 
 
 @dataclass(frozen=True)
@@ -82,7 +84,7 @@ class Morning:
     pictures : mapping of str to Picture
         By file.
     tables : mapping of str to str
-        Links to the tables beside the page, by name.
+        Links to the survey's files, by name.
     made_by : str
         Version of the program.
     """
@@ -124,9 +126,10 @@ def page(morning: Morning) -> str:
         width=WIDTH,
         far=FAR,
         shown=_SHOWN,
+        slice=_SLICE,
         grades=_grades(morning),
         run=_run(morning),
-        sittings=_flat(morning.record.get("sittings")),
+        sittings=_sittings(morning.record),
         stages=_stages(morning.record),
         looks=looks,
         alone=[(rows_of[one.cell], one.cell) for one in morning.missing if one.line is None],
@@ -177,6 +180,7 @@ def _run(morning: Morning) -> list[tuple[str, str]]:
         "Samples": f"{counts.get('samples', 0):,}".replace(",", " "),
         "Frequencies": ", ".join(f"{hz:g} Hz" for hz in (0.0, *morning.assumptions.hz)),
         "Files of grade unfit": "analysed all the same" if record.get("keep_unfit") else "turned away",
+        "Workers": str(record.get("workers", "")),
         "Machine": ", ".join(map(str, record.get("machine", {}).values())),
         "Versions": ", ".join(f"{name} {number}" for name, number in versions.items()),
         "Command": " ".join(str(word) for word in record.get("command", ())),
@@ -205,29 +209,33 @@ def _parsed(text: object) -> datetime | None:
         return None
 
 
-def _flat(entries: object) -> list[dict[str, str]]:
-    """Return entries of the record, such as its sittings, as words by key; nothing for another shape."""
-    if not isinstance(entries, list):
-        return []
-    return [
-        {str(key).replace("_", " "): _word(value) for key, value in entry.items()}
-        for entry in entries
-        if isinstance(entry, dict)
-    ]
+def _sittings(record: Mapping[str, Any]) -> list[dict[str, str]]:
+    """Return the sittings of the run, as words by key; empty in older records."""
+    return [{_plain(key): _word(value) for key, value in each.items()} for each in _entries(record)]
+
+
+def _entries(record: Mapping[str, Any]) -> list[dict[str, Any]]:
+    return [sitting for sitting in record.get("sittings") or [] if isinstance(sitting, dict)]
 
 
 def _word(value: object) -> str:
     if isinstance(value, dict):
-        return ", ".join(f"{key} {_word(one)}" for key, one in value.items())
+        return ", ".join(f"{_plain(key)} {_word(one)}" for key, one in value.items()) or "none"
     if isinstance(value, float):
         return rounded(value, 3)
-    return _moment(value) if _parsed(value) else str(value)
+    return _moment(value) if isinstance(value, str) and _parsed(value) else str(value)
+
+
+def _plain(key: object) -> str:
+    return str(key).replace("_", " ")
 
 
 def _stages(record: Mapping[str, Any]) -> list[tuple[str, str]]:
-    """Return seconds by stage of the work, where the record has them."""
-    stages = record.get("stage_seconds")
-    return [(str(k), _word(v)) for k, v in stages.items()] if isinstance(stages, dict) else []
+    """Return the seconds of all workers by stage of the work, over all sittings; empty in older records."""
+    total: Counter[str] = Counter()
+    for sitting in _entries(record):
+        total.update(sitting.get("seconds_by_stage") or {})
+    return [(stage, rounded(seconds, 3)) for stage, seconds in total.items()]
 
 
 def _spreads(morning: Morning, columns: Sequence[str]) -> list[Spread]:

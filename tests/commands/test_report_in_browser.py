@@ -15,8 +15,9 @@ from selenium.webdriver.support.select import Select
 from selenium.webdriver.support.wait import WebDriverWait
 
 import morphotone
+from morphotone.showing.page import page as page_of
 from tests.commands.folders import fill
-from tests.showing.mornings import cells_of, findings_of, record_of
+from tests.showing.mornings import cells_of, findings_of, morning_of, record_of
 
 CHROMIUM, DRIVER = shutil.which("chromium"), shutil.which("chromedriver")
 pytestmark = [
@@ -301,6 +302,35 @@ def test_the_page_itself_never_scrolls_sideways(opened, width):
     assert opened.execute_script("return innerWidth") == width
     wide = opened.execute_script("return document.documentElement.scrollWidth")
     assert wide <= opened.execute_script("return document.documentElement.clientWidth")
+
+
+def test_of_many_cells_the_first_are_shown_until_more_are_asked_for(driver, tmp_path):
+    path = tmp_path / "many.html"
+    path.write_text(page_of(morning_of(cells_of(600))), encoding="utf-8")
+    driver.get(path.as_uri())
+    names = [f"cell_{number:04}" for number in range(600)]
+    assert shown(driver) == names[:250]
+    assert driver.find_element(By.ID, "count").text == "600 of 600 cells, the first 250 shown"
+    click(driver, head(driver, "Cell"))
+    click(driver, head(driver, "Cell"))
+    assert shown(driver) == names[:-251:-1]
+    driver.execute_script("location.hash = 'cell-3'")
+    WebDriverWait(driver, 5).until(lambda driver: driver.find_elements(By.ID, "more-3"))
+    assert len(shown(driver)) == 600
+    driver.find_element(By.ID, "text").send_keys("cell_00")
+    assert shown(driver) == names[99::-1]
+    click(driver, driver.find_element(By.ID, "all"))
+    click(driver, driver.find_element(By.ID, "rest"))
+    assert len(shown(driver)) == 600
+    assert not driver.find_element(By.ID, "rest").is_displayed()
+    click(driver, driver.find_element(By.ID, "all"))
+    driver.execute_script(
+        "addEventListener('beforeprint', () => { window.printed = "
+        "document.querySelectorAll('#table tr:not([hidden])').length })"
+    )
+    driver.execute_cdp_cmd("Page.printToPDF", {})
+    assert driver.execute_script("return window.printed") == 601
+    assert len(shown(driver)) == 250
 
 
 def test_on_paper_it_is_light_whole_and_without_controls(opened):

@@ -223,11 +223,12 @@ def test_what_ran_is_told_with_and_without_what_a_record_may_lack():
     assert "Took 9 h 30 min 10 s" in words
     bare = {key: value for key, value in record_of().items() if key not in ("started", "command", "machine")}
     assert parsed(replace(study(), record=bare)).faults == []
-    sittings = [{"started": "2026-03-01T20:00:00+00:00", "files": 7}, {"files": 5}]
-    longer = record_of(sittings=sittings, stage_seconds={"reading": 1.25})
-    words = parsed(replace(study(), record=longer)).words
-    assert "files: 7 files: 5" in words
-    assert "reading 1.25" in words
+    first = {"started": "2026-03-01T20:00:00+00:00", "seconds_by_stage": {"read": 1.25}}
+    second = {"entered": {"turned_away": 5}, "seconds_by_stage": {"read": 0.5, "vet": 2.0}}
+    words = parsed(replace(study(), record=record_of(sittings=[first, second]))).words
+    assert "Seconds by stage, all workers read 1.75, vet 2" in words
+    assert "started: Sunday 1 March 2026, 20:00:00 UTC; seconds by stage: read 1.25" in words
+    assert "entered: turned away 5; seconds by stage: read 0.5, vet 2" in words
 
 
 def test_two_thousand_cells_stay_small_and_are_all_there():
@@ -242,5 +243,6 @@ def test_two_thousand_cells_stay_small_and_are_all_there():
     groups = [f"group {number % 20}" for number in range(count)]
     html = page(morning_of(cells, findings, AWAY, pictures=pictures, by="class", groups=groups))
     assert html.count('<tr id="cell-') == count
+    assert html.count(" hidden><th scope=") == count - 250
     assert len(html.encode()) < 15e6 / 3
     assert html.count("<circle") == 0  # bars, not thousands of dots

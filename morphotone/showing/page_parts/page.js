@@ -19,14 +19,6 @@
   dark.addEventListener("change", tell);
   tell();
 
-  // Paper has no folds: everything is open while it prints.
-  let folded = [];
-  addEventListener("beforeprint", () => {
-    folded = [...document.querySelectorAll("details:not([open])")];
-    folded.forEach(each => { each.open = true; });
-  });
-  addEventListener("afterprint", () => folded.forEach(each => { each.open = false; }));
-
   const table = byId("table");
   const rows = table ? [...table.tBodies[0].rows] : [];
   const details = table ? JSON.parse(byId("details").textContent) : { cells: [], kinds: {} };
@@ -86,7 +78,6 @@
     if (wanted) button.setAttribute("aria-controls", row.nextElementSibling.id);
     else button.removeAttribute("aria-controls");
   };
-  const closeAll = () => rows.forEach(row => open(row, false));
 
   // Sorting: what is no number goes last, either way round; equal rows keep the order they had.
   let order = rows;
@@ -100,13 +91,13 @@
     const words = new Intl.Collator("en", { numeric: true });
     const compare = isNumber ? (a, b) => (a < b ? -1 : a > b ? 1 : 0) : words.compare;
     const isEmpty = one => (isNumber ? Number.isNaN(one) : !one);
-    closeAll();
     order = order.map(row => [value(row), row]).sort(([a], [b]) =>
       isEmpty(a) || isEmpty(b) ? isEmpty(a) - isEmpty(b) : down ? compare(b, a) : compare(a, b)
     ).map(([, row]) => row);
     for (const other of table.tHead.rows[0].cells) other.removeAttribute("aria-sort");
     head.setAttribute("aria-sort", down ? "descending" : "ascending");
-    table.tBodies[0].append(...order);
+    table.tBodies[0].append(...order.flatMap(row => (isOpen(row) ? [row, row.nextElementSibling] : [row])));
+    show();
   };
 
   // Choosing.
@@ -118,14 +109,35 @@
     (!wanted.text || texts[numberOf(row)].includes(wanted.text.trim().toLowerCase())) &&
     ["grade", "group"].every(name => !wanted[name] || row.cells[column(name)].textContent === wanted[name]) &&
     (!wanted.code || codes[numberOf(row)].includes(wanted.code));
-  const choose = () => {
+  const slice = Number(table?.dataset.slice);
+  let most = slice;
+  const show = () => {
     const wanted = Object.fromEntries(fields.map(each => [each.id, each.value]));
-    closeAll();
-    rows.forEach(row => { row.hidden = !fits(row, wanted); });
-    const left = rows.filter(row => !row.hidden).length;
-    byId("count").value = `${left} of ${rows.length} ${rows.length === 1 ? "cell" : "cells"}`;
+    let left = 0;
+    for (const row of order) {
+      row.hidden = !fits(row, wanted) || ++left > most;
+      if (row.hidden) open(row, false);
+    }
+    const cells = rows.length === 1 ? "cell" : "cells";
+    byId("count").value = `${left} of ${rows.length} ${cells}${left > most ? `, the first ${most} shown` : ""}`;
+    byId("rest").hidden = left <= most;
   };
+  const choose = () => { most = slice; show(); };
+  const showAll = () => { most = Infinity; show(); };
   const everything = () => { fields.forEach(each => { each.value = ""; }); choose(); };
+
+  // Paper has no folds: everything is open and shown while it prints.
+  let before = [[], slice];
+  addEventListener("beforeprint", () => {
+    before = [[...document.querySelectorAll("details:not([open])")], most];
+    before[0].forEach(each => { each.open = true; });
+    if (table) showAll();
+  });
+  addEventListener("afterprint", () => {
+    before[0].forEach(each => { each.open = false; });
+    most = before[1];
+    if (table) show();
+  });
 
   // Links to rows and to folded places.
   const visit = () => {
@@ -135,6 +147,7 @@
     if (fold) fold.open = true;
     if (rows.includes(target)) {
       if (target.hidden) everything();
+      if (target.hidden) showAll();
       open(target, true);
       target.cells[0].firstElementChild.focus({ preventScroll: true });
     }
@@ -151,6 +164,7 @@
     });
     fields.forEach(each => each.addEventListener(each.tagName === "SELECT" ? "change" : "input", choose));
     byId("all").addEventListener("click", everything);
+    byId("rest").addEventListener("click", showAll);
     document.querySelectorAll(".pick").forEach(button => button.addEventListener("click", () => {
       fields.forEach(each => { each.value = each.id === "code" ? button.dataset.code : ""; });
       choose();
