@@ -27,7 +27,13 @@ from morphotone.commands.drawing import (
     outcomes,
 )
 from morphotone.commands.marked import sites_on
-from morphotone.commands.options import add_assumption_options, add_worker_options, assumptions_of
+from morphotone.commands.options import (
+    add_assumption_options,
+    add_time_options,
+    add_worker_options,
+    assumptions_of,
+    current_of,
+)
 from morphotone.errors import ReadingError
 from morphotone.night.folder import PATTERNS, Found, find_files, written_name
 from morphotone.night.ledger import Ledger
@@ -42,6 +48,7 @@ from morphotone.night.runner import run as run_night
 from morphotone.questions.placing import FARTHEST_UM
 from morphotone.questions.portrait import COLOUR
 from morphotone.questions.survey import SPECIMEN, Answer, Request
+from morphotone.questions.time_axis import TimeRequest
 from morphotone.reading.swc import read_bytes
 from morphotone.showing.map_files import MapRequest
 from morphotone.showing.maps import WIDTHS_MM, map_figure
@@ -167,6 +174,8 @@ def draw_maps(
     synapses: str | os.PathLike[str] | None = None,
     shown: MapRequest | None = None,
     keep_unfit: bool = False,
+    delays: bool = False,
+    transient_ms: tuple[float, float] | None = None,
     farthest_um: float = FARTHEST_UM,
     patterns: Sequence[str] = PATTERNS,
     workers: int = 1,
@@ -192,6 +201,10 @@ def draw_maps(
         Formats, width, plane, frequency, colour and mesh.
     keep_unfit : bool
         Draw files of grade unfit too.
+    delays : bool
+        Give delays by sample too, which may colour then.
+    transient_ms : (float, float), optional
+        Rise and decay of a synaptic current, ms, whose responses to give too, from every sample.
     farthest_um : float
         Sites in space farther than this from the cable are turned away, µm.
     patterns : sequence of str
@@ -218,7 +231,8 @@ def draw_maps(
     """
     started = datetime.now(UTC)
     into, shown = Path(into), shown or MapRequest()
-    request = Request(_with_hz(assumptions or Assumptions(), shown.hz), keep_unfit)
+    time = TimeRequest(delays, current=current_of(transient_ms))
+    request = Request(_with_hz(assumptions or Assumptions(), shown.hz), keep_unfit, samples=True, time=time)
     _check(request, shown)
     alone = Path(path).is_file()
     found = [_one_file(Path(path))] if alone else find_files(path, patterns, exclude=into)
@@ -283,6 +297,7 @@ def _fingerprint(request: Request, shown: MapRequest) -> dict[str, Any]:
         "morphotone": version("morphotone"),
         "matplotlib": version("matplotlib"),
         "keep_unfit": request.keep_unfit,
+        **request.time.to_dict(),
         **shown.to_dict(),
         "assumptions": request.assumptions.to_dict(),
     }
@@ -320,6 +335,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         nargs="+",
         help="frequencies besides 0 Hz for the table, in Hz; the figure shows the first (0 Hz unless given)",
     )
+    add_time_options(parser)
     parser.add_argument(
         "--colour",
         metavar="COLUMN",
@@ -378,6 +394,8 @@ def run(args: argparse.Namespace) -> int:
         synapses=args.synapses,
         shown=shown,
         keep_unfit=args.keep_unfit,
+        delays=args.delays,
+        transient_ms=args.transient,
         farthest_um=args.farthest_um,
         patterns=args.pattern,
         workers=args.workers,

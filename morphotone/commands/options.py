@@ -1,13 +1,16 @@
 """Options that several commands have, and what they come to."""
 
 import argparse
+from collections.abc import Sequence
 from dataclasses import replace
 from math import inf
 from pathlib import Path
 
 from morphotone.cable.assumptions import Assumptions
+from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.commands.assumptions import load_assumptions, print_warnings
 from morphotone.night.limits import USUAL_MINUTES
+from morphotone.questions.time_axis import TimeRequest
 
 
 def add_assumption_options(parser: argparse.ArgumentParser) -> None:
@@ -63,6 +66,31 @@ def add_worker_options(parser: argparse.ArgumentParser) -> None:
         help="memory beyond which a file is turned away as too_large (default: the free memory shared out "
         "among the workers)",
     )
+
+
+def add_time_options(parser: argparse.ArgumentParser) -> None:
+    """Add --delays and --transient, which have columns by sample."""
+    parser.add_argument(
+        "--delays", action="store_true", help="give delays of the voltage's centroid too, in ms"
+    )
+    parser.add_argument(
+        "--transient",
+        metavar=("RISE", "DECAY"),
+        type=float,
+        nargs=2,
+        help="give the responses to a brief synaptic current too: its rise and decay times in ms, equal for "
+        "an alpha function; in a table by sample from every sample, else from the soma and the farthest tip",
+    )
+
+
+def time_of(args: argparse.Namespace) -> TimeRequest:
+    """Return what of the time axis the options ask for."""
+    return TimeRequest(args.delays, getattr(args, "time_constants", 0), current_of(args.transient))
+
+
+def current_of(transient_ms: Sequence[float] | None) -> SynapticCurrent | None:
+    """Return the synaptic current with this rise and decay, ms, if they are given."""
+    return None if transient_ms is None else SynapticCurrent(*transient_ms)
 
 
 def _positive(text: str) -> float:

@@ -18,9 +18,15 @@ import joblib
 import pandas as pd
 
 from morphotone.cable.assumptions import Assumptions
-from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.commands.contents import content_of, is_known
-from morphotone.commands.options import add_assumption_options, add_worker_options, assumptions_of
+from morphotone.commands.options import (
+    add_assumption_options,
+    add_time_options,
+    add_worker_options,
+    assumptions_of,
+    current_of,
+    time_of,
+)
 from morphotone.commands.tables_now import tables_if_asked, tables_now, write_tables
 from morphotone.night.folder import PATTERNS, find_files
 from morphotone.night.ledger import Ledger
@@ -143,7 +149,7 @@ def survey(
     ResultsError
         The results folder belongs to another run or cannot be written to.
     """
-    time = TimeRequest(delays, time_constants, _current(transient_ms))
+    time = TimeRequest(delays, time_constants, current_of(transient_ms))
     request = Request(assumptions or Assumptions(), keep_unfit, samples, time)
     with ExitStack() as stack:
         target = Path(into if into is not None else stack.enter_context(TemporaryDirectory()))
@@ -302,23 +308,13 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         help="frequencies besides 0 Hz, in Hz; overrides the assumptions file",
     )
     parser.add_argument("--samples", action="store_true", help="write one CSV per cell with a row per sample")
-    parser.add_argument(
-        "--delays", action="store_true", help="give delays of the voltage's centroid too, in ms"
-    )
+    add_time_options(parser)
     parser.add_argument(
         "--time-constants",
         metavar="K",
         type=int,
         default=0,
         help="give the cell's own K slowest time constants too, in ms, 1 to 20",
-    )
-    parser.add_argument(
-        "--transient",
-        metavar=("RISE", "DECAY"),
-        type=float,
-        nargs=2,
-        help="give the responses to a brief synaptic current too: its rise and decay times in ms, equal for "
-        "an alpha function; with --samples from every sample, else from the soma and the farthest tip",
     )
     parser.add_argument("--keep-unfit", action="store_true", help="analyse files of grade unfit too, flagged")
     parser.add_argument(
@@ -338,17 +334,9 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     )
 
 
-def _current(transient_ms: Sequence[float] | None) -> SynapticCurrent | None:
-    return None if transient_ms is None else SynapticCurrent(*transient_ms)
-
-
-def _time_of(args: argparse.Namespace) -> TimeRequest:
-    return TimeRequest(args.delays, args.time_constants, _current(args.transient))
-
-
 def run(args: argparse.Namespace) -> int:
     """Run the survey, say how it went, and return the exit code."""
-    request = Request(assumptions_of(args), args.keep_unfit, args.samples, _time_of(args))
+    request = Request(assumptions_of(args), args.keep_unfit, args.samples, time_of(args))
     if args.tables_now:
         tables_now(args.folder, args.into, request, _fingerprint(request), args.pattern)
         print(f"tables of what is finished by now: {args.into}")

@@ -152,6 +152,14 @@ def test_a_column_that_cannot_colour_is_refused_before_any_work(small, maps, cap
     assert not maps.exists()
 
 
+def test_what_is_asked_of_the_time_axis_may_colour(small, maps):
+    options = ["--delays", "--transient", "0.3", "2", "--colour", "delay_total_ms", "--hz", "100"]
+    assert mapped(small / "b.swc", maps, *options) == 0
+    (_, *table) = rows(maps / "samples/b.swc.csv")
+    assert {"delay_total_ms", "peak_soma_mV_per_pA", "attenuation_to_soma_100Hz"} <= table[0].keys()
+    assert all(float(row["delay_total_ms"]) > 0 for row in table)
+
+
 @pytest.mark.parametrize("workers", ["1", pytest.param("2", marks=pytest.mark.slow)])
 def test_every_site_is_accounted_for(small, maps, tmp_path, capsys, workers):
     sites = tmp_path / "sites.csv"
