@@ -65,16 +65,21 @@ def main(argv: Sequence[str] | None = None) -> int:
         return WRONG_USAGE
     try:
         with _interruptions():
-            return int(import_module(f"morphotone.commands.{chosen}").run(args))
-    except KeyboardInterrupt:
-        goes_on = "; the same command goes on from here" if chosen in _RESUMED else ""
-        print(f"interrupted{goes_on}", file=sys.stderr)
-        return INTERRUPTED
+            return _called(chosen, args)
     except MorphotoneError as error:
         if args.debug:
             traceback.print_exc()
         print(f"morphotone {chosen}: {error}", file=sys.stderr)
         return TURNED_AWAY if isinstance(error, ReadingError | TurnedAwayError) else WRONG_USAGE
+
+
+def _called(command: str, args: argparse.Namespace) -> int:
+    try:
+        return int(import_module(f"morphotone.commands.{command}").run(args))
+    except KeyboardInterrupt:
+        goes_on = "; the same command goes on from here" if command in _RESUMED else ""
+        print(f"interrupted{goes_on}", file=sys.stderr)
+        return INTERRUPTED
 
 
 @contextmanager
