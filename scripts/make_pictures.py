@@ -1,15 +1,19 @@
-"""Draws the pictures that README shows, from the sample study, into sample_morphologies/pictures.
+"""Draws the pictures that README shows, and writes its tables, into sample_morphologies/pictures.
 
     python scripts/make_pictures.py [--into FOLDER]
 
-They are small: enough to be read on a screen. The same versions of the libraries give the same bytes.
+All are of the sample study. Pictures are small: enough to be read on a screen. The same versions of the
+libraries give the same bytes.
 """
 
 from __future__ import annotations
 
 import argparse
 from collections.abc import Callable
+from dataclasses import replace
+from functools import cache
 from pathlib import Path
+from tempfile import TemporaryDirectory
 
 import morphotone
 from morphotone.showing.sheet import figure_bytes
@@ -26,7 +30,20 @@ def map_of_a_cell() -> bytes:
     return figure_bytes(figure, "png", _DPI)
 
 
-PICTURES: dict[str, Callable[[], bytes]] = {"map_spar_01.png": map_of_a_cell}
+@cache
+def tables_by_class() -> morphotone.Tabulated:
+    """Return the study's classes summarised and compared, as `morphotone tabulate` does."""
+    assumptions = morphotone.Assumptions.from_toml((STUDY / "assumptions.toml").read_text(encoding="utf-8"))
+    with TemporaryDirectory() as results:
+        morphotone.survey(STUDY, results, assumptions=replace(assumptions, hz=(100.0,)))
+        return morphotone.tabulate(results, STUDY / "cells.csv", "class")
+
+
+PICTURES: dict[str, Callable[[], bytes]] = {
+    "map_spar_01.png": map_of_a_cell,
+    "tables_by_class.md": lambda: tables_by_class().tables_markdown.encode(),
+    "methods_by_class.md": lambda: tables_by_class().methods.encode(),
+}
 
 
 def main() -> None:

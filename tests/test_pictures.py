@@ -1,4 +1,4 @@
-"""The pictures in README: each is there, small, and what scripts/make_pictures.py draws now."""
+"""README's pictures and tables: each is there, small, and what scripts/make_pictures.py makes now."""
 
 import io
 import re
@@ -16,7 +16,7 @@ README = (CHECKOUT / "README.md").read_text(encoding="utf-8")
 
 
 def test_readme_shows_what_is_drawn_and_nothing_else():
-    shown = re.findall(r"!\[[^]]+\]\(sample_morphologies/pictures/([^)]+)\)", README)
+    shown = re.findall(r"\[[^]]+\]\(sample_morphologies/pictures/([^)]+)\)", README)
     assert set(shown) == set(PICTURES) == {path.name for path in FOLDER.iterdir()}
     assert sum(path.stat().st_size for path in FOLDER.iterdir()) < 1_000_000
 
@@ -28,6 +28,30 @@ def test_a_picture_is_up_to_date(name):
     kept, drawn = imread(FOLDER / name), imread(io.BytesIO(PICTURES[name]()))
     assert kept.shape == drawn.shape
     assert np.abs(blocks(kept) - blocks(drawn)).max() < 0.1
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize(
+    ("name", "end"), [("tables_by_class.md", "**Table 2.**"), ("methods_by_class.md", "**Soft")]
+)
+def test_a_text_is_up_to_date(name, end):
+    """Up to where versions of the libraries come in: bootstrap intervals, and their own numbers."""
+    kept, written = (
+        text.decode().partition(end) for text in ((FOLDER / name).read_bytes(), PICTURES[name]())
+    )
+    assert kept[0] == written[0]
+    assert kept[1] == written[1] == end
+
+
+def test_readme_quotes_the_tables_and_the_methods_as_they_are():
+    section = README.partition("## Groups for a paper")[2].partition("\n## ")[0]
+    table = (FOLDER / "tables_by_class.md").read_text(encoding="utf-8")
+    rows = [line for line in section.splitlines() if line.startswith("| ")]
+    assert len(rows) == 5
+    assert [row for row in rows if row not in table.splitlines()] == []
+    methods = (FOLDER / "methods_by_class.md").read_text(encoding="utf-8")
+    quoted = " ".join(line.removeprefix("> ") for line in section.splitlines() if line.startswith("> "))
+    assert [part for part in quoted.split(" … ") if part not in methods] == []
 
 
 def blocks(image):
