@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.cutting import cut
-from morphotone.cable.frustum import Pi, Values, electrotonic_lengths, pi_of_frusta
+from morphotone.cable.frustum import Values, electrotonic_lengths, pi_of_frusta
 from morphotone.cable.solved import Solved
 from morphotone.cable.sweeps import path_sums, schedule, sweep
 from morphotone.cable.tree import Cable
@@ -80,6 +80,7 @@ class Forest:
         self.r_start, self.r_end, self.length, self.L = (
             values.take(order, axis=0) for values in (frusta.r_start, frusta.r_end, frusta.length, frusta.L)
         )
+        self.length[len(order) - self.plan.roots :] = 1.0  # no frustum there; any length will do
         self.L_by_node = frusta.L_of_whole
         self.places = self.plan.place[frusta.ends]  # by node, one cell after the other
         self.first = np.cumsum([0, *(len(cables[0].parent) for cables in cells)])
@@ -112,7 +113,9 @@ class Forest:
         """Return impedances and attenuations, in real arithmetic if every s is real."""
         R_i, g = self.constants(columns)
         first_root = len(self.kind) - self.plan.roots
-        pieces = _frusta_only(first_root, self.geometry(columns), R_i, g)
+        pieces = pi_of_frusta(*self.geometry(columns), R_i, g)
+        for part, value in zip(pieces, (1.0, 0.0, 0.0), strict=True):
+            part[first_root:] = value  # no frustum there
         looks = sweep(self.plan, pieces, self.load(columns, g.dtype))
         return Solved(self.plan, self.at_root[self.cell], pieces, looks)
 
@@ -201,14 +204,3 @@ def _lengths(kind: Index, r_start: Real, r_end: Real, length: Real, many: Sequen
         for values in list(zip(*(membrane_of(kind, one) for one in many), strict=True))[:2]
     )
     return electrotonic_lengths(r_start, r_end, length, R_i, leak)
-
-
-def _frusta_only(first_root: int, geometry: tuple[Real, Real, Real], R_i: Values, g: Values) -> Pi:
-    """Return the πs of all frusta, and at the roots, where there is none, an axial admittance of 1."""
-    rows = slice(0, first_root)
-    constants = [values if len(values) == 1 else values[rows] for values in (R_i, g)]
-    frusta = pi_of_frusta(*(part[rows] for part in geometry), *constants)
-    padding = np.zeros((len(geometry[0]) - first_root, frusta.axial.shape[1]), frusta.axial.dtype)
-    return Pi(
-        *(np.concatenate((part, padding + fill)) for part, fill in zip(frusta, (1.0, 0.0, 0.0), strict=True))
-    )
