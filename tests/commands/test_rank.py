@@ -70,6 +70,17 @@ def test_sites_are_ranked_and_written(tmp_path, cells, capsys):
     assert rows(into / "turned_away_sites.csv") == []
 
 
+def test_no_label_or_header_is_run_by_a_spreadsheet(tmp_path, cells):
+    lines = [f"{HEADER},=note", "b,=1+1,5,,,,,,,-x,@y", "b,-3,4,,,,,,,+1,h", "nobody,@z,3,,,,,,,,"]
+    into = tmp_path / "ranked"
+    path = sites_file(tmp_path, lines)
+    assert run("rank", "--synapses", path, cells, "--into", into, "--pairs", "csv", "--together") == 1
+    ranked = {row["site"]: (row["group"], row["'=note"]) for row in rows(into / "ranking.csv")}
+    assert ranked == {"'=1+1": ("'-x", "'@y"), "-3": ("+1", "h")}
+    assert {row["other_site"] for row in rows(into / "pairs.csv")} == set(ranked)
+    assert [row["site"] for row in rows(into / "turned_away_sites.csv")] == ["'@z"]
+
+
 def test_what_is_wrong_with_a_row_costs_that_row(tmp_path, cells, capsys):
     into = tmp_path / "ranked"
     path = sites_file(tmp_path, [*SITES, *BAD, "b,no_place,,,,,,,,", "b,nan,5,nan,,,,,,"])
