@@ -16,11 +16,15 @@ from importlib.metadata import version
 from pathlib import Path
 from tempfile import TemporaryDirectory
 
-from benchmark_measures import PARTS, Bench, Row, Sizes, surveyed
+from benchmark_growth import measure_growth
+from benchmark_limits import measure_limits
+from benchmark_measures import PARTS as MEASURES
+from benchmark_measures import Bench, Row, Sizes, surveyed
 
 from morphotone.errors import MorphotoneError
 from morphotone.night.results import atomic
 
+PARTS = {**MEASURES, "growth": measure_growth, "limits": measure_limits}
 USUAL = Sizes(
     repeats=5,
     workers=(2,),
@@ -46,8 +50,7 @@ _NAME_WIDTH = 46
 _EPILOG = """\
 parts:
   runs     bare reading (pandas.read_csv, files warm), vet, and survey in its usual forms, 1 worker
-  stages   where the time of a survey at 0 Hz goes; elements are the frusta, sweeps the two sweeps and the
-           sums along paths, forest what else solving needs, rest the hashes and all between the stages
+  stages   where the time of a survey at 0 Hz goes, by the stages of its own run.json
   time     the time axis of one cell, in units of one sweep of one case at 0 Hz
   sites    ranking 200 sites on every cell, with 0 and 100 Hz and delays, against the survey at 0 Hz
   workers  a survey by several processes that run already, against the same by one
@@ -55,6 +58,7 @@ parts:
            (solving alone), by least squares of the logarithms
   start    commands from the shell, Python's own start included
   memory   the most that the process of a survey ever had in RAM
+  limits   what bounds a very large run: ledger, tables, a Dask scheduler, with cells that are only pretended
 
 each figure is the median of the repetitions, beside the least and the greatest; x bare is a ratio to the bare
 reading in the same repetition, sweeps one to a single case; a target stands beside where one was set
@@ -90,7 +94,7 @@ def measure(
     folder: Path | None, scratch: Path, sizes: Sizes, parts: Sequence[str], json_file: Path | None
 ) -> None:
     """Measure the chosen parts, print them, and write them to a file if one is given."""
-    bench = Bench(folder or scratch / "cells", scratch, sizes)
+    bench = Bench(folder or scratch / "cells", scratch, sizes, given=folder is not None)
     if folder is None:
         bench.drawn(sizes.cells, sizes.samples).rename(bench.folder)
     about = {"machine": machine(), "material": material(bench, drawn=folder is None)}

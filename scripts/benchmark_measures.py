@@ -6,27 +6,23 @@ and a ratio is taken within one repetition, so that what slows the machine for a
 
 from __future__ import annotations
 
+import json
 import subprocess
 import sys
 import time
-from collections import defaultdict
 from collections.abc import Callable, Iterator, Mapping, Sequence
-from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass, replace
 from functools import partial
 from pathlib import Path
-from pkgutil import resolve_name
 from tempfile import TemporaryDirectory
 from typing import Any, TypeVar
-from unittest import mock
 
 import numpy as np
 import pandas as pd
 from benchmark_cells import draw_folder
 
-from morphotone.cable.assumptions import Assumptions, Membrane
+from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.delays import delays
-from morphotone.cable.electrotonus import build_cases, cases_of, solve_cables
 from morphotone.cable.forest import Column, Forest
 from morphotone.cable.modes import time_constants
 from morphotone.cable.response import frequency_response, half_power_hz
@@ -35,15 +31,15 @@ from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.cable.transients import transients
 from morphotone.cable.tree import build
 from morphotone.commands.rank import rank
-from morphotone.commands.survey import outcomes, write_survey
+from morphotone.commands.survey import write_survey
 from morphotone.commands.vet import vet
+from morphotone.commands.workers import workers_for
 from morphotone.errors import ReadingError
 from morphotone.night.folder import PATTERNS, find_files
-from morphotone.night.outcome import Item
 from morphotone.night.runner import Tally
 from morphotone.questions.survey import Request
 from morphotone.questions.time_axis import TimeRequest
-from morphotone.reading.reconstruction import Reconstruction, read
+from morphotone.reading.reconstruction import read
 
 Key = TypeVar("Key")
 Timer = Callable[[], float]
@@ -55,38 +51,20 @@ TWO_FREQUENCIES = Request(Assumptions(hz=(10.0, 100.0)))
 BY_SAMPLE = Request(Assumptions(), samples=True)
 WITH_DELAYS = replace(TWO_FREQUENCIES, time=TimeRequest(delays=True))
 SMALL_CELL = 500  # samples; of the cells whose number grows
-CELLS_OF_CASES = 8  # solved together where the number of cases grows
 SITES_A_CELL = 200
 SWEEPS = 5  # of one case, whose median is the unit of the time axis
 CURRENT = SynapticCurrent(0.5, 3.0)
+#: What each run should cost at most, in bare readings: for drawn cells, and for a folder that was given,
+#: whose files are as a rule smaller.
+RUN_TARGETS: dict[str, tuple[float, float]] = {
+    "vet": (2, 3),
+    "survey at 0 Hz": (4, 6),
+    "survey at 0 Hz with two frequencies and delays": (6, 8),
+    "survey at 0 Hz with tables by sample": (10, 12),
+}
 GRID_HZ: list[float] = np.geomspace(1.0, 1e4, 41).tolist()
 
-#: Stage, and a function whose time it takes, less the time of other functions of this list within it.
-STAGES = (
-    ("read", "morphotone.commands.contents.read_bytes"),
-    ("read", "morphotone.questions.survey.reconstruct"),
-    ("vet", "morphotone.questions.survey.vet_reconstruction"),
-    ("build", "morphotone.questions.survey.mend_radii"),
-    ("build", "morphotone.questions.survey.build_cases"),
-    ("forest", "morphotone.questions.survey.Forest"),
-    ("forest", "morphotone.questions.survey.solve_forest"),
-    ("forest", "morphotone.cable.electrotonus.Solution._by_node"),
-    ("elements", "morphotone.cable.forest.pi_of_frusta"),
-    ("sweeps", "morphotone.cable.forest.sweep"),
-    ("sweeps", "morphotone.cable.forest.path_sums"),
-    ("sweeps", "morphotone.cable.solved.path_sums"),
-    ("tables", "morphotone.questions.cell.branches_of"),
-    ("tables", "morphotone.questions.survey.findings_table"),
-    ("tables", "morphotone.questions.survey.cell_row"),
-    ("tables", "morphotone.questions.survey.branch_table"),
-    ("tables", "morphotone.questions.survey.sample_table"),
-    ("tables", "morphotone.commands.survey.csv_rows"),
-    ("tables", "morphotone.commands.survey.csv_texts"),
-    ("write", "morphotone.night.ledger.Ledger.record"),
-    ("write", "morphotone.commands.survey.write_tables"),
-    ("write", "morphotone.commands.survey.write_record"),
-)
-REST = "rest"
+REST = "rest"  # of a sitting, outside its stages
 
 
 @dataclass(frozen=True)
@@ -125,6 +103,7 @@ class Bench:
     folder: Path
     scratch: Path
     sizes: Sizes
+    given: bool = False  #: the folder was given, not drawn
 
     @property
     def paths(self) -> list[Path]:
@@ -179,9 +158,10 @@ def read_barely(paths: Sequence[Path]) -> None:
 
 def surveyed(folder: Path, results: Path, request: Request = AT_REST, workers: int = 1) -> Tally:
     """Survey as the command does, with nobody looking on."""
-    return write_survey(
-        folder, results, request, patterns=PATTERNS, workers=workers, strict=False, progress=None
-    )
+    with workers_for(workers) as who:
+        return write_survey(
+            folder, results, request, patterns=PATTERNS, workers=who, strict=False, progress=None
+        )
 
 
 def survey_seconds(folder: Path, request: Request = AT_REST, workers: int = 1) -> float:
@@ -206,47 +186,23 @@ def measure_runs(bench: Bench) -> Iterator[Row]:
     reference = seconds.pop(bare)
     yield row("runs", bare, "s", reference)
     for name, values in seconds.items():
-        yield row("runs", name, "x bare", ratios(values, reference))
+        target = RUN_TARGETS[name][bench.given] if name in RUN_TARGETS else None
+        yield row("runs", name, "x bare", ratios(values, reference), target)
 
 
 def measure_stages(bench: Bench) -> Iterator[Row]:
     """Measure where the time of a survey goes, with tables by branch and by cell only."""
-    by_stage: dict[str, list[float]] = {name: [] for name in [*dict(STAGES), REST]}
+    shares = []
     for _ in range(bench.sizes.repeats):
         bare = seconds_of(read_barely, bench.paths)
-        with stages_timed() as seconds:
-            whole = survey_seconds(bench.folder)
-        seconds[REST] = whole - sum(seconds.values())
-        for stage, values in by_stage.items():
-            values.append(seconds[stage] / bare)
-    yield from (row("stages", stage, "x bare", values) for stage, values in by_stage.items())
-
-
-@contextmanager
-def stages_timed() -> Iterator[dict[str, float]]:
-    """Time the functions of `STAGES` while this process calls them; seconds by stage."""
-    seconds: dict[str, float] = defaultdict(float)
-    within = [0.0]  # for each listed function that is running, the time of listed functions inside it
-
-    def timed(stage: str, function: Callable[..., Any]) -> Callable[..., Any]:
-        def call(*args: Any, **kwargs: Any) -> Any:
-            within.append(0.0)
-            start = time.perf_counter()
-            try:
-                return function(*args, **kwargs)
-            finally:
-                whole = time.perf_counter() - start
-                seconds[stage] += whole - within.pop()
-                within[-1] += whole
-
-        return call
-
-    with ExitStack() as stack:
-        for stage, place in STAGES:
-            home, _, name = place.rpartition(".")
-            owner = resolve_name(home)
-            stack.enter_context(mock.patch.object(owner, name, timed(stage, getattr(owner, name))))
-        yield seconds
+        with TemporaryDirectory() as results:
+            surveyed(bench.folder, Path(results))
+            sitting = json.loads((Path(results) / "run.json").read_text(encoding="utf-8"))["sittings"][-1]
+        stages = sitting["seconds_by_stage"]
+        stages[REST] = sitting["seconds"] - sum(stages.values())
+        shares.append({name: seconds / bare for name, seconds in stages.items()})
+    for name in shares[0]:
+        yield row("stages", name, "x bare", [each[name] for each in shares])
 
 
 def measure_time(bench: Bench) -> Iterator[Row]:
@@ -287,7 +243,8 @@ def measure_workers(bench: Bench) -> Iterator[Row]:
         )
         yield row("workers", f"survey at 0 Hz, {workers} workers", "s", seconds[workers])
         yield row("workers", f"the first by {workers}, with their start", "s", [first])
-        yield row("workers", f"1 worker's time over {workers}'", "x", ratios(seconds[1], seconds[workers]))
+        share = ratios(seconds[workers], seconds[1])
+        yield row("workers", f"{workers} workers' time over 1's", "x", share, 1 / (0.9 * workers))
 
 
 def measure_sites(bench: Bench) -> Iterator[Row]:
@@ -323,72 +280,6 @@ def _rank_seconds(folder: Path, sites: Path) -> float:
         return seconds_of(rank, folder, sites, results)
 
 
-def measure_growth(bench: Bench) -> Iterator[Row]:
-    """Measure how time grows with samples, cells and cases."""
-    yield from _growth_with_samples(bench)
-    most = bench.sizes.most_cells
-    folders = {count: bench.drawn(count, SMALL_CELL) for count in steps(most // 10, most, 3)}
-    timers = {count: partial(survey_seconds, folder) for count, folder in folders.items()}
-    yield from grown(f"surveyed cells of {SMALL_CELL} samples", bench.repeated(timers))
-    yield from _growth_with_cases(bench)
-
-
-def steps(least: int, most: int, count: int) -> list[int]:
-    """Return up to `count` whole numbers, evenly spaced in their logarithm."""
-    return sorted({round(value) for value in np.geomspace(max(least, 1), most, count).tolist()})
-
-
-def _growth_with_samples(bench: Bench) -> Iterator[Row]:
-    most = bench.sizes.most_samples
-    cells = {count: next(bench.drawn(1, count).iterdir()) for count in steps(max(most // 100, 2), most, 5)}
-    seconds = bench.repeated({count: partial(_cell_seconds, path) for count, path in cells.items()})
-    yield from grown("samples in one cell", seconds)
-    bare = bench.repeated({most: partial(seconds_of, read_barely, [cells[most]])})
-    yield row("growth", f"samples in one cell: {most:,}", "x bare", ratios(seconds[most], bare[most]))
-
-
-def _cell_seconds(path: Path) -> float:
-    """Return how long one cell takes without ledger and tables' files, which have a price of their own."""
-    return seconds_of(outcomes, [Item(path.name, path, None)], AT_REST)
-
-
-def _growth_with_cases(bench: Bench) -> Iterator[Row]:
-    """Measure solving alone: by assumptions in real arithmetic, by frequency in complex."""
-    folder = bench.drawn(CELLS_OF_CASES, bench.sizes.samples)
-    recs = [read(path) for path in sorted(folder.iterdir())]
-    counts = steps(1, bench.sizes.most_cases, 5)
-    timers = {count: partial(_solving_seconds, recs, _membranes(count), []) for count in counts}
-    yield from grown("solving at 0 Hz, assumptions", bench.repeated(timers))
-    timers = {count: partial(_solving_seconds, recs, _membranes(1), _frequencies(count)) for count in counts}
-    yield from grown("solving, frequencies besides 0 Hz", bench.repeated(timers))
-
-
-def _membranes(count: int) -> list[Assumptions]:
-    R_m = np.geomspace(1e4, 4e4, count).tolist()
-    return [Assumptions(membrane=Membrane(R_m_ohm_cm2=each)) for each in R_m]
-
-
-def _frequencies(count: int) -> list[float]:
-    hz: list[float] = np.geomspace(1.0, 1000.0, count).tolist()
-    return hz
-
-
-def _solving_seconds(
-    recs: Sequence[Reconstruction], many: Sequence[Assumptions], hz: Sequence[float]
-) -> float:
-    cells = [build_cases(rec, many) for rec in recs]
-    return seconds_of(solve_cables, cells, cases_of(many, hz))
-
-
-def grown(what: str, seconds: Mapping[int, Sequence[float]]) -> Iterator[Row]:
-    """Give the seconds for each size, and the exponent by least squares of the logarithms."""
-    for size, values in seconds.items():
-        yield row("growth", f"{what}: {size:,}", "s", values)
-    sizes = np.log(list(seconds))
-    slopes = [np.polyfit(sizes, np.log(each), 1)[0] for each in zip(*seconds.values(), strict=True)]
-    yield row("growth", f"{what}: exponent", "", slopes)
-
-
 def measure_start(bench: Bench) -> Iterator[Row]:
     """Measure what a person waits for before anything happens."""
     small = bench.drawn(1, SMALL_CELL)
@@ -396,8 +287,8 @@ def measure_start(bench: Bench) -> Iterator[Row]:
         "morphotone --help": _help_seconds,
         "survey of one small cell": partial(_shell_seconds, small),
     }
-    for name, values in bench.repeated(timers).items():
-        yield row("start", name, "s", values)
+    for (name, values), target in zip(bench.repeated(timers).items(), (0.3, 2), strict=True):
+        yield row("start", name, "s", values, target)
 
 
 def _help_seconds() -> float:
@@ -412,19 +303,23 @@ def _shell_seconds(folder: Path) -> float:
 
 def measure_memory(bench: Bench) -> Iterator[Row]:
     """Measure the most memory of a survey's own process, a new one each time."""
-    sizes = bench.sizes
-    workers = max(sizes.workers)
-    timers: dict[str, Timer] = {
-        "one small cell": partial(_peak_mb, bench.drawn(1, SMALL_CELL), 1),
-        f"one cell of {sizes.most_samples:,} samples": partial(
-            _peak_mb, bench.drawn(1, sizes.most_samples), 1
-        ),
-    }
-    for count in steps(sizes.most_cells // 10, sizes.most_cells, 2):
-        folder = bench.drawn(count, SMALL_CELL)
-        timers[f"main process of {workers} workers, {count:,} cells"] = partial(_peak_mb, folder, workers)
-    for name, values in bench.repeated(timers).items():
-        yield row("memory", name, "MB", values)
+    sizes, workers = bench.sizes, max(bench.sizes.workers)
+    few, many = (bench.drawn(count, SMALL_CELL) for count in (sizes.most_cells // 10, sizes.most_cells))
+    peaks = bench.repeated(
+        {
+            "one small cell": partial(_peak_mb, bench.drawn(1, SMALL_CELL), 1),
+            f"one cell of {sizes.most_samples:,} samples": partial(
+                _peak_mb, bench.drawn(1, sizes.most_samples), 1
+            ),
+            f"main process of {workers} workers": partial(_peak_mb, few, workers),
+            f"the same, {sizes.most_cells:,} cells": partial(_peak_mb, many, workers),
+        }
+    )
+    for (name, values), target in zip(peaks.items(), (None, 1500, None, None), strict=True):
+        yield row("memory", name, "MB", values, target)
+    *_, before, after = peaks.values()
+    more = [one - other for one, other in zip(after, before, strict=True)]
+    yield row("memory", f"{sizes.most_cells:,} cells more than a tenth of them", "MB", more, 50)
 
 
 def _peak_mb(folder: Path, workers: int) -> float:
@@ -443,7 +338,6 @@ PARTS: dict[str, Callable[[Bench], Iterator[Row]]] = {
     "time": measure_time,
     "sites": measure_sites,
     "workers": measure_workers,
-    "growth": measure_growth,
     "start": measure_start,
     "memory": measure_memory,
 }

@@ -4,7 +4,6 @@ import json
 import subprocess
 import sys
 from pathlib import Path
-from types import SimpleNamespace
 
 import pytest
 
@@ -14,8 +13,8 @@ from morphotone.reading.vetting import vet_reconstruction
 SCRIPTS = Path(__file__).resolve().parent.parent / "scripts"
 TINY = ["--cells", "3", "--samples", "90", "--most-samples", "400", "--most-cells", "20", "--most-cases", "2"]
 IN_ONE_PROCESS = ["runs", "stages", "time", "sites", "growth"]
-IN_OTHERS = ["workers", "start", "memory"]
-STAGES = {"read", "vet", "build", "forest", "elements", "sweeps", "tables", "write", "rest"}
+IN_OTHERS = ["workers", "start", "memory", "limits"]
+STAGES = {"read", "vet", "build", "solve", "tables", "ledger", "export", "rest"}
 
 
 def measured(folder, *arguments):
@@ -56,21 +55,21 @@ def test_parts_are_measured_and_printed(tiny):
 def test_parts_with_processes_of_their_own_are_measured(tmp_path):
     printed, figures = measured(tmp_path, "--repeats", "1", "--parts", *IN_OTHERS)
     assert_whole(printed, figures, IN_OTHERS)
-    assert len(names_of(figures, "memory")) == 4
+    assert len(names_of(figures, "memory")) == 5
 
 
 def test_median_lies_between_least_and_greatest(tiny):
     rows = tiny[1]["rows"]
     assert all(row["least"] <= row["median"] <= row["greatest"] for row in rows)
-    assert all(row["least"] > 0 for row in rows if row["unit"])  # an exponent has no unit, and any sign
+    timed = [row for row in rows if row["unit"] and row["part"] != "stages"]
+    assert all(row["least"] > 0 for row in timed)  # an exponent has no unit, and any sign
 
 
-def test_stages_have_all_been_through(tiny):
-    """A stage at zero would mean that the survey no longer calls the function that is timed."""
+def test_stages_are_those_of_the_record(tiny):
     figures = tiny[1]
     stages = {row["name"]: row["median"] for row in figures["rows"] if row["part"] == "stages"}
     assert set(stages) == STAGES
-    assert all(stages.values())
+    assert stages["read"] > 0  # the others may be over within the record's millisecond
 
 
 def test_the_time_axis_stands_in_sweeps_beside_its_targets(tiny):
@@ -146,23 +145,7 @@ def test_drawn_cells_are_the_same_each_time(scripts, tmp_path):
 
 def test_exponent_is_the_slope_of_the_logarithms(scripts):
     """Seconds that grow as n^1.5, hand-made, give 1.5 whatever the constant."""
-    from benchmark_measures import grown
+    from benchmark_growth import grown
 
     exponent = list(grown("things", {n: [2.0 * n**1.5, 5.0 * n**1.5] for n in (1, 10, 1000)}))[-1]
     assert exponent.median == pytest.approx(1.5)
-
-
-def test_time_of_a_stage_leaves_out_the_stages_within(scripts, monkeypatch):
-    """A clock that goes one second a look: outer 3 s with inner's 1 s in it."""
-    import benchmark_measures
-
-    ticks = iter(range(100))
-    inside = SimpleNamespace(inner=lambda: None)
-    inside.outer = lambda: inside.inner()
-    monkeypatch.setattr(benchmark_measures, "STAGES", (("a", "here.outer"), ("b", "here.inner")))
-    monkeypatch.setattr(benchmark_measures, "resolve_name", {"here": inside}.get)
-    clock = SimpleNamespace(perf_counter=lambda: float(next(ticks)))
-    monkeypatch.setattr(benchmark_measures, "time", clock)
-    with benchmark_measures.stages_timed() as seconds:
-        inside.outer()
-    assert seconds == {"a": 2.0, "b": 1.0}

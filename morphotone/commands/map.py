@@ -11,7 +11,6 @@ from importlib.metadata import version
 from pathlib import Path, PurePath
 from typing import Any
 
-import joblib
 import pandas as pd
 from matplotlib.figure import Figure
 
@@ -30,16 +29,14 @@ from morphotone.commands.marked import sites_on
 from morphotone.commands.options import (
     add_assumption_options,
     add_time_options,
-    add_worker_options,
     assumptions_of,
     current_of,
 )
+from morphotone.commands.workers import add_worker_options, workers_for
 from morphotone.errors import ReadingError
 from morphotone.night.folder import PATTERNS, Found, find_files, written_name
 from morphotone.night.ledger import Ledger
-from morphotone.night.limits import usual_limits
 from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER
-from morphotone.night.pool import pool_of
 from morphotone.night.progress import Progress, progress_on
 from morphotone.night.record import run_record, write_record
 from morphotone.night.results import atomic, atomic_bytes, export, file_names
@@ -237,9 +234,11 @@ def draw_maps(
     alone = Path(path).is_file()
     found = [_one_file(Path(path))] if alone else find_files(path, patterns, exclude=into)
     sites = sites_on(found, synapses, alone)
-    count = workers if workers > 0 else joblib.cpu_count()
     asked = {**_fingerprint(request, shown), "farthest_um": farthest_um, "sites_sha256": sites.sha256}
-    with Ledger(into, asked) as ledger:
+    with (
+        workers_for(workers, None, minutes_per_cell, GB_per_cell) as who,
+        Ledger(into, asked) as ledger,
+    ):
         before = ledger.known()
         names = file_names({*before, *(file.name for file in found)})
         work = Work(into, request, shown, names, sites.per_file, farthest_um)
@@ -249,8 +248,8 @@ def draw_maps(
             partial(outcomes, work=work),
             ledger=ledger,
             progress=progress,
-            pool=pool_of(count),
-            limits=usual_limits(count, minutes_per_cell, GB_per_cell),
+            pool=who.pool,
+            limits=who.limits,
             batch_bytes=1,  # one cell at a time: drawing it takes as long as a survey of many
             strict=strict,
         )

@@ -3,13 +3,11 @@
 import argparse
 from collections.abc import Sequence
 from dataclasses import replace
-from math import inf
 from pathlib import Path
 
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.commands.assumptions import load_assumptions, print_warnings
-from morphotone.night.limits import USUAL_MINUTES
 from morphotone.questions.time_axis import TimeRequest
 
 
@@ -47,27 +45,6 @@ def assumptions_of(args: argparse.Namespace) -> Assumptions:
     return assumptions
 
 
-def add_worker_options(parser: argparse.ArgumentParser) -> None:
-    """Add --workers and the limits for each cell."""
-    parser.add_argument(
-        "--workers", metavar="N", type=int, default=0, help="processes (default: one per processor)"
-    )
-    parser.add_argument(
-        "--minutes-per-cell",
-        metavar="MIN",
-        type=_positive,
-        default=USUAL_MINUTES,
-        help="time after which a file is turned away as too_long (default: %(default)g)",
-    )
-    parser.add_argument(
-        "--GB-per-cell",
-        metavar="GB",
-        type=_positive,
-        help="memory beyond which a file is turned away as too_large (default: the free memory shared out "
-        "among the workers)",
-    )
-
-
 def add_time_options(parser: argparse.ArgumentParser) -> None:
     """Add --delays and --transient, which have columns by sample."""
     parser.add_argument(
@@ -91,10 +68,3 @@ def time_of(args: argparse.Namespace) -> TimeRequest:
 def current_of(transient_ms: Sequence[float] | None) -> SynapticCurrent | None:
     """Return the synaptic current with this rise and decay, ms, if they are given."""
     return None if transient_ms is None else SynapticCurrent(*transient_ms)
-
-
-def _positive(text: str) -> float:
-    value = float(text)
-    if not 0 < value < inf:
-        raise argparse.ArgumentTypeError(f"read {text!r}, expected a number greater than 0")
-    return value

@@ -14,7 +14,6 @@ from pathlib import Path
 from tempfile import TemporaryDirectory
 from typing import Any
 
-import joblib
 import pandas as pd
 
 from morphotone.cable.assumptions import Assumptions
@@ -22,17 +21,15 @@ from morphotone.commands.contents import content_of, is_known
 from morphotone.commands.options import (
     add_assumption_options,
     add_time_options,
-    add_worker_options,
     assumptions_of,
     current_of,
     time_of,
 )
 from morphotone.commands.tables_now import tables_if_asked, tables_now, write_tables
+from morphotone.commands.workers import Workers, add_worker_options, workers_for
 from morphotone.night.folder import PATTERNS, find_files
 from morphotone.night.ledger import Ledger
-from morphotone.night.limits import NO_LIMITS, Limits, usual_limits
 from morphotone.night.outcome import Item, Outcome, Status
-from morphotone.night.pool import pool_of
 from morphotone.night.progress import Progress, progress_on
 from morphotone.night.record import run_record, write_record
 from morphotone.night.request import tables_given
@@ -107,6 +104,7 @@ def survey(
     transient_ms: tuple[float, float] | None = None,
     patterns: Sequence[str] = PATTERNS,
     workers: int = 1,
+    cluster: str | None = None,
     minutes_per_cell: float | None = None,
     GB_per_cell: float | None = None,
     strict: bool = False,
@@ -135,6 +133,8 @@ def survey(
         Which file names count.
     workers : int
         Number of processes; 0 for one per processor.
+    cluster : str, optional
+        Address of a Dask scheduler, whose workers do the work instead.
     minutes_per_cell, GB_per_cell : float, optional
         Time and memory after which a file is turned away; unless given, what suits the machine.
     strict : bool
@@ -153,17 +153,9 @@ def survey(
     request = Request(assumptions or Assumptions(), keep_unfit, samples, time)
     with ExitStack() as stack:
         target = Path(into if into is not None else stack.enter_context(TemporaryDirectory()))
-        count = workers if workers > 0 else joblib.cpu_count()
-        limits = usual_limits(count, minutes_per_cell, GB_per_cell)
+        who = stack.enter_context(workers_for(workers, cluster, minutes_per_cell, GB_per_cell))
         tally = write_survey(
-            folder,
-            target,
-            request,
-            patterns=patterns,
-            workers=count,
-            limits=limits,
-            strict=strict,
-            progress=None,
+            folder, target, request, patterns=patterns, workers=who, strict=strict, progress=None
         )
         return read_survey(target, tally)
 
@@ -174,10 +166,9 @@ def write_survey(
     request: Request,
     *,
     patterns: Sequence[str],
-    workers: int,
+    workers: Workers,
     strict: bool,
     progress: Progress | None,
-    limits: Limits = NO_LIMITS,
 ) -> Tally:
     """Survey a folder and write the tables; parameters and errors as for `survey`."""
     started = datetime.now(UTC)
@@ -191,16 +182,16 @@ def write_survey(
     ):
         known = sum(name in ledger.known() for name in names)
         sitting.say(
-            f"{len(names)} files found, {known} of them known from earlier sittings; {workers} workers; "
-            f"{limits.described()}"
+            f"{len(names)} files found, {known} of them known from earlier sittings; {workers.said}; "
+            f"{workers.limits.described()}"
         )
         tally = run_night(
             found,
             partial(outcomes, request=request),
             ledger=ledger,
             progress=progress,
-            pool=pool_of(workers),
-            limits=limits,
+            pool=workers.pool,
+            limits=workers.limits,
             witness=sitting,
             meanwhile=partial(tables_if_asked, ledger, names, request, sitting),
             strict=strict,
@@ -216,8 +207,11 @@ def write_survey(
             "patterns": list(patterns),
             **conditions,
             "warnings": list(request.assumptions.warnings),
-            "workers": workers,
-            "limits": {"minutes_per_cell": limits.minutes, "GB_per_cell": limits.gigabytes},
+            "workers": workers.said,
+            "limits": {
+                "minutes_per_cell": workers.limits.minutes,
+                "GB_per_cell": workers.limits.gigabytes,
+            },
             "sittings": ledger.sittings(),
         }
         record = run_record(started=started, tally=tally, ledger=ledger, names=names, details=details)
@@ -324,7 +318,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         default=list(PATTERNS),
         help="names of the files to take (default: %(default)s; upper and lower case alike)",
     )
-    add_worker_options(parser)
+    add_worker_options(parser, cluster=True)
     parser.add_argument("--strict", action="store_true", help="stop at the first file turned away")
     parser.add_argument(
         "--tables-now",
@@ -341,17 +335,16 @@ def run(args: argparse.Namespace) -> int:
         tables_now(args.folder, args.into, request, _fingerprint(request), args.pattern)
         print(f"tables of what is finished by now: {args.into}")
         return 0
-    workers = args.workers if args.workers > 0 else joblib.cpu_count()
-    tally = write_survey(
-        args.folder,
-        args.into,
-        request,
-        patterns=args.pattern,
-        workers=workers,
-        limits=usual_limits(workers, args.minutes_per_cell, args.GB_per_cell),
-        strict=args.strict,
-        progress=progress_on(sys.stderr),
-    )
+    with workers_for(args.workers, args.cluster, args.minutes_per_cell, args.GB_per_cell) as workers:
+        tally = write_survey(
+            args.folder,
+            args.into,
+            request,
+            patterns=args.pattern,
+            workers=workers,
+            strict=args.strict,
+            progress=progress_on(sys.stderr),
+        )
     again = f" ({tally.unchanged} of them unchanged since an earlier run)" if tally.unchanged else ""
     files = "file" if tally.found == 1 else "files"
     print(

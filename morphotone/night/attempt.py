@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import traceback
 from collections import Counter
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 
@@ -49,11 +49,18 @@ def attempt(batch: Batch, function: BatchFunction, limits: Limits, ends_process:
     if len(batch) == 1:
         return Worked([failed], seconds)
     # Not in the clauses above, where the error holds on to the memory that the batch took.
-    each = [attempt([item], function, limits, ends_process) for item in batch]
-    return Worked(
-        [outcome for one in each for outcome in one.outcomes],
-        sum((Counter(one.seconds) for one in each), Counter(seconds)),
-    )
+    each = (attempt([item], function, limits, ends_process) for item in batch)
+    return together([Worked([], seconds), *each])
+
+
+def together(parts: Iterable[Worked]) -> Worked:
+    """Return what came of several batches as if they had been one."""
+    outcomes: list[Outcome] = []
+    seconds: Counter[str] = Counter()
+    for part in parts:
+        outcomes += part.outcomes
+        seconds.update(part.seconds)
+    return Worked(outcomes, seconds)
 
 
 def turned_away(name: str, reason: str, sentence: str) -> Outcome:

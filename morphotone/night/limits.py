@@ -89,11 +89,14 @@ class Limits:
 NO_LIMITS = Limits()
 
 
-def usual_limits(workers: int, minutes: float | None = None, gigabytes: float | None = None) -> Limits:
-    """Return the limits asked for; where none is, those that suit this machine and so many workers."""
+def usual_limits(workers: int | None, minutes: float | None = None, gigabytes: float | None = None) -> Limits:
+    """Return the limits asked for; where none is, those that suit this machine and so many workers.
+
+    None for the workers of other machines, whose memory is not known here: then it has no limit of ours.
+    """
     if gigabytes is None:
         there = available_bytes()
-        size = None if there is None else int(_SHARE * there / workers)
+        size = None if there is None or workers is None else int(_SHARE * there / workers)
     else:
         size = int(gigabytes * 1e9)
     return Limits(60 * (USUAL_MINUTES if minutes is None else minutes), size)

@@ -42,6 +42,11 @@ def run_record(
     return record_of(started=started, counts=asdict(tally), inputs_sha256=inputs, details=details)
 
 
+def package_versions() -> dict[str, str]:
+    """Return the versions on which the last digits of a result can depend, Python's among them."""
+    return {"python": platform.python_version(), **{name: version(name) for name in PACKAGES}}
+
+
 def record_of(
     *,
     started: datetime,

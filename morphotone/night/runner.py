@@ -110,7 +110,7 @@ def run(
     work = partial(attempt, function=function, limits=limits, ends_process=pool is not in_this_process)
     progress.begin(len(found), sum(sizes.values()))
     try:
-        for worked in chain([Worked(closed)], _finished(batches, work, pool, limits, witness)):
+        for worked in chain([Worked(closed)], finished(batches, work, pool, limits, witness)):
             outcomes = worked.outcomes
             with stage("ledger"):
                 ledger.record([outcome for outcome in outcomes if outcome.status != "unchanged"])
@@ -146,7 +146,7 @@ def _batches(found: Iterable[Found], known: Mapping[str, Entry], batch_bytes: in
         yield batch
 
 
-def _finished(
+def finished(
     batches: Iterable[Batch],
     function: Callable[[Batch], Worked],
     pool: Pool,

@@ -316,7 +316,7 @@ def test_two_files_of_one_name_are_refused(found: Callable[[], list[Found]], tmp
 def test_a_run_that_loses_files_is_loud(
     found: Callable[[], list[Found]], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    monkeypatch.setattr(runner, "_finished", lambda *_: iter(()))
+    monkeypatch.setattr(runner, "finished", lambda *_: iter(()))
     with pytest.raises(RuntimeError, match="12 files were found, but 0 analysed and 0 turned away"):
         night(found(), roots.roots, tmp_path / "out")
 
