@@ -329,6 +329,6 @@ def _away(turned_away: pd.DataFrame) -> list[tuple[str, list[tuple[int, str, str
     reasons: dict[str, list[tuple[int, str, str]]] = {}
     texts = turned_away[["file", "reason", "sentence"]].fillna("").astype(str)
     for number, (file, reason, sentence) in enumerate(texts.itertuples(index=False)):
-        told = sentence.removeprefix(f"{file}: ")
+        told = sentence.removeprefix(f"{file}: ").removeprefix(f"{reason}: ")
         reasons.setdefault(reason, []).append((number, file, told))
     return sorted(reasons.items(), key=lambda one: -len(one[1]))

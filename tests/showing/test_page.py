@@ -165,7 +165,7 @@ def test_a_finding_that_this_version_does_not_know_keeps_the_effect_it_came_with
 
 def test_a_cell_far_from_its_group_comes_first_with_the_reason():
     found = parsed(study())
-    first = found.words.partition("against all cells. ")[2]
+    first = found.words.partition("2 of 12 cells stand out. ")[2]
     assert first.startswith("night/cell_0005 ( bramble ) : R_in ")
     assert "times the median of its group" in first[:120]
 
