@@ -6,6 +6,7 @@ import re
 import shutil
 import zlib
 
+import pandas as pd
 import pytest
 from selenium import webdriver
 from selenium.webdriver.chrome.service import Service
@@ -16,8 +17,8 @@ from selenium.webdriver.support.wait import WebDriverWait
 
 import morphotone
 from morphotone.showing.page import page as page_of
-from tests.commands.folders import fill
-from tests.showing.mornings import cells_of, findings_of, morning_of, record_of
+from tests.commands.folders import SOUND, fill
+from tests.showing.mornings import away_of, cells_of, findings_of, morning_of
 
 CHROMIUM, DRIVER = shutil.which("chromium"), shutil.which("chromedriver")
 pytestmark = [
@@ -34,7 +35,6 @@ PNG = base64.b64decode(
     "iVBORw0KGgoAAAANSUhEUgAAAAEAAAABCAAAAAA6fptVAAAACklEQVR4nGNoAAAAggCBd81ytgAAAABJRU5ErkJggg=="
 )
 NAMES = ["plain", "deep/in/a folder", "<img src=x onerror=document.title='broken'>", "</script>", "שלום"]
-COLUMNS = "soma_rule,length_axon_um,orphans_joined,orphans_left_out,orphans_um"
 
 
 @pytest.fixture(scope="module")
@@ -52,9 +52,11 @@ def driver(tmp_path_factory):
 @pytest.fixture(scope="module")
 def page(tmp_path_factory):
     """A page of 40 cells in two groups, five with names of all kinds, two with pictures."""
-    results = tmp_path_factory.mktemp("results")
+    folder = fill(tmp_path_factory.mktemp("field"), {"a.swc": SOUND})
+    results = folder / "results"
+    columns = morphotone.survey(folder, results).cells  # of a real survey; the cells are invented
     names = [*NAMES, *(f"cell_{number:02}" for number in range(5, 40))]
-    cells = cells_of(40, names, **dict.fromkeys(COLUMNS.split(","), 0))
+    cells = pd.concat([columns] * 40, ignore_index=True).assign(**cells_of(40, names))
     cells.loc[5, "R_in_MOhm"], cells.loc[6, "X_tips_mean"] = 9000.0, None
     cells.loc[7, "grade"] = "doubtful"
     findings = findings_of([{"file": "cell_07.swc", "code": "flat", "severity": "doubtful"}])
@@ -63,9 +65,9 @@ def page(tmp_path_factory):
     (results / "maps" / "maps.csv").write_text("\n".join(["file,figure,thumbnail", *rows]), encoding="utf-8")
     cells.to_csv(results / "cells.csv", index=False)
     findings.assign(grade="doubtful").to_csv(results / "findings.csv", index=False)
-    (results / "turned_away.csv").write_text("file,reason,sentence\nw.swc,empty,w.swc: empty\n")
-    assumptions = morphotone.Assumptions().to_dict()
-    record = record_of(assumptions=assumptions, warnings=[], counts={"found": 41})
+    away_of([["w.swc", "empty", "w.swc: empty"]]).to_csv(results / "turned_away.csv", index=False)
+    record = json.loads((results / "run.json").read_text(encoding="utf-8"))
+    record |= {"folder": "field", "counts": {**record["counts"], "found": 41}}
     (results / "run.json").write_text(json.dumps(record), encoding="utf-8")
     groups = cells[["cell"]].assign(kind=["odd", "even"] * 20)
     morphotone.report(results, groups, "kind", into=results / "report.html")
