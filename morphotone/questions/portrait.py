@@ -104,6 +104,10 @@ class Portrait:
         Its table by sample.
     column : str
         The column of that table that colours.
+    ends : (ndarray, ndarray), shape (nodes, 3) each
+        Where the frustum that ends at each node starts and ends, µm.
+    values : ndarray, shape (nodes,)
+        What colours it; NaN where the table has an empty cell.
     marks : Marks or None
         Its sites.
     """
@@ -112,25 +116,14 @@ class Portrait:
     hz: float
     table: Columns
     column: str
+    ends: tuple[Real, Real]
+    values: Real
     marks: Marks | None = None
-
-    @cached_property
-    def ends(self) -> tuple[Real, Real]:
-        """Where the frustum that ends at each node starts and ends, µm, shape (nodes, 3) each."""
-        cable = self.cell.cable
-        nodes = np.arange(len(cable.parent))
-        start, end = (positions(cable, nodes, np.full(len(nodes), share)) for share in (1.0, 0.0))
-        return start, end
 
     @cached_property
     def distances(self) -> Distances:
         """How far each node is from the soma, shape (nodes,)."""
         return distances_of(self.cell.electrotonus, self.hz)
-
-    @cached_property
-    def values(self) -> Real:
-        """What colours the frustum that ends at each node; NaN where the table has an empty cell."""
-        return values_by_node(self.cell, numeric_column(self.table, self.column))
 
     @cached_property
     def runs(self) -> list[Run]:
@@ -352,5 +345,7 @@ def portrait_of(
         )
     table = sample_table(cell)
     column = colour or COLOUR + hz_suffix(hz)
-    numeric_column(table, column)
-    return Portrait(cell, hz, table, column, marks)
+    values = values_by_node(cell, numeric_column(table, column))
+    nodes = np.arange(len(cell.cable.parent))
+    start, end = (positions(cell.cable, nodes, np.full(len(nodes), share)) for share in (1.0, 0.0))
+    return Portrait(cell, hz, table, column, (start, end), values, marks)

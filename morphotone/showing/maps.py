@@ -9,6 +9,7 @@ from matplotlib.figure import Figure
 
 from morphotone.cable.assumptions import Membrane
 from morphotone.questions.portrait import Portrait
+from morphotone.questions.refined import refined
 from morphotone.reading.reconstruction import domain_name
 from morphotone.showing.colours import Scale, scale_of
 from morphotone.showing.keys import (
@@ -87,10 +88,11 @@ def map_figure(portrait: Portrait, width_mm: float = 175, plane: Plane = "xy") -
     inner = width_mm - 2 * _EDGE
     foot = wrapped(_foot(portrait, inner), inner, SMALL)
     layout = _layout(width_mm, _aspect(portrait, plane))
+    fine = refined(portrait)
     with house_style():
         figure = blank_sheet(width_mm, layout.bottom + len(foot) * _LINE_MM + _EDGE)
         _draw_head(figure, portrait, width_mm)
-        _draw_panels(figure, layout, portrait, scale, plane)
+        _draw_panels(figure, layout, fine, scale, plane)
         for number, line in enumerate(foot):
             write_at(figure, _EDGE, layout.bottom + number * _LINE_MM, line, fontsize=SMALL)
     return figure
@@ -291,7 +293,9 @@ def thumbnail(portrait: Portrait, plane: Plane = "xy") -> Figure:
     width, height = 320 / 96 * MM_PER_INCH, 240 / 96 * MM_PER_INCH
     with house_style():
         figure = blank_sheet(width, height, dpi=96)
-        draw_cell(figure, Box(0.0, 0.0, width, height), portrait, scale_of(portrait.values, ""), plane)
+        draw_cell(
+            figure, Box(0.0, 0.0, width, height), refined(portrait), scale_of(portrait.values, ""), plane
+        )
     return figure
 
 

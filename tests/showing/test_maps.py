@@ -11,6 +11,7 @@ from matplotlib.collections import LineCollection
 from matplotlib.image import imread
 
 from morphotone.cable.assumptions import Assumptions, Membrane
+from morphotone.questions.refined import refined
 from morphotone.reading.sites import read_sites
 from morphotone.showing.colours import PALETTE, scale_of
 from morphotone.showing.maps import WIDTHS_MM, colour_bar, map_figure, thumbnail
@@ -291,7 +292,7 @@ def test_a_plane_shows_its_coordinates(plane):
     figure = map_figure(drawn, plane=plane)
     chosen = ["xyz".index(letter) for letter in plane]
     ends = np.array(lines(figure, "cell", "cable"))[:, 1]
-    assert {tuple(end) for end in ends} == {tuple(end) for end in drawn.ends[1][1:, chosen]}
+    assert {tuple(end) for end in ends} == {tuple(end) for end in refined(drawn).ends[1][1:, chosen]}
     assert f"to scale, {plane[0]} across, {plane[1]} up" in {words for words, _ in texts(figure)}
 
 
