@@ -13,7 +13,7 @@ import threading
 import time
 from collections.abc import Callable, Iterator, Mapping
 from itertools import islice
-from typing import Protocol, TypeVar
+from typing import Any, Protocol, TypeVar
 
 from joblib.externals.loky import FIRST_COMPLETED, Future, get_reusable_executor, wait
 from joblib.externals.loky.process_executor import TerminatedWorkerError
@@ -108,6 +108,7 @@ def in_processes(workers: int) -> Pool:
                 # Now and then a look round: on Windows, Ctrl-C does not wake what waits without limit.
                 done, _ = wait(running, timeout=_LOOK_ROUND_SECONDS, return_when=FIRST_COMPLETED)
                 if not done:
+                    _check_workers(executor)
                     yield None
                 for future in done:
                     yield running.pop(future), future.result()
@@ -122,6 +123,23 @@ def in_processes(workers: int) -> Pool:
             raise
 
     return pool
+
+
+def _check_workers(executor: Any) -> None:
+    """Raise if a worker is gone and the executor has not noticed, as when it was killed while handing over.
+
+    The executor then waits without end for the rest of the result, since other processes could still write
+    it: they are ended, this process lets go of its end, and the executor finds that nothing will come.
+    """
+    workers = list((executor._processes or {}).values())
+    if all(worker.exitcode in (None, 0) for worker in workers):
+        return
+    time.sleep(_LOOK_ROUND_SECONDS)  # it may be about to notice
+    if executor._flags.broken is None:
+        for worker in workers:
+            worker.kill()
+        executor._result_queue._writer.close()
+    raise WorkerDiedError("a worker was ended while it handed over its result")
 
 
 def _finished(running: Mapping[Future[Result], int]) -> list[tuple[int, Result]]:

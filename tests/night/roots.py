@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import hashlib
 import os
+import threading
 import time
 from dataclasses import replace
 from pathlib import Path
@@ -106,6 +107,16 @@ def roots_slow(batch: list[Item], diary: Path) -> list[Outcome]:
 def roots_large(batch: list[Item]) -> list[Outcome]:
     """Hand back more than a pipe holds, so that a worker waits for someone to take it."""
     return [replace(out, parts={**out.parts, "ballast": b"0\r\n" * 1_000_000}) for out in roots(batch)]
+
+
+def roots_cut_off(batch: list[Item], culprit: str) -> list[Outcome]:
+    """Hand over far more than a pipe holds, and die in the middle of it."""
+    outcomes = roots(batch)
+    if batch[0].name == culprit:
+        threading.Timer(2.0, os._exit, [9]).start()
+        time.sleep(1.0)
+        outcomes = [replace(outcomes[0], parts={"ballast": b"0\r\n" * 50_000_000})]
+    return outcomes
 
 
 def roots_forgetful(batch: list[Item]) -> list[Outcome]:

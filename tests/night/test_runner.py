@@ -4,6 +4,7 @@ import os
 import signal
 import subprocess
 import sys
+import threading
 import time
 from collections.abc import Callable
 from functools import partial
@@ -18,7 +19,7 @@ from morphotone.night.folder import Found, find_files
 from morphotone.night.ledger import Ledger
 from morphotone.night.limits import Limits
 from morphotone.night.outcome import BatchFunction, Item, Outcome
-from morphotone.night.pool import in_processes, pool_of
+from morphotone.night.pool import WorkerDiedError, in_processes, pool_of
 from morphotone.night.progress import Step
 from morphotone.night.results import export
 from morphotone.night.runner import Tally, run
@@ -198,6 +199,23 @@ def test_what_happens_is_witnessed(found: Callable[[], list[Found]], tmp_path: P
     assert "assumptions' SHA-256 ab12" in log
     assert "a worker died; " in log
     assert "turned away: b/07.swc: negative: no root of -1.0\n" in log
+
+
+@pytest.mark.slow
+def test_a_worker_killed_while_it_hands_over_does_not_stop_the_night(
+    found: Callable[[], list[Found]], tmp_path: Path
+) -> None:
+    """One dies in the middle of its result, which this process takes no notice of meanwhile."""
+    pool = in_processes(2)
+    items = [Item(file.name, file.path, None) for file in found()]
+    function = partial(roots.roots_cut_off, culprit="a/00.swc")
+    work = pool({index: [item] for index, item in enumerate(items[:2])}, [], roots.roots)
+    assert sum(done is not None for done in work) == 2  # the workers are there
+    work = pool({index: [item] for index, item in enumerate(items[:2])}, [], function)
+    threading.Timer(0.3, sum, [range(3 * 10**8)]).start()  # one step of Python: no other thread has its turn
+    with pytest.raises(WorkerDiedError, match="ended"):
+        list(work)
+    assert [len(done[1]) for done in pool({0: items}, [], roots.roots) if done is not None] == [12]
 
 
 def test_work_is_handed_out_no_faster_than_outcomes_are_taken(
