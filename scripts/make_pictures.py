@@ -3,7 +3,8 @@
     python scripts/make_pictures.py [--into FOLDER]
 
 All are of the sample study. Pictures are small: enough to be read on a screen. The same versions of the
-libraries give the same bytes.
+libraries give the same bytes. The page of the morning after holds times and the machine's name, so it is not
+among them: `morphotone report` makes it.
 """
 
 from __future__ import annotations

@@ -112,7 +112,7 @@ def page(morning: Morning) -> str:
         trim_blocks=True,
         lstrip_blocks=True,
     )
-    script = environment.loader.get_source(environment, "page.js")[0] if environment.loader else ""
+    script = environment.get_template("page.js").render()
     far = distances(morning.cells, morning.groups)
     looks = notable(morning.cells, morning.findings, far)
     columns = _columns(morning.cells)
