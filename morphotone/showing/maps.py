@@ -38,6 +38,7 @@ from morphotone.showing.sheet import (
     axes_at,
     blank_sheet,
     house_style,
+    in_our_font,
     number_text,
     round_length,
     text_width_mm,
@@ -226,7 +227,8 @@ def _draw_head(figure: Figure, portrait: Portrait, width_mm: float) -> None:
 
 
 def _shortened(name: str, width_mm: float, points: float, bold: bool = False) -> str:
-    """Return a name that fits across the page, its middle left out if need be."""
+    """Return a name that can be written across the page, its middle left out if need be."""
+    name = in_our_font(name)
     kept, shown = len(name) // 2, name
     while kept > 1 and text_width_mm(shown, points, bold) > width_mm:
         kept -= 1

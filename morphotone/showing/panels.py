@@ -10,7 +10,6 @@ from matplotlib.figure import Figure
 from matplotlib.patches import Circle, Polygon
 from numpy.typing import NDArray
 
-from morphotone.cable.traced import SPHERES
 from morphotone.questions.portrait import Portrait
 from morphotone.showing.colours import FAINT, INK, Scale, Style, domain_style
 from morphotone.showing.sheet import (
@@ -79,12 +78,11 @@ def draw_cell(figure: Figure, box: Box, portrait: Portrait, scale: Scale, plane:
     """Draw the cell to scale, every frustum as thick as it is and coloured by its value."""
     across, up, depth = PLANES[plane]
     start, end = (ends[1:, [across, up]] for ends in portrait.ends)
-    cable, soma = portrait.cell.cable, portrait.cell.cable.traced.soma
-    outline = _soma_points(portrait)[:, [across, up]]
-    around = np.full(len(outline), soma.radius if soma.rule in (*SPHERES, "three-point") else 0.0)
+    cable = portrait.cell.cable
+    soma, reach = _soma_places(portrait)
     radius = (cable.r_start[1:] + cable.r_end[1:]) / 2.0
-    points = np.concatenate((start, end, outline))
-    extent = Extent(points, np.concatenate((radius, radius, around)), box)
+    points = np.concatenate((start, end, soma[:, [across, up]]))
+    extent = Extent(points, np.concatenate((radius, radius, reach)), box)
     axes = axes_at(figure, box, "cell")
     back_to_front = np.argsort(portrait.ends[1][1:, depth], kind="stable")
     lines = LineCollection(
@@ -101,15 +99,15 @@ def draw_cell(figure: Figure, box: Box, portrait: Portrait, scale: Scale, plane:
     return axes
 
 
-def _soma_points(portrait: Portrait) -> Real:
-    """Return the places the soma takes up in space: its centre, or all its samples."""
+def _soma_places(portrait: Portrait) -> tuple[Real, Real]:
+    """Return places of the soma in space, shape (n, 3), and how far it reaches around each, µm."""
     traced = portrait.cell.cable.traced
     soma = traced.soma
-    if not len(soma.members):
-        return traced.position[[traced.root]]
-    if soma.rule in ("sphere", "three-point"):
-        return soma.centre[None, :]
-    return np.concatenate((soma.centre[None, :], traced.position[soma.members]))
+    if soma.rule in ("outline", "chain"):
+        radius = traced.radius[soma.members] if soma.rule == "chain" else np.zeros(len(soma.members))
+        return traced.position[soma.members], radius
+    place = soma.centre if len(soma.members) else traced.position[traced.root]
+    return place[None, :], np.array([soma.radius])
 
 
 def _draw_soma(axes: Axes, portrait: Portrait, plane: tuple[int, int], scale: Scale, extent: Extent) -> None:

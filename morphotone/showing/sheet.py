@@ -16,7 +16,7 @@ from matplotlib import style
 from matplotlib.axes import Axes
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
-from matplotlib.font_manager import FontProperties
+from matplotlib.font_manager import FontProperties, findfont, get_font
 from matplotlib.textpath import TextToPath
 from numpy.typing import NDArray
 
@@ -39,6 +39,7 @@ _SETTINGS = {
     "font.family": [_FONT],
     "font.size": TEXT,
     "text.color": INK,
+    "text.parse_math": False,  # a file may have $ in its name
     "axes.labelcolor": INK,
     "axes.edgecolor": INK,
     "axes.linewidth": 0.5,
@@ -254,6 +255,12 @@ def _power_text(value: float) -> str:
     lead = f"{value / 10.0**power:.3g}".replace("-", "−")
     raised = str(power).translate(str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹"))
     return f"10{raised}" if lead == "1" else f"{lead}·10{raised}"
+
+
+def in_our_font(text: str) -> str:
+    """Return a text, what the house's font has no sign for replaced by U+FFFD."""
+    font = get_font(findfont(FontProperties(family=_FONT)))
+    return "".join(c if font.get_char_index(ord(c)) else "\N{REPLACEMENT CHARACTER}" for c in text)
 
 
 def text_width_mm(text: str, points: float, bold: bool = False) -> float:

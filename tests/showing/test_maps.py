@@ -202,6 +202,18 @@ def test_drawings_stay_in_their_panels(figure):
                 assert (points <= [right, top]).all()
 
 
+@pytest.mark.parametrize(
+    "swc", [trees.ball_and_stick(), trees.soma_chain(), trees.soma_outline(), SOMA_ALONE]
+)
+def test_the_soma_stays_in_its_panel(swc):
+    """Its outermost ink, from the dots of a thumbnail, keeps off the edge."""
+    image = imread(io.BytesIO(figure_bytes(thumbnail(portrait(swc)), "png", 96)))[..., :3]
+    inked = (image < 0.95).any(axis=2)
+    assert inked.any()
+    for edge in (inked[0], inked[-1], inked[:, 0], inked[:, -1]):
+        assert not edge.any()
+
+
 def test_one_domain_alone_is_drawn_whole_and_several_are_told_apart_by_dashes():
     alone = map_figure(portrait(ONLY_AXON))
     several = map_figure(portrait(trees.with_axon()))
@@ -256,6 +268,17 @@ def test_text_in_svg_is_text():
     root = ElementTree.fromstring(figure_bytes(map_figure(portrait(trees.with_axon())), "svg"))
     said = {"".join(element.itertext()).strip() for element in root.iter("{http://www.w3.org/2000/svg}text")}
     assert {"path from the soma (µm)", "electrotonic distance X", "apical", "axon"} <= said
+
+
+@pytest.mark.parametrize(
+    "name", ["a$b$c", "$", "x_{1}^2 $\\frac{1}{2}$", "<b>&amp;", "細胞 7 Ünïcøde", "%s {0} \\n"]
+)
+def test_a_name_is_written_as_it_is_but_for_signs_the_font_lacks(name):
+    figure = map_figure(portrait(trees.ball_and_stick(), name=f"{name}.swc"))
+    assert overlapping(figure) == cut_off(figure) == []
+    root = ElementTree.fromstring(figure_bytes(figure, "svg"))
+    said = {"".join(element.itertext()).strip() for element in root.iter("{http://www.w3.org/2000/svg}text")}
+    assert name.replace("細胞", "\ufffd\ufffd") in said
 
 
 def test_fonts_are_embedded_in_pdf():
