@@ -180,9 +180,9 @@ def _alone(item: Item, function: Callable[[Batch], Worked], pool: Pool, limits: 
     for _ in range(_TRIES_ALONE):
         begun = time.monotonic()
         with suppress(WorkerDiedError):
-            for done in pool({0: [item]}, [], function):
-                if done is not None:
-                    return done[1]
+            # To its end: a pool that is left before has its workers killed, and the next file waits for new ones.
+            ((_, worked),) = [done for done in pool({0: [item]}, [], function) if done is not None]
+            return worked
         if limits.seconds is not None and time.monotonic() - begun > limits.seconds:
             return Worked([turned_away(item.name, "too_long", limits.too_long())])
     sentence = (
