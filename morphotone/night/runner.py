@@ -180,7 +180,7 @@ def _alone(item: Item, function: Callable[[Batch], Worked], pool: Pool, limits: 
     for _ in range(_TRIES_ALONE):
         begun = time.monotonic()
         with suppress(WorkerDiedError):
-            # To its end: a pool that is left before has its workers killed, and the next file waits for new ones.
+            # To its end: leaving a pool early kills its workers, and the next file waits for others.
             ((_, worked),) = [done for done in pool({0: [item]}, [], function) if done is not None]
             return worked
         if limits.seconds is not None and time.monotonic() - begun > limits.seconds:
