@@ -273,7 +273,7 @@ def _details(morning: Morning, looks: Sequence[Notable]) -> str:
     """Return what an opened row tells, as JSON for the script."""
     findings: dict[str, list[list[str]]] = {}
     columns = morning.findings[["file", "severity", "code", "sentence"]].astype(str)
-    for file, *told in columns.itertuples(index=False):
+    for file, *told in sorted(columns.itertuples(index=False), key=lambda row: _weight(str(row.severity))):
         findings.setdefault(file, []).append(told)
     why = {look.row: list(look.reasons) for look in looks}
     cells = []
@@ -320,8 +320,11 @@ def _kinds(morning: Morning) -> list[Seen]:
                 away=tuple((away[file], file) for file in files if file in away),
             )
         )
-    order = {severity: place for place, severity in enumerate(_SEVERITIES)}
-    return sorted(kinds, key=lambda one: (order.get(one.severity, 9), -len(one.analysed) - len(one.away)))
+    return sorted(kinds, key=lambda one: (_weight(one.severity), -len(one.analysed) - len(one.away)))
+
+
+def _weight(severity: str) -> int:
+    return _SEVERITIES.index(severity) if severity in _SEVERITIES else len(_SEVERITIES)
 
 
 def _away(turned_away: pd.DataFrame) -> list[tuple[str, list[tuple[int, str, str]]]]:

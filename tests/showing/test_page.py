@@ -152,7 +152,7 @@ def test_findings_are_counted_with_title_and_effect_and_lead_to_their_files():
     found = parsed(study())
     assert f"{CATALOGUE['flat'].title} flat , 2 files {CATALOGUE['flat'].effect}" in found.words
     marks = [text for name, text in found.texts if name == "span"]
-    assert marks == ["unfit", "doubtful", "doubtful", "note"]
+    assert marks[:4] == ["unfit", "doubtful", "doubtful", "note"]
     assert {"href": "#cell-3"} in found.all("a")
     assert {"href": "#away-0"} in found.all("a")
 
@@ -195,6 +195,20 @@ def test_pictures_are_named_in_the_data_only():
     assert html.count("t.png") == 1
     data = html.partition('id="details">')[2].partition("</script>")[0]
     assert json.loads(data)["cells"][1][1] == ["f.png", "t.png", "m.glb", "s.csv"]
+
+
+def test_the_findings_of_a_cell_come_the_weightiest_first():
+    file = "night/cell_0000.swc"
+    kinds = [("columns_extra", "note"), ("flat", "doubtful"), ("soma_outline", "note"), ("soma_odd", "unfit")]
+    findings = [{"file": file, "code": code, "severity": severity} for code, severity in kinds]
+    html = page(morning_of(cells_of(1), findings))
+    data = json.loads(html.partition('id="details">')[2].partition("</script>")[0])
+    assert [code for _, code, _ in data["cells"][0][2]] == [
+        "soma_odd",
+        "flat",
+        "columns_extra",
+        "soma_outline",
+    ]
 
 
 def test_cells_and_lines_without_partner_are_named():
