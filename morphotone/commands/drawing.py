@@ -7,7 +7,7 @@ from pathlib import Path
 import numpy as np
 
 from morphotone.commands.contents import content_of, is_known
-from morphotone.errors import ReadingError
+from morphotone.errors import ReadingError, ResultsError
 from morphotone.night.outcome import Item, Outcome, csv_line
 from morphotone.night.results import atomic_bytes, spellings
 from morphotone.questions.marks import marks_of
@@ -51,7 +51,9 @@ class Work:
 
 def outcomes(items: list[Item], work: Work) -> list[Outcome]:
     """Draw a batch of the night's items; a file whose bytes are known is left as it is."""
-    return [_outcome(item, work) for item in items]
+    # Absurd files (kept although unfit) may overflow; `contents` turns away what cannot be drawn.
+    with np.errstate(over="ignore", under="ignore", divide="ignore", invalid="ignore"):
+        return [_outcome(item, work) for item in items]
 
 
 def _outcome(item: Item, work: Work) -> Outcome:
@@ -67,13 +69,20 @@ def _outcome(item: Item, work: Work) -> Outcome:
     except ReadingError as error:
         answer = Answer(item.name, rec.sha256, len(rec.number), {}, reason=error.reason, sentence=str(error))
         return _turned_away(answer, work)
-    for column, files in made.items():
-        for path, data in zip(paths[column], files, strict=True):
-            with atomic_bytes(work.into / path) as stream:
-                stream.write(data)
+    try:
+        _write(work.into, paths, made)
+    except ResultsError as error:  # without a hash, so that the next run draws it
+        return _turned_away(Answer(item.name, "", 0, {}, reason="not_written", sentence=str(error)), work)
     row = csv_line(item.name, rec.cell, *(next(iter(paths.get(column, [])), "") for column in COLUMNS))
     parts = {TABLE: row.encode(), SITES_TABLE: site_lines(away)}
     return Outcome(item.name, "analysed", rec.sha256, len(rec.number), parts)
+
+
+def _write(into: Path, paths: Mapping[str, list[str]], made: Mapping[str, list[bytes]]) -> None:
+    for column, files in made.items():
+        for path, data in zip(paths[column], files, strict=True):
+            with atomic_bytes(into / path) as stream:
+                stream.write(data)
 
 
 def drawn(
@@ -90,14 +99,12 @@ def drawn(
     if isinstance(prepared, Answer):
         return prepared, ()
     assumptions, hz = work.request.assumptions, work.shown.hz
-    # Absurd files (kept although unfit) may overflow; `contents` turns away what cannot be drawn.
-    with np.errstate(over="ignore", under="ignore", divide="ignore", invalid="ignore"):
-        (cell,) = cells_of([prepared], work.request)
-        marks: Marks | None = None
-        away: tuple[TurnedAwaySite, ...] = ()
-        if name in work.sites:
-            marks, away = marks_of(prepared, work.sites[name], assumptions, hz, work.farthest_um)
-        return portrait_of(cell, hz, work.shown.colour, marks), away
+    (cell,) = cells_of([prepared], work.request)
+    marks: Marks | None = None
+    away: tuple[TurnedAwaySite, ...] = ()
+    if name in work.sites:
+        marks, away = marks_of(prepared, work.sites[name], assumptions, hz, work.farthest_um)
+    return portrait_of(cell, hz, work.shown.colour, marks), away
 
 
 def _turned_away(answer: Answer, work: Work) -> Outcome:

@@ -5,14 +5,14 @@ from typing import Any
 
 import numpy as np
 
-from morphotone.errors import ReadingError
+from morphotone.errors import MorphotoneError, ReadingError
 from morphotone.night.outcome import csv_line
 from morphotone.questions.portrait import Portrait
 from morphotone.showing.keys import column_words, is_logarithmic
-from morphotone.showing.maps import colour_bar, map_figure, thumbnail
-from morphotone.showing.mesh import MeshKind, membrane_mesh, mesh_bytes
-from morphotone.showing.panels import Plane
-from morphotone.showing.sheet import Format, figure_bytes
+from morphotone.showing.maps import WIDTHS_MM, colour_bar, map_figure, thumbnail
+from morphotone.showing.mesh import MESH_KINDS, MeshKind, membrane_mesh, mesh_bytes
+from morphotone.showing.panels import PLANES, Plane
+from morphotone.showing.sheet import FORMATS, Format, figure_bytes
 from morphotone.showing.tables import csv_texts
 
 #: Columns of ``maps.csv`` after the names, each the path of a file, empty where none was asked for.
@@ -38,6 +38,11 @@ class MapRequest:
         Column of the table by sample that colours; log attenuation toward the soma if None.
     mesh : {"glb", "ply", "obj"} or None
         Kind of mesh, if one is wanted.
+
+    Raises
+    ------
+    MorphotoneError
+        One of them is none of these.
     """
 
     formats: tuple[Format, ...] = ("png",)
@@ -46,6 +51,19 @@ class MapRequest:
     hz: float = 0.0
     colour: str | None = None
     mesh: MeshKind | None = None
+
+    def __post_init__(self) -> None:
+        allowed = [
+            (set(self.formats) - set(FORMATS) or not self.formats, "formats", FORMATS),
+            (self.width_mm not in WIDTHS_MM, "width_mm", WIDTHS_MM),
+            (self.plane not in PLANES, "plane", tuple(PLANES)),
+            (self.mesh not in (None, *MESH_KINDS), "mesh", MESH_KINDS),
+        ]
+        for wrong, name, known in allowed:
+            if wrong:
+                raise MorphotoneError(
+                    f"read {name} = {getattr(self, name)!r}, expected {' or '.join(map(str, known))}"
+                )
 
     def to_dict(self) -> dict[str, Any]:
         """Return the request as JSON types."""

@@ -183,6 +183,17 @@ def test_beside_a_single_cell_sites_of_others_are_nobodys_fault(small, maps, tmp
     assert "5 sites = 1 marked + 0 turned away + 4 of other cells\n" in capsys.readouterr().out
 
 
+def test_what_the_disk_refuses_is_said_and_tried_again(small, maps, capsys):
+    fill(maps, {"thumbnails": "a file in the place of a folder"})
+    assert mapped(small / "b.swc", maps) == 1
+    (away,) = rows(maps / "turned_away.csv")
+    assert (away["file"], away["reason"]) == ("b.swc", "not_written")
+    assert "cannot be written" in away["sentence"]
+    (maps / "thumbnails").unlink()
+    assert mapped(small / "b.swc", maps) == 0
+    assert rows(maps / "turned_away.csv") == []
+
+
 def test_strict_stops_at_the_first_file_turned_away(small, maps, capsys):
     assert mapped(small, maps, "--strict") == 1
     assert "deep/broken.swc,not_a_number" in capsys.readouterr().err
@@ -209,3 +220,18 @@ def test_one_map_from_python(small):
         morphotone.draw_map(small / "deep/unfit.swc")
     with pytest.raises(ReadingError, match=r"gone\.swc"):
         morphotone.draw_map(small / "gone.swc")
+
+
+@pytest.mark.parametrize(
+    ("asked", "said"),
+    [
+        ({"formats": ("gif",)}, r"read formats = \('gif',\), expected png or svg or pdf"),
+        ({"formats": ()}, "read formats"),
+        ({"width_mm": 90}, "read width_mm = 90, expected 85 or 175"),
+        ({"plane": "zx"}, "read plane = 'zx', expected xy or xz or yz"),
+        ({"mesh": "stl"}, "read mesh = 'stl', expected glb or ply or obj"),
+    ],
+)
+def test_what_cannot_be_drawn_is_refused(asked, said):
+    with pytest.raises(MorphotoneError, match=said):
+        morphotone.MapRequest(**asked)
