@@ -1,6 +1,7 @@
 """What a worker does for `morphotone map`: from a file to the files of its cell's map."""
 
 from collections.abc import Iterable, Iterator, Mapping
+from contextlib import suppress
 from dataclasses import astuple, dataclass, field
 from pathlib import Path
 
@@ -146,7 +147,8 @@ def delete_stale(names: Iterable[str], kept: Iterable[str], work: Work) -> None:
         for spelling in spellings(name):
             for path in _flat(places(spelling, work.shown)):
                 if path not in needed:
-                    (work.into / path).unlink(missing_ok=True)
+                    with suppress(OSError):  # what stays behind, no table names
+                        (work.into / path).unlink(missing_ok=True)
 
 
 def _paths(name: str, work: Work) -> Iterator[str]:
