@@ -11,13 +11,14 @@ from matplotlib.image import imread
 
 CHECKOUT = Path(__file__).parents[1]
 FOLDER = CHECKOUT / "sample_morphologies" / "pictures"
-PICTURES = runpy.run_path(str(CHECKOUT / "scripts" / "make_pictures.py"))["PICTURES"]
+SCRIPT = runpy.run_path(str(CHECKOUT / "scripts" / "make_pictures.py"))
+PICTURES = SCRIPT["PICTURES"]
 README = (CHECKOUT / "README.md").read_text(encoding="utf-8")
 
 
 def test_readme_shows_what_is_drawn_and_nothing_else():
     shown = re.findall(r"\[[^]]+\]\(sample_morphologies/pictures/([^)]+)\)", README)
-    assert set(shown) == set(PICTURES) == {path.name for path in FOLDER.iterdir()}
+    assert set(shown) == {*PICTURES, SCRIPT["PAGE_PICTURE"]} == {path.name for path in FOLDER.iterdir()}
     assert sum(path.stat().st_size for path in FOLDER.iterdir()) < 1_000_000
 
 
