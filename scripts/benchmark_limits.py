@@ -8,6 +8,7 @@ from __future__ import annotations
 from collections import deque
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
+from functools import partial
 from pathlib import Path
 from tempfile import TemporaryDirectory
 
@@ -15,8 +16,10 @@ from benchmark_measures import AT_REST, Bench, Row, row, seconds_of
 from distributed import LocalCluster
 
 from morphotone.commands.survey import outcomes
+from morphotone.night.attempt import attempt
 from morphotone.night.cluster import Cluster
 from morphotone.night.ledger import Ledger
+from morphotone.night.limits import NO_LIMITS
 from morphotone.night.outcome import TURNED_AWAY, TURNED_AWAY_HEADER, Item, Outcome
 from morphotone.night.results import export
 
@@ -60,7 +63,8 @@ def _rates(batches: list[list[Item]], pretended: Pretended, cluster: Cluster) ->
         recording = sum(seconds_of(ledger.record, pretended(batch)) for batch in batches)
         writing = seconds_of(export, ledger, names, headers)
         size = ledger.path.stat().st_size / 1e6
-    handing = seconds_of(deque, cluster.pool(dict(enumerate(batches)), [], pretended), 0)
+    work = partial(attempt, function=pretended, limits=NO_LIMITS, ends_process=True)
+    handing = seconds_of(deque, cluster.pool(dict(enumerate(batches)), [], work), 0)
     return {
         "taken up by the ledger": len(names) / recording,
         "written to tables": len(names) / writing,
