@@ -15,7 +15,7 @@ from contextlib import contextmanager
 from importlib import import_module
 from types import FrameType
 
-from morphotone.errors import MorphotoneError, ReadingError, TurnedAwayError
+from morphotone.errors import MorphotoneError, TurnedAwayError
 
 COMMANDS = {
     "vet": "which reconstructions can be trusted for cable work, and what is wrong with the others",
@@ -70,7 +70,7 @@ def main(argv: Sequence[str] | None = None) -> int:
         if args.debug:
             traceback.print_exc()
         print(f"morphotone {chosen}: {error}", file=sys.stderr)
-        return TURNED_AWAY if isinstance(error, ReadingError | TurnedAwayError) else WRONG_USAGE
+        return TURNED_AWAY if isinstance(error, TurnedAwayError) else WRONG_USAGE
 
 
 def _called(command: str, args: argparse.Namespace) -> int:

@@ -13,13 +13,15 @@ from morphotone.night.outcome import Item, Outcome, csv_line
 from morphotone.night.results import atomic_bytes, spellings
 from morphotone.questions.marks import marks_of
 from morphotone.questions.placing import FARTHEST_UM
-from morphotone.questions.portrait import Marks, Portrait, portrait_of
+from morphotone.questions.portrait import Marks, Portrait, check_drawable, portrait_of
 from morphotone.questions.survey import Answer, Request, cells_of, prepare
 from morphotone.reading.sites import Sites, TurnedAwaySite
 from morphotone.showing.map_files import COLUMNS, MapRequest, contents, places
 
 TABLE, SITES_TABLE = "maps", "turned_away_sites"
 TABLE_COLUMNS = ("file", "cell", *COLUMNS)
+# The sizes in files kept although unfit may overflow; what cannot be drawn is turned away.
+_ABSURD = np.errstate(over="ignore", under="ignore", divide="ignore", invalid="ignore")
 
 
 @dataclass(frozen=True, eq=False)
@@ -52,11 +54,10 @@ class Work:
 
 def outcomes(items: list[Item], work: Work) -> list[Outcome]:
     """Draw a batch of the night's items; a file whose bytes are known is left as it is."""
-    # Absurd files (kept although unfit) may overflow; `contents` turns away what cannot be drawn.
-    with np.errstate(over="ignore", under="ignore", divide="ignore", invalid="ignore"):
-        return [_outcome(item, work) for item in items]
+    return [_outcome(item, work) for item in items]
 
 
+@_ABSURD
 def _outcome(item: Item, work: Work) -> Outcome:
     content = content_of(item)
     if is_known(content, item.known_sha256):
@@ -65,16 +66,13 @@ def _outcome(item: Item, work: Work) -> Outcome:
     if isinstance(portrait, Answer):
         return _turned_away(portrait, work)
     rec, paths = portrait.cell.rec, places(work.names[item.name], work.shown)
+    made = contents(portrait, item.name, work.shown)
     try:
-        made = contents(portrait, item.name, work.shown)
-    except ReadingError as error:
-        answer = Answer(item.name, rec.sha256, len(rec.number), {}, reason=error.reason, sentence=str(error))
-        return _turned_away(answer, work)
-    try:
-        _write(work.into, paths, made)
+        _write(work.into, paths, made.files)
     except ResultsError as error:  # without a hash, so that the next run draws it
         return _turned_away(Answer(item.name, "", 0, {}, reason="not_written", sentence=str(error)), work)
-    row = csv_line(item.name, rec.cell, *(next(iter(paths.get(column, [])), "") for column in COLUMNS))
+    fields = {column: some[0] for column, some in paths.items() if some} | made.areas()
+    row = csv_line(item.name, rec.cell, *(fields.get(column, "") for column in COLUMNS))
     parts = {TABLE: row.encode(), SITES_TABLE: site_lines(away)}
     return Outcome(item.name, "analysed", rec.sha256, len(rec.number), parts)
 
@@ -86,6 +84,7 @@ def _write(into: Path, paths: Mapping[str, list[str]], made: Mapping[str, list[b
                 stream.write(data)
 
 
+@_ABSURD
 def drawn(
     name: str, content: bytes | ReadingError, work: Work
 ) -> tuple[Portrait | Answer, tuple[TurnedAwaySite, ...]]:
@@ -105,7 +104,13 @@ def drawn(
     away: tuple[TurnedAwaySite, ...] = ()
     if name in work.sites:
         marks, away = marks_of(prepared, work.sites[name], assumptions, hz, work.farthest_um)
-    return portrait_of(cell, hz, work.shown.colour, marks), away
+    portrait = portrait_of(cell, hz, work.shown.colour, marks)
+    try:
+        check_drawable(portrait)
+    except ReadingError as error:
+        rec = cell.rec
+        return Answer(name, rec.sha256, len(rec.number), {}, reason=error.reason, sentence=str(error)), ()
+    return portrait, away
 
 
 def _turned_away(answer: Answer, work: Work) -> Outcome:

@@ -28,6 +28,9 @@ from morphotone.commands.drawing import (
 from morphotone.commands.marked import sites_on
 from morphotone.commands.options import (
     add_assumption_options,
+    add_farthest,
+    add_keep_unfit,
+    add_pattern,
     add_time_options,
     assumptions_of,
     current_of,
@@ -47,15 +50,15 @@ from morphotone.questions.portrait import COLOUR
 from morphotone.questions.survey import SPECIMEN, Answer, Request
 from morphotone.questions.time_axis import TimeRequest
 from morphotone.reading.swc import read_bytes
-from morphotone.showing.map_files import MapRequest
+from morphotone.showing.map_files import AREAS, MapRequest
 from morphotone.showing.maps import WIDTHS_MM, map_figure
-from morphotone.showing.mesh import MESH_KINDS
+from morphotone.showing.mesh import BEND_ERROR, MESH_KINDS
 from morphotone.showing.panels import PLANES, Plane
 from morphotone.showing.sheet import FORMATS
 from morphotone.showing.tables import csv_table
 
 NAME = "map"
-
+_PACKAGES = ("matplotlib", "pillow", "trimesh")  # which draw and write the files
 
 _EPILOG = """\
 the figure: the cell to scale, coloured by attenuation; attenuation against path and X, every branch a line,
@@ -68,7 +71,7 @@ what is written into MAPS, one of each per cell:
   meshes/           with --mesh: the membrane in space, coloured, and its scale of colours as PNG
   samples/          the table by sample, as `morphotone survey --samples` writes it
 and for all of them:
-  maps.csv          one row per cell drawn, with the paths of its files
+  maps.csv          one row per cell drawn, with the paths of its files and the mesh's area beside the cable's
   turned_away.csv   one row per file not drawn, with the reason
   turned_away_sites.csv  with --synapses: one row per site not marked, with the reason
   assumptions.toml, run.json, ledger.sqlite  as of a survey: the same command again goes on from there
@@ -88,8 +91,8 @@ class Maps:
     Attributes
     ----------
     maps : DataFrame
-        One row per cell drawn: ``file``, ``cell`` and the paths of its files below the folder, empty where
-        there is none.
+        One row per cell drawn, columns as in README; paths of files that there are none of are empty text,
+        areas without a mesh NaN.
     turned_away : DataFrame
         One row per file not drawn.
     turned_away_sites : DataFrame
@@ -260,10 +263,11 @@ def draw_maps(
         _write(ledger, listed, request, away if sites.file else None)
         details = {"path": str(path), "patterns": list(patterns), **asked}
         details |= {"sites": sites.counts(away), "warnings": list(request.assumptions.warnings)}
-        record = run_record(started=started, tally=tally, ledger=ledger, names=listed, details=details)
+        record = run_record(
+            started=started, tally=tally, ledger=ledger, names=listed, details=details, packages=_PACKAGES
+        )
         write_record(into / "run.json", record)
-    table, turned_away = (_read(into / f"{name}.csv") for name in (TABLE, TURNED_AWAY))
-    return Maps(table, turned_away, away, sites.counts(away), tally)
+    return Maps(_read_maps(into), _read(into / f"{TURNED_AWAY}.csv"), away, sites.counts(away), tally)
 
 
 def _one_file(path: Path) -> Found:
@@ -312,6 +316,13 @@ def _write(ledger: Ledger, listed: Sequence[str], request: Request, away: pd.Dat
         stream.write(request.assumptions.to_toml())
 
 
+def _read_maps(into: Path) -> pd.DataFrame:
+    table = _read(into / f"{TABLE}.csv")
+    numbers = {column: pd.to_numeric(table[column]) for column in AREAS[:-1]}
+    agrees = table[AREAS[-1]].map({"True": True, "False": False, "": pd.NA}).astype("boolean")
+    return table.assign(**numbers, **{AREAS[-1]: agrees})
+
+
 def _read(path: Path) -> pd.DataFrame:
     """Read a table of words back, an empty cell as no text."""
     table: pd.DataFrame = pd.read_csv(path, keep_default_na=False, dtype="str")
@@ -341,13 +352,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         help=f"numeric column of the table by sample that colours (default: {COLOUR})",
     )
     parser.add_argument("--synapses", metavar="SITES.csv", type=Path, help="mark these sites by rank")
-    parser.add_argument(
-        "--farthest-um",
-        metavar="UM",
-        type=float,
-        default=FARTHEST_UM,
-        help="turn away sites in space farther than this from the cable, in um (default: %(default)g)",
-    )
+    add_farthest(parser)
     parser.add_argument(
         "--figure",
         choices=FORMATS,
@@ -364,14 +369,8 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
         "--mesh", choices=MESH_KINDS, help="write the membrane in space too, in um, the value at every vertex"
     )
-    parser.add_argument("--keep-unfit", action="store_true", help="draw files of grade unfit too")
-    parser.add_argument(
-        "--pattern",
-        metavar="GLOB",
-        nargs="+",
-        default=list(PATTERNS),
-        help="names of the files to take (default: %(default)s; upper and lower case alike)",
-    )
+    add_keep_unfit(parser, "draw")
+    add_pattern(parser)
     add_worker_options(parser)
     parser.add_argument("--strict", action="store_true", help="stop at the first file turned away")
 
@@ -413,7 +412,16 @@ def run(args: argparse.Namespace) -> int:
             f"{sites['sites']} sites = {sites['marked']} marked + {sites['turned_away']} turned away{other}"
         )
     print(f"maps: {args.into}")
-    if tally.turned_away:
+    odd = int((~made.maps["area_agrees"].fillna(True)).sum())
+    if odd:
+        print(
+            f"note: {odd} {'mesh has' if odd == 1 else 'meshes have'} another area than the cable, by more "
+            f"than facet_error and {BEND_ERROR:.1%} of it; area_agrees in {args.into / 'maps.csv'} says which"
+        )
+    if tally.turned_away and args.path.is_file():
+        away = made.turned_away.set_index("file")
+        print(f"  {away.loc[_one_file(args.path).name, 'sentence']}")
+    elif tally.turned_away:
         print(f"why files were turned away: {args.into / 'turned_away.csv'}")
     if sites and sites["turned_away"]:
         print(f"why sites were turned away: {args.into / 'turned_away_sites.csv'}")

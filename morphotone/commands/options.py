@@ -1,14 +1,42 @@
 """Options that several commands have, and what they come to."""
 
 import argparse
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import replace
+from math import inf, nan
 from pathlib import Path
 
 from morphotone.cable.assumptions import Assumptions
 from morphotone.cable.synaptic import SynapticCurrent
 from morphotone.commands.assumptions import load_assumptions, print_warnings
+from morphotone.night.folder import PATTERNS
+from morphotone.questions.placing import FARTHEST_UM
 from morphotone.questions.time_axis import TimeRequest
+
+
+def positive(text: str) -> float:
+    """Return an option's number, which is above 0."""
+    return _number(text, lambda value: 0.0 < value < inf, "a number greater than 0")
+
+
+def not_negative(text: str) -> float:
+    """Return an option's number, which is 0 or more."""
+    return _number(text, lambda value: 0.0 <= value < inf, "0 or a greater number")
+
+
+def whole(text: str) -> int:
+    """Return an option's number, which is whole and 0 or more."""
+    return int(_number(text, lambda value: value >= 0 and value.is_integer(), "0 or a greater whole number"))
+
+
+def _number(text: str, allowed: Callable[[float], bool], expected: str) -> float:
+    try:
+        value = float(text)
+    except ValueError:
+        value = nan
+    if not allowed(value):
+        raise argparse.ArgumentTypeError(f"read {text!r}, expected {expected}")
+    return value
 
 
 def add_assumption_options(parser: argparse.ArgumentParser) -> None:
@@ -57,6 +85,33 @@ def add_time_options(parser: argparse.ArgumentParser) -> None:
         nargs=2,
         help="give the responses to a brief synaptic current too: its rise and decay times in ms, equal for "
         "an alpha function; in a table by sample from every sample, else from the soma and the farthest tip",
+    )
+
+
+def add_keep_unfit(parser: argparse.ArgumentParser, what: str) -> None:
+    """Add --keep-unfit, its help led by what the command does with such files."""
+    parser.add_argument("--keep-unfit", action="store_true", help=f"{what} files of grade unfit too, flagged")
+
+
+def add_pattern(parser: argparse.ArgumentParser) -> None:
+    """Add --pattern."""
+    parser.add_argument(
+        "--pattern",
+        metavar="GLOB",
+        nargs="+",
+        default=list(PATTERNS),
+        help="names of the files to take from a folder (default: %(default)s; upper and lower case alike)",
+    )
+
+
+def add_farthest(parser: argparse.ArgumentParser) -> None:
+    """Add --farthest-um."""
+    parser.add_argument(
+        "--farthest-um",
+        metavar="UM",
+        type=not_negative,
+        default=FARTHEST_UM,
+        help="turn away sites in space farther than this from the cable, in um (default: %(default)g)",
     )
 
 

@@ -14,7 +14,12 @@ import numpy as np
 import pandas as pd
 
 from morphotone.cable.assumptions import Assumptions
-from morphotone.commands.options import add_assumption_options, assumptions_of
+from morphotone.commands.options import (
+    add_assumption_options,
+    add_farthest,
+    add_keep_unfit,
+    assumptions_of,
+)
 from morphotone.commands.vet import files_of
 from morphotone.errors import MorphotoneError, ReadingError, ResultsError
 from morphotone.night.folder import Found
@@ -94,13 +99,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         nargs="+",
         help="frequencies besides 0 Hz, in Hz (default: those of the assumptions file, else 100)",
     )
-    parser.add_argument(
-        "--farthest-um",
-        metavar="UM",
-        type=float,
-        default=FARTHEST_UM,
-        help="turn away sites in space farther than this from the cable, in um (default: %(default)g)",
-    )
+    add_farthest(parser)
     parser.add_argument("--pairs", choices=PAIRS, help="write all pairs of sites of each cell")
     parser.add_argument(
         "--between", metavar="GROUP", nargs=2, help="with --pairs: only from sites of one group to another's"
@@ -119,7 +118,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         metavar="SITE",
         help="with --clamp-MOhm: the clamp is at the site of this label, in cells that have it",
     )
-    parser.add_argument("--keep-unfit", action="store_true", help="rank on files of grade unfit too")
+    add_keep_unfit(parser, "rank on")
 
 
 def run(args: argparse.Namespace) -> int:

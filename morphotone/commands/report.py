@@ -2,6 +2,7 @@
 
 import argparse
 import os
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from importlib.metadata import version
 from pathlib import Path
@@ -13,7 +14,8 @@ from morphotone.commands.finished import Finished, read_finished
 from morphotone.commands.survey import read_table
 from morphotone.errors import MorphotoneError, ResultsError
 from morphotone.night.results import atomic
-from morphotone.questions.groups import Grouped, grouped
+from morphotone.questions.groups import Grouped, Missing, grouped
+from morphotone.questions.units import check_groups
 from morphotone.reading.groups import groups_of, read_groups
 from morphotone.showing.page import NEEDED, NUMBERS, Morning, Picture, page
 
@@ -37,7 +39,7 @@ example:
   morphotone survey sample_morphologies --into results
   morphotone report results --groups sample_morphologies/cells.csv --by class
 
-exit code: 0 the page is written, 1 the table of groups cannot be read, 2 wrong usage or unusable results
+exit code: 0 the page is written, 2 wrong usage or unusable groups or results
 """
 
 
@@ -50,7 +52,7 @@ class Report:
     html : str
         The page, whole. Links in it are relative to the folder it was made for.
     remarks : tuple of str
-        What is odd about the results or the pictures, a sentence each; they stand on the page too.
+        What is odd about the results, the pictures or the groups, a sentence each; it stands on the page too.
     """
 
     html: str
@@ -114,7 +116,7 @@ def report(
     if into is not None:
         with atomic(target) as stream:
             stream.write(html)
-    return Report(html, tuple(morning.remarks))
+    return Report(html, (*morning.remarks, *_without_group(morning.missing)))
 
 
 def _check_columns(finished: Finished) -> None:
@@ -138,10 +140,16 @@ def _grouped(finished: Finished, groups: str | os.PathLike[str] | pd.DataFrame) 
 
 
 def _group_of_each(found: Grouped, by: str) -> list[str]:
-    if by not in found.groups:
-        columns = ", ".join(map(str, found.groups.columns)) or "none besides the cell's name"
-        raise MorphotoneError(f"--by {by}: no such column in the table of groups, which has {columns}")
+    check_groups([by], found.groups)
     return [" ".join(str(name).split()) for name in found.groups[by]]
+
+
+def _without_group(missing: Sequence[Missing]) -> list[str]:
+    """Return a sentence about analysed cells and rows of groups that do not meet; the page names them."""
+    cells = sum(one.line is None for one in missing)
+    counts = [(cells, "of the analysed cells"), (len(missing) - cells, "of the lines of the table of groups")]
+    told = [f"{count} {what}" for count, what in counts if count]
+    return [f"in no group: {' and '.join(told)}; the page says which"] if told else []
 
 
 def _tables(folder: Path, page_folder: Path) -> dict[str, str]:

@@ -20,6 +20,8 @@ from morphotone.cable.assumptions import Assumptions
 from morphotone.commands.contents import content_of, is_known
 from morphotone.commands.options import (
     add_assumption_options,
+    add_keep_unfit,
+    add_pattern,
     add_time_options,
     assumptions_of,
     current_of,
@@ -310,14 +312,8 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         default=0,
         help="give the cell's own K slowest time constants too, in ms, 1 to 20",
     )
-    parser.add_argument("--keep-unfit", action="store_true", help="analyse files of grade unfit too, flagged")
-    parser.add_argument(
-        "--pattern",
-        metavar="GLOB",
-        nargs="+",
-        default=list(PATTERNS),
-        help="names of the files to take (default: %(default)s; upper and lower case alike)",
-    )
+    add_keep_unfit(parser, "analyse")
+    add_pattern(parser)
     add_worker_options(parser, cluster=True)
     parser.add_argument("--strict", action="store_true", help="stop at the first file turned away")
     parser.add_argument(

@@ -13,7 +13,7 @@ from pathlib import Path
 import pandas as pd
 
 from morphotone.commands.finished import Finished, read_finished
-from morphotone.errors import MorphotoneError, ReadingError, ResultsError
+from morphotone.errors import ResultsError
 from morphotone.night.ledger import FILE as LEDGER
 from morphotone.night.record import record_of, write_record
 from morphotone.night.results import atomic, atomic_bytes
@@ -197,7 +197,8 @@ def _made(survey: Finished, counted: Units, how: Bootstrap, family: Family) -> T
 def _grades(source: Source) -> list[str]:
     grades = source.used["grade"].value_counts()
     return [
-        f"{grades[grade]} of {len(source.used)} cells are of grade {grade}; findings.csv says why"
+        f"{grades[grade]} of {len(source.used)} cells {'is' if grades[grade] == 1 else 'are'} of grade "
+        f"{grade}; findings.csv says why"
         for grade in ("doubtful", "unfit")
         if grade in grades
     ]
@@ -270,19 +271,16 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 def run(args: argparse.Namespace) -> int:
     """Tabulate, say what was found, and return the exit code."""
     into = args.into or args.results / FOLDER
-    try:
-        made = tabulate(
-            args.results,
-            args.groups,
-            args.by,
-            into,
-            columns=args.columns,
-            nested=args.nested,
-            mean_over=args.mean_over,
-            family=args.family,
-        )
-    except ReadingError as error:  # no cell is turned away here: the call cannot be answered
-        raise MorphotoneError(str(error)) from error
+    made = tabulate(
+        args.results,
+        args.groups,
+        args.by,
+        into,
+        columns=args.columns,
+        nested=args.nested,
+        mean_over=args.mean_over,
+        family=args.family,
+    )
     for remark in made.remarks:
         print(f"note: {remark}", file=sys.stderr)
     groups = made.summary[made.summary["column"] == made.summary["column"].iloc[0]]

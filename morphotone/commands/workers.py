@@ -5,10 +5,10 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from importlib import import_module
-from math import inf
 
 import joblib
 
+from morphotone.commands.options import positive, whole
 from morphotone.errors import MorphotoneError
 from morphotone.night.limits import USUAL_MINUTES, Limits, usual_limits
 from morphotone.night.pool import Pool, pool_of
@@ -37,7 +37,7 @@ def add_worker_options(parser: argparse.ArgumentParser, *, cluster: bool = False
     """Add --workers, --cluster where it is of use, and the limits for one cell."""
     who = parser.add_mutually_exclusive_group()
     who.add_argument(
-        "--workers", metavar="N", type=int, default=0, help="processes (default: one per processor)"
+        "--workers", metavar="N", type=whole, default=0, help="processes (default: one per processor)"
     )
     if cluster:
         who.add_argument(
@@ -48,24 +48,17 @@ def add_worker_options(parser: argparse.ArgumentParser, *, cluster: bool = False
     parser.add_argument(
         "--minutes-per-cell",
         metavar="MIN",
-        type=_positive,
+        type=positive,
         default=USUAL_MINUTES,
         help="time after which a file is turned away as too_long (default: %(default)g)",
     )
     parser.add_argument(
         "--GB-per-cell",
         metavar="GB",
-        type=_positive,
+        type=positive,
         help="memory beyond which a file is turned away as too_large (default: the free memory shared out "
         "among the workers; of a cluster none)",
     )
-
-
-def _positive(text: str) -> float:
-    value = float(text)
-    if not 0 < value < inf:
-        raise argparse.ArgumentTypeError(f"read {text!r}, expected a number greater than 0")
-    return value
 
 
 @contextmanager

@@ -84,7 +84,7 @@ def _check_folder(top: Path) -> None:
     """Refuse at once what cannot be searched at all."""
     if not top.exists():
         raise MorphotoneError(
-            f"{top}: there is no such folder; check the spelling, or that its disk is there"
+            f"{top}: there is no such file or folder; check the spelling, or that its disk is there"
         )
     if not top.is_dir():
         raise MorphotoneError(f"{top} is a file; give the folder that holds it")

@@ -167,6 +167,12 @@ class Ledger:
                 self._connection.executemany("insert into meta values (?, ?)", values)
             return
         then = {key: json.loads(value) for key, value in noted}
+        keys_then, keys_now = then["fingerprint"].keys(), fingerprint.keys()
+        if keys_then - keys_now and keys_now - keys_then:
+            raise ResultsError(
+                f"{self.folder} holds what another command, or another version of this one, has written; "
+                "choose another folder with --into"
+            )
         if then != now:
             differences = _differences(_conditions(then), _conditions(now))
             raise ResultsError(

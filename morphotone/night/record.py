@@ -20,7 +20,13 @@ PACKAGES = ("morphotone", "numpy", "scipy", "pandas", "orjson", "joblib")
 
 
 def run_record(
-    *, started: datetime, tally: Tally, ledger: Ledger, names: Sequence[str], details: Mapping[str, Any]
+    *,
+    started: datetime,
+    tally: Tally,
+    ledger: Ledger,
+    names: Sequence[str],
+    details: Mapping[str, Any],
+    packages: Sequence[str] = (),
 ) -> dict[str, Any]:
     """Put together the record of a run that ends now.
 
@@ -36,10 +42,14 @@ def run_record(
         The files found in this run, in their order.
     details : mapping
         What the caller adds, JSON types: assumptions, thresholds. Stands after the times.
+    packages : sequence of str
+        What the run's files depend on besides `PACKAGES`.
     """
     known = ledger.known()
     inputs = {name: known[name].sha256 for name in names}
-    return record_of(started=started, counts=asdict(tally), inputs_sha256=inputs, details=details)
+    return record_of(
+        started=started, counts=asdict(tally), inputs_sha256=inputs, details=details, packages=packages
+    )
 
 
 def package_versions() -> dict[str, str]:
@@ -53,12 +63,13 @@ def record_of(
     counts: Mapping[str, int],
     inputs_sha256: Mapping[str, str],
     details: Mapping[str, Any],
+    packages: Sequence[str] = (),
 ) -> dict[str, Any]:
     """Put together the record of any run that ends now, with or without a ledger.
 
     Parameters
     ----------
-    started, details
+    started, details, packages
         As for `run_record`.
     counts : mapping of str to int
         What came in, and what became of it.
@@ -73,7 +84,7 @@ def record_of(
         "counts": dict(counts),
         "machine": {"host": platform.node(), "platform": platform.platform()},
         "python": platform.python_version(),
-        "packages": {package: version(package) for package in PACKAGES},
+        "packages": {package: version(package) for package in (*PACKAGES, *packages)},
         "inputs_sha256": {name: sha256 or None for name, sha256 in inputs_sha256.items()},
     }
 

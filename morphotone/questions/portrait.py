@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from morphotone.cable.electrotonus import Electrotonus
 from morphotone.cable.nearest import positions
-from morphotone.errors import MorphotoneError
+from morphotone.errors import MorphotoneError, ReadingError
 from morphotone.questions.cell import Cell
 from morphotone.questions.columns import Columns, hz_suffix
 from morphotone.questions.samples import sample_table
@@ -301,6 +301,30 @@ def numeric_column(table: Columns, column: str) -> Real:
 
 def _is_numeric(values: Sequence[object] | NDArray[np.generic]) -> bool:
     return not any(isinstance(value, str) for value in np.asarray(values, object)[:1])
+
+
+def check_drawable(portrait: Portrait) -> None:
+    """See that there is something to draw, and that it has finite sizes.
+
+    Raises
+    ------
+    ReadingError
+        All samples lie in one place and there is no soma (reason ``nothing_to_draw``), or distances are no
+        finite numbers (``not_drawable``), as in files kept although unfit.
+    """
+    file = portrait.cell.rec.file
+    if not len(portrait.cell.cable.traced.soma.members) and not np.ptp(portrait.ends, axis=(0, 1)).any():
+        raise ReadingError(
+            f"{file}: read samples in one place and no soma, expected cable of some length or a soma to "
+            "draw; leave the file out",
+            "nothing_to_draw",
+        )
+    if not all(np.isfinite(values).all() for values in portrait.distances):
+        raise ReadingError(
+            f"{file}: read sizes for which attenuation is no finite number, expected those of a neuron; "
+            "check the file's unit, and leave --keep-unfit out",
+            "not_drawable",
+        )
 
 
 def values_by_node(cell: Cell, values: Real) -> Real:

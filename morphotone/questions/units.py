@@ -126,7 +126,7 @@ def units(
         A column is not there, is no number, or is named twice; or no cell has a group.
     """
     source = mean_over or nested or next((s for s in SOURCES if s in grouped.groups and s not in by), None)
-    _check_groups([*by, *filter(None, (nested, mean_over))], grouped.groups)
+    check_groups([*by, *filter(None, (nested, mean_over))], grouped.groups)
     _check_numbers(columns, cells)
     _refuse_twice(by)
     _refuse_twice(columns)
@@ -176,7 +176,8 @@ def _own(name: str, columns: Sequence[str]) -> str:
     return f"{name}_as_given" if name in {*SUMMARY_COLUMNS, *columns} else name
 
 
-def _check_groups(names: Sequence[str], groups: pd.DataFrame) -> None:
+def check_groups(names: Sequence[str], groups: pd.DataFrame) -> None:
+    """Raise MorphotoneError unless a table of groups has all these columns."""
     for name in names:
         if name not in groups:
             raise MorphotoneError(
@@ -198,7 +199,7 @@ def _check_numbers(names: Sequence[str], cells: pd.DataFrame) -> None:
 def _instead(name: str, known: Iterable[str]) -> str:
     """Return a phrase with the nearest names, or all there are."""
     names = list(known)
-    return nearest(name, names) or f"; there are {', '.join(names) or 'none'}"
+    return nearest(name, names) or f"; it has {', '.join(names) or 'none but the name of the cell'}"
 
 
 def _refuse_twice(names: Sequence[str]) -> None:

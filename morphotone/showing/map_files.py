@@ -1,22 +1,25 @@
 """The files that the map of one cell comes to, as bytes, and the places they have below the maps' folder."""
 
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, NamedTuple
 
-import numpy as np
+import trimesh
 
-from morphotone.errors import MorphotoneError, ReadingError
+from morphotone.errors import MorphotoneError
 from morphotone.night.outcome import csv_line
 from morphotone.questions.portrait import Portrait
 from morphotone.showing.keys import column_words, is_logarithmic
 from morphotone.showing.maps import WIDTHS_MM, colour_bar, map_figure, thumbnail
-from morphotone.showing.mesh import MESH_KINDS, MeshKind, membrane_mesh, mesh_bytes
+from morphotone.showing.mesh import MESH_KINDS, AreaCheck, MeshKind, area_check, membrane_mesh, mesh_bytes
 from morphotone.showing.panels import PLANES, Plane
 from morphotone.showing.sheet import FORMATS, Format, figure_bytes
 from morphotone.showing.tables import csv_texts
 
-#: Columns of ``maps.csv`` after the names, each the path of a file, empty where none was asked for.
-COLUMNS = ("figure", "thumbnail", "mesh", "colour_bar", "table")
+#: Columns of ``maps.csv`` after the names: paths of files, empty where none was asked for, ...
+FILES = ("figure", "thumbnail", "mesh", "colour_bar", "table")
+#: ... and the mesh's area beside the cable's.
+AREAS = ("mesh_area_um2", "cable_area_um2", "facet_error", "area_agrees")
+COLUMNS = (*FILES, *AREAS)
 _THUMBNAIL_DPI = 96
 
 
@@ -96,48 +99,60 @@ def places(name: str, request: MapRequest) -> dict[str, list[str]]:
     }
 
 
-def contents(portrait: Portrait, file: str, request: MapRequest) -> dict[str, list[bytes]]:
-    """Return what these files hold, in the same order.
+class Contents(NamedTuple):
+    """What a cell's map comes to.
+
+    Attributes
+    ----------
+    files : dict of str to list of bytes
+        By column of ``maps.csv``, in the order of `places`.
+    area : AreaCheck or None
+        The mesh's area beside the cable's, where there is a mesh.
+    """
+
+    files: dict[str, list[bytes]]
+    area: AreaCheck | None
+
+    def areas(self) -> dict[str, str]:
+        """Return what stands in the columns `AREAS`: numbers that read back equal, True or False."""
+        if self.area is None:
+            return dict.fromkeys(AREAS, "")
+        return dict(zip(AREAS, map(str, (*self.area, self.area.agrees)), strict=True))
+
+
+def contents(portrait: Portrait, file: str, request: MapRequest) -> Contents:
+    """Return what a cell's files hold.
 
     Parameters
     ----------
     portrait : Portrait
-        The cell.
+        The cell; one that `check_drawable` lets through.
     file : str
         The name its table is led by.
     request : MapRequest
         What is asked.
 
-    Raises
-    ------
-    ReadingError
-        Its distances are no finite numbers (reason ``not_drawable``), or there is nothing to make a mesh of
-        (``nothing_to_draw``).
     """
-    if not all(np.isfinite(values).all() for values in portrait.distances):
-        raise ReadingError(
-            f"{file}: read sizes for which attenuation is no finite number, expected those of a neuron; "
-            "check the file's unit, and leave --keep-unfit out",
-            "not_drawable",
-        )
     figure = map_figure(portrait, request.width_mm, request.plane)
-    return {
+    files = {
         "figure": [figure_bytes(figure, kind) for kind in request.formats],
-        **_mesh(portrait, request.mesh),
         "thumbnail": [figure_bytes(thumbnail(portrait, request.plane), "png", _THUMBNAIL_DPI)],
         "table": [_table(portrait, file)],
     }
+    if request.mesh is None:
+        return Contents(files, None)
+    mesh = _mesh(portrait)
+    files["mesh"] = [mesh_bytes(mesh, request.mesh)]
+    files["colour_bar"] = [figure_bytes(colour_bar(portrait), "png")]
+    return Contents(files, area_check(mesh, portrait.cell.cable))
 
 
-def _mesh(portrait: Portrait, kind: MeshKind | None) -> dict[str, list[bytes]]:
-    """Return the mesh and the scale of its colours, where one is asked for."""
-    if kind is None:
-        return {}
+def _mesh(portrait: Portrait) -> trimesh.Trimesh:
+    """Return the membrane with the values that colour, named."""
     label = column_words(portrait.column)
     if is_logarithmic(portrait.column):
         label = f"natural logarithm of {label}"
-    mesh = membrane_mesh(portrait.cell.cable, portrait.values, label=label)
-    return {"mesh": [mesh_bytes(mesh, kind)], "colour_bar": [figure_bytes(colour_bar(portrait), "png")]}
+    return membrane_mesh(portrait.cell.cable, portrait.values, label=label)
 
 
 def _table(portrait: Portrait, file: str) -> bytes:

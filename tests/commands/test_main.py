@@ -70,7 +70,7 @@ def test_a_file_may_have_a_commands_name(tmp_path, monkeypatch, capsys):
     [
         (MorphotoneError("it went wrong"), 2),
         (TurnedAwayError("it went wrong"), 1),
-        (ReadingError("it went wrong", "why"), 1),
+        (ReadingError("it went wrong", "why"), 2),
         (AssumptionError("it went wrong"), 2),
         (ResultsError("it went wrong"), 2),
     ],

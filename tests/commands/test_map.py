@@ -1,15 +1,18 @@
 """`morphotone map` from its command line: what it writes, says and returns, and how it goes on."""
 
 import json
+from importlib.metadata import version
 
 import pytest
 from matplotlib.image import imread
 
 import morphotone
 from morphotone.errors import MorphotoneError, ReadingError, ResultsError
+from morphotone.showing.map_files import AREAS
 from tests import trees
 from tests.commands.folders import SMALL, STUDY, called, examples, fill, rows, run
 
+DRAWN_BY = ("matplotlib", "pillow", "trimesh")
 SITES = """\
 cell,site,sample,x_um,y_um,z_um
 b,near,2,,,
@@ -58,7 +61,9 @@ def test_a_folder_gives_one_of_each_per_cell(small, maps, capsys):
         f"why files were turned away: {maps / 'turned_away.csv'}\n"
     )
     drawn = ["a.swc", "b.swc", "deep/er/c.SWC"]
-    assert rows(maps / "maps.csv") == [
+    table = rows(maps / "maps.csv")
+    areas = [{column: row.pop(column) for column in AREAS} for row in table]
+    assert table == [
         {
             "file": name,
             "cell": name[:-4],
@@ -70,12 +75,73 @@ def test_a_folder_gives_one_of_each_per_cell(small, maps, capsys):
         }
         for name in drawn
     ]
-    named = {path for row in rows(maps / "maps.csv") for path in list(row.values())[2:]}
+    for area in areas:
+        assert float(area["mesh_area_um2"]) == pytest.approx(float(area["cable_area_um2"]), rel=0.02)
+        assert 0 <= float(area["facet_error"]) < 0.02
+        assert area["area_agrees"] == "True"
+    named = {path for row in table for path in list(row.values())[2:]}
     assert files(maps) == named | {f"figures/{name}.pdf" for name in drawn} | {"maps.csv", "turned_away.csv"}
     assert [row["reason"] for row in rows(maps / "turned_away.csv")] == ["not_a_number", "unfit"]
     record = json.loads((maps / "run.json").read_text(encoding="utf-8"))
     assert record["counts"].items() >= {"found": 5, "analysed": 3, "turned_away": 2}.items()
     assert record["figure"] == ["svg", "pdf"]
+    assert {name: record["packages"][name] for name in DRAWN_BY} == {name: version(name) for name in DRAWN_BY}
+
+
+def test_a_mesh_of_another_area_than_its_cable_is_said(small, maps, capsys, monkeypatch):
+    monkeypatch.setattr("morphotone.showing.mesh.BEND_ERROR", -1.0)
+    assert mapped(small / "a.swc", maps, "--mesh", "ply") == 0
+    assert (
+        "note: 1 mesh has another area than the cable, by more than facet_error and 0.5% of it; "
+        f"area_agrees in {maps / 'maps.csv'} says which\n"
+    ) in capsys.readouterr().out
+    assert [row["area_agrees"] for row in rows(maps / "maps.csv")] == ["False"]
+    made = morphotone.draw_maps(small / "b.swc", maps, shown=morphotone.MapRequest(mesh="ply"))
+    assert made.maps["area_agrees"].tolist() == [False, False]
+    assert made.maps["mesh_area_um2"].dtype == "float64"
+
+
+def test_without_a_mesh_there_are_no_areas(small, maps):
+    made = morphotone.draw_maps(small / "a.swc", maps)
+    assert made.maps[list(AREAS)].isna().all(axis=None)
+
+
+def test_samples_in_one_place_without_a_soma_are_turned_away(tmp_path, maps, capsys):
+    place = "1 3 0 0 0 1 -1\n2 3 0 0 0 1 1\n3 3 0 0 0 1 2\n"
+    path = fill(tmp_path / "cells", {"point.swc": place}) / "point.swc"
+    assert mapped(path, maps, "--keep-unfit") == 1
+    (row,) = rows(maps / "turned_away.csv")
+    assert row["reason"] == "nothing_to_draw"
+    assert row["sentence"].startswith(
+        "point.swc: read samples in one place and no soma, expected cable of some"
+    )
+    with pytest.raises(ReadingError, match="one place and no soma"):
+        morphotone.draw_map(path, keep_unfit=True)
+
+
+@pytest.mark.parametrize(
+    "swc",
+    {
+        "only an axon": "1 2 0 0 0 1 -1\n2 2 10 0 0 1 1\n3 2 20 5 0 1 2\n",
+        "no soma": "1 3 0 0 0 1 -1\n2 3 10 0 0 1 1\n3 3 20 5 0 1 1\n",
+        "no cable of any length": "1 1 0 0 0 5 -1\n2 3 5 0 0 1 1\n3 3 5 0 0 1 2\n",
+        "across the plane": "1 1 0 0 0 5 -1\n2 3 0 0 5 1 1\n3 3 0 0 105 1 2\n",
+    }.values(),
+)
+def test_odd_cells_are_drawn(tmp_path, maps, swc):
+    cells = fill(tmp_path / "cells", {"odd.swc": swc})
+    assert mapped(cells, maps, "--keep-unfit", "--mesh", "glb", "--colour", "lambda_um") == 0
+
+
+def test_why_a_single_file_is_turned_away_is_said_at_once(small, maps, capsys):
+    assert mapped(small / "deep/broken.swc", maps) == 1
+    assert f"maps: {maps}\n  broken.swc: line 2: read " in capsys.readouterr().out
+
+
+def test_the_folder_of_a_survey_is_refused(small, tmp_path, capsys):
+    run("survey", small, "--into", tmp_path / "results", "--workers", "1")
+    assert mapped(small, tmp_path / "results") == 2
+    assert "results holds what another command, or another version of" in capsys.readouterr().err
 
 
 def test_the_table_is_the_surveys(small, maps, tmp_path):
@@ -207,7 +273,7 @@ def test_from_python(small, maps):
     assert (made.sites, made.tally.analysed) == ({}, 3)
     with pytest.raises(ResultsError, match="other conditions"):
         morphotone.draw_maps(small, maps)
-    with pytest.raises(MorphotoneError, match="no such folder"):
+    with pytest.raises(MorphotoneError, match="no such file or folder"):
         morphotone.draw_maps(small / "gone", maps)
 
 

@@ -127,9 +127,9 @@ def test_what_cannot_be_used_is_refused_in_a_sentence(results, tmp_path, capsys)
         "expected a folder that `morphotone survey FOLDER --into RESULTS` has written"
         in capsys.readouterr().err
     )
-    assert run("report", results, "--groups", tmp_path / "gone.csv", "--by", "class") == 1
+    assert run("report", results, "--groups", tmp_path / "gone.csv", "--by", "class") == 2
     assert "gone.csv" in capsys.readouterr().err
-    with pytest.raises(MorphotoneError, match=r"--by layers: no such column .* has class, animal, layer"):
+    with pytest.raises(MorphotoneError, match="has no column 'layers'; the nearest is layer"):
         morphotone.report(results, GROUPS, "layers")
     for incomplete in ([GROUPS, None], [None, "class"]):
         with pytest.raises(MorphotoneError, match="--groups and --by belong together"):

@@ -414,7 +414,7 @@ def test_any_number_of_workers_writes_the_same_bytes(tmp_path, monkeypatch):
 @pytest.mark.parametrize(
     ("files", "sentence"),
     [
-        (None, "there is no such folder; check the spelling"),
+        (None, "there is no such file or folder; check the spelling"),
         ({"note.txt": "x"}, r"no file named \*\.swc or \*\.swc\.gz at any depth \(1 other files seen\)"),
     ],
 )

@@ -208,7 +208,7 @@ def test_cells_to_be_doubted_are_remarked(tmp_path):
     groups = groups_file(tmp_path, ["a,x,", "b,x,", "c,x,"])
     made = morphotone.tabulate(tmp_path / "results", groups, "class", columns=["tips"])
     assert made.remarks == tuple(
-        f"1 of 3 cells are of grade {grade}; findings.csv says why" for grade in ("doubtful", "unfit")
+        f"1 of 3 cells is of grade {grade}; findings.csv says why" for grade in ("doubtful", "unfit")
     )
     assert "graded 1 sound, 1 doubtful and 1 unfit." in made.methods
 

@@ -166,7 +166,7 @@ def test_a_subfolder_that_cannot_be_listed_is_found_with_its_problem(
 
 
 def test_a_folder_that_is_not_there(tmp_path: Path) -> None:
-    with pytest.raises(MorphotoneError, match=r"gone: there is no such folder"):
+    with pytest.raises(MorphotoneError, match=r"gone: there is no such file or folder"):
         find_files(tmp_path / "gone")
 
 

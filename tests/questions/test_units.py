@@ -117,7 +117,7 @@ def test_a_survey_without_cells_is_refused():
     ("by", "options", "match"),
     [
         (["clas"], {}, "no column 'clas'; the nearest is class"),
-        (["zzz"], {}, "no column 'zzz'; there are class, animal"),
+        (["zzz"], {}, "no column 'zzz'; it has class, animal"),
         (["class", "class"], {}, "column 'class' is named twice"),
         (["class"], {"nested": "litter"}, "the table of groups has no column 'litter'"),
         (["class"], {"mean_over": "class"}, "'class' cannot both make the groups and lie within them"),

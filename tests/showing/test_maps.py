@@ -12,10 +12,10 @@ from matplotlib.image import imread
 
 from morphotone.cable.assumptions import Assumptions, Membrane
 from morphotone.errors import ReadingError
+from morphotone.questions.portrait import check_drawable
 from morphotone.questions.refined import refined
 from morphotone.reading.sites import read_sites
 from morphotone.showing.colours import PALETTE, scale_of
-from morphotone.showing.map_files import MapRequest, contents
 from morphotone.showing.maps import WIDTHS_MM, colour_bar, map_figure, thumbnail
 from morphotone.showing.sheet import FORMATS, MOST_VECTOR_LINES, POINTS_PER_MM, figure_bytes
 from tests import trees
@@ -332,6 +332,6 @@ def test_a_cell_whose_attenuation_is_no_number_is_refused_in_a_sentence():
     absurd = portrait(trees.ball_and_stick())
     endless = absurd.distances._replace(to_soma=np.full(len(absurd.values), np.inf))
     absurd.__dict__["distances"] = endless  # in the place of what is worked out when first asked for
-    with pytest.raises(ReadingError, match=r"x\.swc: read sizes .*; check the file's unit") as refused:
-        contents(absurd, "x.swc", MapRequest())
+    with pytest.raises(ReadingError, match=r"cell\.swc: read sizes .*; check the file's unit") as refused:
+        check_drawable(absurd)
     assert refused.value.reason == "not_drawable"
