@@ -228,7 +228,16 @@ def sweep(plan: Schedule, pieces: Pi, load: Values) -> Looks:
     Sum over series and parallel admittances as in Rall 1959 (Exp Neurol 1:491–527), tips to soma; the
     way back gives each node the admittance of the rest of the tree.
     """
-    pieces = Pi(*(part.copy() for part in pieces))
+    looks = Looks(np.empty_like(load), np.empty_like(load))
+    for case in range(load.shape[1]):
+        column = _sweep_case(plan, Pi(*(part[:, case].copy() for part in pieces)), load[:, case].copy())
+        for both, values in zip(looks, column, strict=True):
+            both[:, case] = values
+    return looks
+
+
+def _sweep_case(plan: Schedule, pieces: Pi, load: Values) -> Looks:
+    """Sweep in one case: one row of numbers in memory, whose gathering is far cheaper than that of rows."""
     total = load.copy()
     looked_into = np.zeros_like(load)  # by hung stream, at its parent node
     lower = _fold_and_hang(plan, pieces, total, looked_into)

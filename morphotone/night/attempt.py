@@ -8,6 +8,7 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 
+from morphotone.night.heap import keep_freed_memory
 from morphotone.night.limits import Limits, TooLongError, held
 from morphotone.night.outcome import BatchFunction, Item, Outcome
 from morphotone.night.pool import Batch
@@ -36,6 +37,7 @@ def attempt(batch: Batch, function: BatchFunction, limits: Limits, ends_process:
     ends_process : bool
         Whether work that does not come back may end its process.
     """
+    keep_freed_memory()
     with timed() as seconds:
         try:
             with held(limits, ends_process=ends_process):

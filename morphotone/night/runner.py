@@ -25,9 +25,10 @@ from morphotone.night.sitting import Nobody, Witness
 from morphotone.stages import stage
 
 # Bytes of files in a batch: a second or so of work at most, so that little is lost when a run is stopped; in
-# a small folder less, so that many workers have work and end together, but more than handing it out costs.
+# a small folder less, so that several workers have work and end together, but not much less: steps of a sweep
+# are as many for one cell as for eight.
 _LEAST_BYTES, _MOST_BYTES = 600_000, 2_000_000
-_USUAL_BATCHES = 64
+_USUAL_BATCHES = 16
 _FILE_COST = 4_000  # bytes: what opening a file costs, as if it were that much longer
 _TRIES_ALONE = 2  # a worker may also be ended by somebody else, whatever it works on
 
