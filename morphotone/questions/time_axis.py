@@ -86,12 +86,13 @@ def time_row(axis: TimeAxis, farthest: int, time_constants: int) -> dict[str, An
     """Return what the time axis adds to a cell's row; README explains the columns."""
     row: dict[str, Any] = {}
     if axis.delays is not None:
+        at_soma = axis.delays.at(np.zeros(1, np.int64))
         row |= {
             "delay_total_farthest_ms": float(axis.delays.total_ms[farthest]),
             "delay_total_mean_ms": axis.delays.membrane_mean_ms(),
             "delay_total_greatest_ms": axis.delays.greatest_ms(),
-            "delay_local_soma_ms": float(axis.delays.local_ms[0]),
-            "C_in_pF": float(axis.delays.C_in_pF[0]),
+            "delay_local_soma_ms": float(at_soma.local_ms[0]),
+            "C_in_pF": float(at_soma.C_in_pF[0]),
         }
     if axis.modes is not None:
         row |= _modes_row(axis.modes, time_constants)

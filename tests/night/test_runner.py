@@ -320,7 +320,7 @@ def test_batches_depend_on_the_files_alone(tmp_path: Path) -> None:
     assert batches[0][0].known_sha256 is None
 
 
-@pytest.mark.parametrize(("whole", "expected"), [(1, 600_000), (64_000_000, 1_004_000), (10**9, 2_000_000)])
+@pytest.mark.parametrize(("whole", "expected"), [(1, 600_000), (16_000_000, 1_016_000), (10**9, 2_000_000)])
 def test_batches_are_as_large_as_suits_the_whole(tmp_path: Path, whole: int, expected: int) -> None:
     files = [Found(tmp_path / str(index), str(index), whole // 64) for index in range(64)]
     assert runner._suitable_bytes(files) == expected
