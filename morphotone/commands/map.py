@@ -419,8 +419,8 @@ def run(args: argparse.Namespace) -> int:
             f"than facet_error and {BEND_ERROR:.1%} of it; area_agrees in {args.into / 'maps.csv'} says which"
         )
     if tally.turned_away and args.path.is_file():
-        away = made.turned_away.set_index("file")
-        print(f"  {away.loc[_one_file(args.path).name, 'sentence']}")
+        why = made.turned_away.set_index("file")["sentence"]
+        print(f"  {why[_one_file(args.path).name]}")
     elif tally.turned_away:
         print(f"why files were turned away: {args.into / 'turned_away.csv'}")
     if sites and sites["turned_away"]:

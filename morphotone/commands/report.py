@@ -2,6 +2,7 @@
 
 import argparse
 import os
+import sys
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from importlib.metadata import version
@@ -216,6 +217,6 @@ def run(args: argparse.Namespace) -> int:
     into = args.into or args.results / FILE
     made = report(args.results, args.groups, args.by, maps=args.maps, into=into)
     for remark in made.remarks:
-        print(f"note: {remark}")
+        print(f"note: {remark}", file=sys.stderr)
     print(f"page: {into}")
     return 0

@@ -208,12 +208,15 @@ def _draw_head(figure: Figure, portrait: Portrait, width_mm: float) -> None:
     tips = len(cell.branches.tips)
     to_soma, from_soma = (values[cell.farthest_tip] for values in portrait.distances[2:])
     facts = [
-        f"R_in {_three(abs(cell.electrotonus.Z_in[0, case]))} MΩ",
+        f"{'input impedance' if portrait.hz else 'R_in'} {_three(abs(cell.electrotonus.Z_in[0, case]))} MΩ",
         f"{_three(cell.cable.length.sum())} µm of cable",
         f"{tips} tip" if tips == 1 else f"{tips} tips",
-        f"farthest tip: attenuation {_three(np.exp(to_soma))} toward, "
-        f"{_three(np.exp(from_soma))} from the soma",
     ]
+    if tips:
+        facts.append(
+            f"farthest tip: attenuation {_three(np.exp(to_soma))} toward, "
+            f"{_three(np.exp(from_soma))} from the soma"
+        )
     write_at(
         figure,
         _EDGE,

@@ -177,7 +177,7 @@ def _run(morning: Morning) -> list[tuple[str, str]]:
         "Unchanged files": f"{counts['unchanged']}, taken over from an earlier run"
         if counts.get("unchanged")
         else "",
-        "Samples": f"{counts.get('samples', 0):,}".replace(",", " "),
+        "Samples": f"{counts.get('samples', 0):,}",
         "Frequencies": ", ".join(f"{hz:g} Hz" for hz in (0.0, *morning.assumptions.hz)),
         "Files of grade unfit": "analysed all the same" if record.get("keep_unfit") else "turned away",
         "Workers": str(record.get("workers", "")),

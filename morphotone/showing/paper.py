@@ -55,9 +55,13 @@ def paper_tables(units: Units, summary: pd.DataFrame, comparisons: pd.DataFrame)
         As `morphotone.questions` has them.
     """
     groups = len(summary) // len(units.columns)
-    tables = [_overview(units, summary, comparisons)] if groups <= WIDEST else []
-    tables.append(_details(units, summary))
-    return [*tables, _tests(comparisons, groups)] if len(comparisons) else tables
+    tested = bool(comparisons["p"].notna().any())
+    untested = [] if tested else comparisons["note"].drop_duplicates().tolist()
+    tables = (
+        [_overview(units, summary, comparisons if tested else comparisons[:0])] if groups <= WIDEST else []
+    )
+    tables.append(_details(units, summary, untested))
+    return [*tables, _tests(comparisons, groups)] if tested else tables
 
 
 def _overview(units: Units, summary: pd.DataFrame, comparisons: pd.DataFrame) -> PaperTable:
@@ -87,8 +91,8 @@ def _overview(units: Units, summary: pd.DataFrame, comparisons: pd.DataFrame) ->
     return PaperTable("overview", caption, tuple(header), 1, tuple(rows), told)
 
 
-def _details(units: Units, summary: pd.DataFrame) -> PaperTable:
-    """One row per quantity and group: n, mean ± SD, median, quartiles, intervals."""
+def _details(units: Units, summary: pd.DataFrame, untested: list[str]) -> PaperTable:
+    """One row per quantity and group: n, mean ± SD, median, quartiles, intervals; below, why no test."""
     header = (
         "",
         *map(named, units.by),
@@ -109,8 +113,9 @@ def _details(units: Units, summary: pd.DataFrame) -> PaperTable:
         f"Electrotonic measures by {_by(units)}{_of_what(units)}: intervals are bootstrap intervals of 95 %."
     )
     few = summary["n"].between(LEAST, FEW - 1).any()
-    notes = (f"Bootstrap intervals of fewer than {FEW} values are too narrow.",) if few else ()
-    return PaperTable("details", caption, header, 1 + len(units.by), tuple(rows), notes)
+    notes = [f"bootstrap intervals of fewer than {FEW} values are too narrow"] if few else []
+    notes += [f"not tested: {named(note)}" for note in untested if note]
+    return PaperTable("details", caption, header, 1 + len(units.by), tuple(rows), _sentences(notes))
 
 
 def _tests(comparisons: pd.DataFrame, groups: int) -> PaperTable:

@@ -34,7 +34,7 @@ def statistics(
     family : {"table", "quantity"}
         As the tests were corrected.
     """
-    return " ".join([*_groups(units), *_values(summary, how), *_tests(comparisons, how, family)])
+    return " ".join([*_groups(units), *_values(summary, how), *_tests(units, comparisons, how, family)])
 
 
 def _groups(units: Units) -> Iterator[str]:
@@ -73,7 +73,7 @@ def _percent(how: Bootstrap) -> str:
     return f"{100 * how.level:.12g} %"
 
 
-def _tests(comparisons: pd.DataFrame, how: Bootstrap, family: Family) -> Iterator[str]:
+def _tests(units: Units, comparisons: pd.DataFrame, how: Bootstrap, family: Family) -> Iterator[str]:
     made = comparisons[comparisons["p"].notna()]
     many, pairs = (made[made["test"] == test] for test in (KRUSKAL_WALLIS, MANN_WHITNEY))
     if made.empty:
@@ -90,7 +90,8 @@ def _tests(comparisons: pd.DataFrame, how: Bootstrap, family: Family) -> Iterato
             f"distribution ⟨Andrews1954 Steiger2004⟩{', for pairs ' if len(pairs) else ''}"
         )
     else:
-        yield f"The two groups were compared with {by_pairs}."
+        enough = " with enough values" if len(groups_of(units.table, units.by)) > 2 else ""
+        yield f"The two groups{enough} were compared with {by_pairs}."
         effect = ""
     yield f"‹p› values were corrected by Holm's method ⟨Holm1979⟩ {_family(many, pairs, family)}."
     yield f"Effect sizes are {effect}{of_pairs if len(pairs) else ''}."

@@ -95,7 +95,7 @@ def test_pictures_are_linked_where_they_are(results):
 def test_results_of_another_version_are_said_to_be(results, capsys):
     changed(results / "run.json", morphotone="0.0.9")
     assert run("report", results) == 0
-    assert "was written by Morphotone 0.0.9" in capsys.readouterr().out
+    assert "was written by Morphotone 0.0.9" in capsys.readouterr().err
     assert "was written by Morphotone 0.0.9" in page_of(results / "report.html").words
 
 

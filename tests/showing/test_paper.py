@@ -112,3 +112,14 @@ def test_latex_opens_and_closes_what_it_opens():
     head = text.partition("\\endfirsthead")[2].partition("\\endhead")[0]
     assert "\\caption" not in head  # which stands on the first page alone
     assert "R_in" not in text
+
+
+def test_where_nothing_can_be_tested_no_column_or_table_stands_empty():
+    found, numbers, tests = made({"a": 3, "b": 1})
+    tests = comparisons(found.table, found.by, found.columns)
+    assert len(tests)
+    assert tests["p"].isna().all()
+    overview, details = paper_tables(found, numbers, tests)
+    assert overview.header == ("", "a (‹n› = 3)", "b (‹n› = 1)")
+    assert "‹p›" not in overview.caption
+    assert any(note.startswith("Not tested: fewer than two groups to test") for note in details.notes)
