@@ -76,11 +76,13 @@ and for all of them:
   turned_away_sites.csv  with --synapses: one row per site not marked, with the reason
   assumptions.toml, run.json, ledger.sqlite  as of a survey: the same command again goes on from there
 
+units: um, MOhm, ms, Hz
+
 example:
   morphotone map sample_morphologies/spar_01.swc --into maps --synapses sample_morphologies/sites.csv
 
-exit code: 0 all drawn, 1 a file or a site was turned away, 2 wrong usage, unusable assumptions, column or
-folder, 130 interrupted
+exit code: 0 all drawn, 1 a file or a site was turned away, 2 wrong usage, unusable assumptions, sites, column
+or folder, 130 interrupted
 """
 
 
@@ -358,13 +360,20 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         choices=FORMATS,
         nargs="+",
         default=["png"],
-        help="formats of the figure (default: %(default)s)",
+        help="formats of the figure (default: png)",
     )
     parser.add_argument(
-        "--width", type=int, choices=WIDTHS_MM, default=WIDTHS_MM[-1], help="width of the figure, in mm"
+        "--width",
+        type=int,
+        choices=WIDTHS_MM,
+        default=WIDTHS_MM[-1],
+        help="width of the figure, in mm (default: %(default)s)",
     )
     parser.add_argument(
-        "--plane", choices=list(PLANES), default="xy", help="coordinates that go across and up"
+        "--plane",
+        choices=list(PLANES),
+        default="xy",
+        help="coordinates that go across and up (default: %(default)s)",
     )
     parser.add_argument(
         "--mesh", choices=MESH_KINDS, help="write the membrane in space too, in um, the value at every vertex"

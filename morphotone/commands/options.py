@@ -100,7 +100,8 @@ def add_pattern(parser: argparse.ArgumentParser) -> None:
         metavar="GLOB",
         nargs="+",
         default=list(PATTERNS),
-        help="names of the files to take from a folder (default: %(default)s; upper and lower case alike)",
+        help=f"names of the files to take from a folder (default: {' '.join(PATTERNS)}; upper and lower case "
+        "alike)",
     )
 
 

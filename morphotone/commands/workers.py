@@ -57,7 +57,7 @@ def add_worker_options(parser: argparse.ArgumentParser, *, cluster: bool = False
         metavar="GB",
         type=positive,
         help="memory beyond which a file is turned away as too_large (default: the free memory shared out "
-        "among the workers; of a cluster none)",
+        f"among the workers{'; of a cluster none' if cluster else ''})",
     )
 
 

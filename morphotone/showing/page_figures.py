@@ -13,7 +13,6 @@ from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
 
 from morphotone.questions.outliers import rounded
-from morphotone.showing.sheet import number_text
 
 Real = NDArray[np.float64]
 
@@ -170,7 +169,7 @@ def _axis(values: Real) -> _Axis:
     ticks = _decades(low, high) if is_log else MaxNLocator(_TICKS).tick_values(low, high)
     inside = [float(tick) for tick in ticks if low <= tick <= high]
     places = axis.x(np.array(inside)).tolist()
-    texts = [number_text(tick) for tick in inside]
+    texts = [f"{tick:.6g}" for tick in inside]
     return _Axis(axis.low, axis.high, is_log, tuple(zip(places, texts, strict=True)))
 
 
