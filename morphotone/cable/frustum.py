@@ -109,7 +109,7 @@ def pi_of_frusta(r_start: Values, r_end: Values, length: Values, R_i: Values, g:
             pi_of_frusta(*(v[:, c : c + 1] for v in (r_start, r_end, length, R_i, g))) for c in range(cases)
         ]
         return Pi(*(np.concatenate(parts, axis=1) for parts in zip(*each, strict=True)))
-    out = Pi(*(np.empty((len(length), cases), g.dtype, order="F") for _ in range(3)))
+    out = Pi(*(np.empty((len(length), cases), g.dtype) for _ in range(3)))
     geometry = _geometry(r_start[:, 0], r_end[:, 0], length[:, 0])
     kind = class_of(geometry.stretch * np.abs(R_i * g).max(axis=1), np.abs(geometry.taper))
     for which in np.flatnonzero(np.bincount(kind - OTHER)) + OTHER:
@@ -156,14 +156,11 @@ def _put_short(out: Pi, rows: Rows, geometry: _Geometry, kind: int, R_i: Values,
             values[0, case] if len(values) == 1 else values[rows, case] for values in (R_i, g)
         )
         axial, start, end = factors(powers, here.stretch * (resistivity * density))
-        # Not in place: of two complex arrays, numpy multiplies a single row in other bits then than many.
-        parts = (
-            here.conductance / resistivity * axial,
-            here.at_start * density * start,
-            here.at_end * density * end,
-        )
-        for part, values in zip(out, parts, strict=True):
-            part[:, case][rows] = values
+        # [:, case][rows] writes twice as fast as [rows, case]. Products are not taken in place: of two complex
+        # arrays, numpy then multiplies a single row to other last bits than the same row among others.
+        out.axial[:, case][rows] = here.conductance / resistivity * axial
+        out.start[:, case][rows] = here.at_start * density * start
+        out.end[:, case][rows] = here.at_end * density * end
 
 
 def _pi_of_others(r_start: Real, r_end: Real, length: Real, R_i: Values, g: Values) -> Pi:

@@ -96,7 +96,7 @@ def coefficients(taper: Real, kind: int) -> list[Real]:
     square, found = taper * taper, []
     for row in _corner(kind):
         polynomial = np.empty((3, len(taper)))
-        polynomial[:] = row[:, -1:]  # a third of the time of np.repeat
+        polynomial[:] = row[:, -1:]  # far faster than np.repeat
         for column in range(row.shape[1] - 2, -1, -1):
             polynomial *= square
             polynomial += row[:, column : column + 1]

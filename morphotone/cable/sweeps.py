@@ -228,18 +228,9 @@ def sweep(plan: Schedule, pieces: Pi, load: Values) -> Looks:
     Sum over series and parallel admittances as in Rall 1959 (Exp Neurol 1:491–527), tips to soma; the
     way back gives each node the admittance of the rest of the tree.
     """
-    looks = Looks(np.empty_like(load), np.empty_like(load))
-    for case in range(load.shape[1]):
-        column = _sweep_case(plan, Pi(*(part[:, case].copy() for part in pieces)), load[:, case].copy())
-        for both, values in zip(looks, column, strict=True):
-            both[:, case] = values
-    return looks
-
-
-def _sweep_case(plan: Schedule, pieces: Pi, load: Values) -> Looks:
-    """Sweep in one case: one row of numbers in memory, whose gathering is far cheaper than that of rows."""
+    pieces = Pi(*(part.copy() for part in pieces))
     total = load.copy()
-    looked_into = np.zeros_like(load)  # by hung stream, at its parent node
+    looked_into = np.empty_like(load)  # by hung stream, at its parent node
     lower = _fold_and_hang(plan, pieces, total, looked_into)
     others = _others(plan, load, looked_into)
     return _undo(plan, pieces, lower, total, others)
@@ -283,7 +274,7 @@ def _others(plan: Schedule, load: Values, looked_into: Values) -> Values:
     "The sum without me" is taken as (sum of all but the largest) + (the largest − me): the first term
     is at least as large as what the difference may have lost, so nothing cancels.
     """
-    others = np.zeros_like(load)
+    others = np.empty_like(load)
     if not plan.steps:
         return others
     hung = np.concatenate([np.arange(step.first, step.last) for step in plan.hanging()])
@@ -304,8 +295,10 @@ def _others(plan: Schedule, load: Values, looked_into: Values) -> Values:
 def _undo(plan: Schedule, pieces: Pi, lower: list[Pi | None], total: Values, others: Values) -> Looks:
     """Undo the eliminations from the roots on, filling in what each node sees on either side."""
     axial, start, end = pieces
-    away, beyond = total, np.zeros_like(total)
-    through = np.zeros_like(total)  # at a node, its own stream both ways, without load and side streams
+    away, beyond = total, np.empty_like(total)
+    through = np.empty_like(total)  # at a node, its own stream both ways, without load and side streams
+    for at_roots in (beyond, through):
+        at_roots[len(total) - plan.roots :] = 0.0
     for (first, last, parent, child, _), below in zip(reversed(plan.steps), reversed(lower), strict=True):
         at = slice(first, last)
         if child is None or below is None:
