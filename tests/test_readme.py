@@ -1,6 +1,8 @@
 """README says what is true now: every column, every command, an example that works."""
 
+import argparse
 import re
+from importlib import import_module
 from pathlib import Path
 
 import pytest
@@ -88,3 +90,18 @@ def test_the_columns_of_groups_are_those_explained() -> None:
 def test_every_command_is_named() -> None:
     for command in COMMANDS:
         assert f"`morphotone {command}" in README
+
+
+def test_every_option_is_explained_with_its_commands() -> None:
+    explained: dict[str, set[str]] = {}
+    for options, of in re.findall(r"^\| (`--[^|]+) \| ([^|]+) \|", README, re.MULTILINE):
+        named = set(re.findall(r"`(\w+)`", of))
+        for option in re.findall(r"--[\w-]+", options):
+            explained[option] = set(COMMANDS) - named if of.startswith("all") else named
+    known: dict[str, set[str]] = {"--debug": set(COMMANDS)}
+    for command in COMMANDS:
+        parser = argparse.ArgumentParser()
+        import_module(f"morphotone.commands.{command}").add_arguments(parser)
+        for option in re.findall(r"--[\w-]+", parser.format_usage()):
+            known.setdefault(option, set()).add(command)
+    assert explained == known
