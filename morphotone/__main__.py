@@ -3,14 +3,14 @@
 import signal
 import sys
 
-from morphotone.commands import INTERRUPTED, main
+from morphotone.commands import main
 
 
 def run() -> None:
     """Run the command line and leave with its exit code."""
     code = main()
-    if code == INTERRUPTED:  # a second Ctrl-C has nothing to break off any more but the leave-taking
-        signal.signal(signal.SIGINT, signal.SIG_IGN)
+    for number in (signal.SIGINT, signal.SIGTERM):  # nothing is left to break off but the leave-taking
+        signal.signal(number, signal.SIG_IGN)
     sys.exit(code)
 
 

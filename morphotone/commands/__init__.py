@@ -55,7 +55,19 @@ def main(argv: Sequence[str] | None = None) -> int:
         if hasattr(stream, "reconfigure"):
             stream.reconfigure(encoding="utf-8", errors="replace")  # µ and λ on any terminal or pipe
     arguments = list(sys.argv[1:] if argv is None else argv)
-    parser, chosen = _parser(arguments)
+    chosen = next((word for word in arguments if word in COMMANDS), None)
+    with _interruptions():
+        try:
+            return _called(chosen, arguments)
+        except KeyboardInterrupt:
+            goes_on = "; the same command goes on from here" if chosen in _RESUMED else ""
+            print(f"interrupted{goes_on}", file=sys.stderr)
+            return INTERRUPTED
+
+
+def _called(chosen: str | None, arguments: Sequence[str]) -> int:
+    """Run the command chosen, if there is one; its errors end as a sentence."""
+    parser = _parser(chosen)
     args = parser.parse_args(arguments)
     if args.version:
         print(f"morphotone {import_module('importlib.metadata').version('morphotone')}")
@@ -64,22 +76,12 @@ def main(argv: Sequence[str] | None = None) -> int:
         parser.print_help()
         return WRONG_USAGE
     try:
-        with _interruptions():
-            return _called(chosen, args)
+        return int(import_module(f"morphotone.commands.{chosen}").run(args))
     except MorphotoneError as error:
         if args.debug:
             traceback.print_exc()
         print(f"morphotone {chosen}: {error}", file=sys.stderr)
         return TURNED_AWAY if isinstance(error, TurnedAwayError) else WRONG_USAGE
-
-
-def _called(command: str, args: argparse.Namespace) -> int:
-    try:
-        return int(import_module(f"morphotone.commands.{command}").run(args))
-    except KeyboardInterrupt:
-        goes_on = "; the same command goes on from here" if command in _RESUMED else ""
-        print(f"interrupted{goes_on}", file=sys.stderr)
-        return INTERRUPTED
 
 
 @contextmanager
@@ -93,8 +95,8 @@ def _interruptions() -> Iterator[None]:
 
     def interrupt(number: int, _: FrameType | None) -> None:
         nonlocal last
-        before, last = last, time.monotonic()
-        if last - before >= _PATIENCE_SECONDS:
+        if time.monotonic() - last >= _PATIENCE_SECONDS:
+            last = time.monotonic()
             raise KeyboardInterrupt(signal.Signals(number).name)
 
     ours = {signal.SIG_DFL, signal.default_int_handler}
@@ -110,8 +112,8 @@ def _interruptions() -> Iterator[None]:
             signal.signal(number, handler)
 
 
-def _parser(arguments: Sequence[str]) -> tuple[argparse.ArgumentParser, str | None]:
-    """Return the parser, and the command called if there is one; only that one's options are known to it."""
+def _parser(chosen: str | None) -> argparse.ArgumentParser:
+    """Return the parser; only the options of the command chosen are known to it."""
     parser = argparse.ArgumentParser(
         prog="morphotone",
         description="Electrotonic structure of whole folders of reconstructed neurons (SWC).",
@@ -121,10 +123,9 @@ def _parser(arguments: Sequence[str]) -> tuple[argparse.ArgumentParser, str | No
     parser.add_argument("--version", action="store_true", help="print the version and exit")
     parser.set_defaults(debug=False)
     subparsers = parser.add_subparsers(metavar="COMMAND")
-    chosen = next((word for word in arguments if word in COMMANDS), None)
     for name, text in COMMANDS.items():
         subparser = subparsers.add_parser(name, help=text, description=f"{text[0].upper()}{text[1:]}.")
         if name == chosen:
             import_module(f"morphotone.commands.{name}").add_arguments(subparser)
             subparser.add_argument("--debug", action="store_true", help="show the traceback of an error")
-    return parser, chosen
+    return parser

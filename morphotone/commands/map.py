@@ -1,6 +1,7 @@
 """`morphotone map`: what a person looks at of each cell: figure, thumbnail, mesh and table."""
 
 import argparse
+import hashlib
 import os
 import sys
 from collections.abc import Iterable, Sequence
@@ -45,6 +46,7 @@ from morphotone.night.record import run_record, write_record
 from morphotone.night.results import atomic, atomic_bytes, export, file_names
 from morphotone.night.runner import Tally
 from morphotone.night.runner import run as run_night
+from morphotone.night.sitting import Sitting
 from morphotone.questions.placing import FARTHEST_UM
 from morphotone.questions.portrait import COLOUR
 from morphotone.questions.survey import SPECIMEN, Answer, Request
@@ -74,7 +76,7 @@ and for all of them:
   maps.csv          one row per cell drawn, with the paths of its files and the mesh's area beside the cable's
   turned_away.csv   one row per file not drawn, with the reason
   turned_away_sites.csv  with --synapses: one row per site not marked, with the reason
-  assumptions.toml, run.json, ledger.sqlite  as of a survey: the same command again goes on from there
+  assumptions.toml, run.json, log.txt, ledger.sqlite  as of a survey: the same command again goes on
 
 units: um, MOhm, ms, Hz
 
@@ -232,18 +234,19 @@ def draw_maps(
         The folder holds something else or maps drawn otherwise, or cannot be written to.
     """
     started = datetime.now(UTC)
-    into, shown = Path(into), shown or MapRequest()
+    into, shown, alone = Path(into), shown or MapRequest(), Path(path).is_file()
     time = TimeRequest(delays, current=current_of(transient_ms))
     request = Request(_with_hz(assumptions or Assumptions(), shown.hz), keep_unfit, samples=True, time=time)
     _check(request, shown)
-    alone = Path(path).is_file()
     found = [_one_file(Path(path))] if alone else find_files(path, patterns, exclude=into)
     sites = sites_on(found, synapses, alone)
     asked = {**_fingerprint(request, shown), "farthest_um": farthest_um, "sites_sha256": sites.sha256}
     with (
         workers_for(workers, None, minutes_per_cell, GB_per_cell) as who,
         Ledger(into, asked) as ledger,
+        Sitting(ledger, hashlib.sha256(request.assumptions.to_toml().encode()).hexdigest()) as sitting,
     ):
+        sitting.say(f"files found: {len(found)}; {who.said}; {who.limits.described()}")
         before = ledger.known()
         names = file_names({*before, *(file.name for file in found)})
         work = Work(into, request, shown, names, sites.per_file, farthest_um)
@@ -255,6 +258,7 @@ def draw_maps(
             progress=progress,
             pool=who.pool,
             limits=who.limits,
+            witness=sitting,
             batch_bytes=1,  # one cell at a time: drawing it takes as long as a survey of many
             strict=strict,
         )
@@ -263,13 +267,19 @@ def draw_maps(
         delete_stale(names, _drawn_of(ledger, listed), work)
         away = sites.turned_away(ledger, listed)
         _write(ledger, listed, request, away if sites.file else None)
-        details = {"path": str(path), "patterns": list(patterns), **asked}
-        details |= {"sites": sites.counts(away), "warnings": list(request.assumptions.warnings)}
+        sitting.end("ended")
+        called = {"path": str(path), "patterns": list(patterns), **who.to_dict()}
+        details = {**called, **asked, **_course(ledger, request), "sites": sites.counts(away)}
         record = run_record(
             started=started, tally=tally, ledger=ledger, names=listed, details=details, packages=_PACKAGES
         )
         write_record(into / "run.json", record)
     return Maps(_read_maps(into), _read(into / f"{TURNED_AWAY}.csv"), away, sites.counts(away), tally)
+
+
+def _course(ledger: Ledger, request: Request) -> dict[str, Any]:
+    """Return what the record says of how the run went."""
+    return {"warnings": list(request.assumptions.warnings), "sittings": ledger.sittings()}
 
 
 def _one_file(path: Path) -> Found:

@@ -209,11 +209,7 @@ def write_survey(
             "patterns": list(patterns),
             **conditions,
             "warnings": list(request.assumptions.warnings),
-            "workers": workers.said,
-            "limits": {
-                "minutes_per_cell": workers.limits.minutes,
-                "GB_per_cell": workers.limits.gigabytes,
-            },
+            **workers.to_dict(),
             "sittings": ledger.sittings(),
         }
         record = run_record(started=started, tally=tally, ledger=ledger, names=names, details=details)

@@ -5,6 +5,7 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from importlib import import_module
+from typing import Any
 
 import joblib
 
@@ -31,6 +32,11 @@ class Workers:
     pool: Pool
     said: str
     limits: Limits
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return what the record of a run says of them."""
+        limits = {"minutes_per_cell": self.limits.minutes, "GB_per_cell": self.limits.gigabytes}
+        return {"workers": self.said, "limits": limits}
 
 
 def add_worker_options(parser: argparse.ArgumentParser, *, cluster: bool = False) -> None:

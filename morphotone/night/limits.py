@@ -28,6 +28,8 @@ if sys.platform == "linux":
 USUAL_MINUTES = 30.0
 _SHARE = 0.9  # of the memory that is there; the rest is for the main process and the system
 _GRACE_SECONDS = 10.0  # between the two steps
+_MOST_SECONDS = threading.TIMEOUT_MAX / 2  # beyond it, and beyond these bytes, no system keeps count
+_MOST_BYTES = 2**62
 _GROUPS = Path("/sys/fs/cgroup")
 
 
@@ -98,8 +100,9 @@ def usual_limits(workers: int | None, minutes: float | None = None, gigabytes: f
         there = available_bytes()
         size = None if there is None or workers is None else int(_SHARE * there / workers)
     else:
-        size = int(gigabytes * 1e9)
-    return Limits(60 * (USUAL_MINUTES if minutes is None else minutes), size)
+        size = int(min(gigabytes * 1e9, _MOST_BYTES))
+    seconds = 60 * (USUAL_MINUTES if minutes is None else minutes)
+    return Limits(min(seconds, _MOST_SECONDS), size)
 
 
 def available_bytes() -> int | None:

@@ -15,8 +15,7 @@ from collections.abc import Callable, Iterator, Mapping
 from itertools import islice
 from typing import Any, Protocol, TypeVar
 
-from joblib.externals.loky import FIRST_COMPLETED, Future, get_reusable_executor, wait
-from joblib.externals.loky.process_executor import TerminatedWorkerError
+from joblib.externals.loky import FIRST_COMPLETED, BrokenProcessPool, Future, get_reusable_executor, wait
 
 from morphotone.night.outcome import Item
 
@@ -117,7 +116,7 @@ def in_processes(workers: int) -> Pool:
                 _finished(running) if isinstance(error, KeyboardInterrupt) else []
             )
             executor.shutdown(wait=True, kill_workers=True)
-            if isinstance(error, TerminatedWorkerError):
+            if isinstance(error, BrokenProcessPool):
                 raise WorkerDiedError(str(error)) from error
             yield from finished
             raise
@@ -131,14 +130,18 @@ def _check_workers(executor: Any) -> None:
     The executor then waits without end for the rest of the result, since other processes could still write
     it: they are ended, this process lets go of its end, and the executor finds that nothing will come.
     """
-    workers = list((executor._processes or {}).values())
+    try:
+        workers = list((executor._processes or {}).values())
+        flags, own_end = executor._flags, executor._result_queue._writer
+    except AttributeError:  # another joblib calls them otherwise: a night without this help, but a night
+        return
     if all(worker.exitcode in (None, 0) for worker in workers):
         return
     time.sleep(_LOOK_ROUND_SECONDS)  # it may be about to notice
-    if executor._flags.broken is None:
+    if flags.broken is None:
         for worker in workers:
-            worker.kill()
-        executor._result_queue._writer.close()
+            worker.terminate()  # there is no kill() in them
+        own_end.close()
     raise WorkerDiedError("a worker was ended while it handed over its result")
 
 

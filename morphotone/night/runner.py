@@ -7,8 +7,8 @@ knows, so that the same list gives the same batches and the same bytes.
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
-from contextlib import suppress
+from collections.abc import Callable, Generator, Iterable, Iterator, Mapping, Sequence
+from contextlib import closing, suppress
 from dataclasses import dataclass
 from functools import partial
 from itertools import chain
@@ -111,17 +111,19 @@ def run(
     work = partial(attempt, function=function, limits=limits, ends_process=pool is not in_this_process)
     progress.begin(len(found), sum(sizes.values()))
     try:
-        for worked in chain([Worked(closed)], finished(batches, work, pool, limits, witness)):
-            outcomes = worked.outcomes
-            with stage("ledger"):
-                ledger.record([outcome for outcome in outcomes if outcome.status != "unchanged"])
-            witness.enter(outcomes, worked.seconds)
-            meanwhile()
-            unchanged += sum(outcome.status == "unchanged" for outcome in outcomes)
-            entries = {outcome.name: _entry(outcome, known) for outcome in outcomes}
-            progress.advance(_step(entries, sizes))
-            if strict:
-                _refuse(entries, ledger)
+        # Closed here, whatever ends the loop: workers must not go on, and their pool may be used anew.
+        with closing(finished(batches, work, pool, limits, witness)) as rest:
+            for worked in chain([Worked(closed)], rest):
+                outcomes = worked.outcomes
+                with stage("ledger"):
+                    ledger.record([outcome for outcome in outcomes if outcome.status != "unchanged"])
+                witness.enter(outcomes, worked.seconds)
+                meanwhile()
+                unchanged += sum(outcome.status == "unchanged" for outcome in outcomes)
+                entries = {outcome.name: _entry(outcome, known) for outcome in outcomes}
+                progress.advance(_step(entries, sizes))
+                if strict:
+                    _refuse(entries, ledger)
     finally:
         progress.end()
     return _count(list(sizes), ledger.known(), unchanged)
@@ -153,7 +155,7 @@ def finished(
     pool: Pool,
     limits: Limits,
     witness: Witness,
-) -> Iterator[Worked]:
+) -> Generator[Worked, None, None]:
     """Yield what came of each batch as it is finished, in any order; nothing worked now and then meanwhile.
 
     When a worker dies, all that was under way is lost. The batches that had been handed out are the

@@ -106,6 +106,7 @@ class Sitting:
             self._counts[outcome.status.replace(" ", "_")] += 1
             if outcome.status == "turned away":
                 sentence = outcome.sentence.removeprefix(f"{outcome.name}: ")
+                sentence = sentence.removeprefix(f"{outcome.reason}: ")
                 self.say(f"turned away: {outcome.name}: {outcome.reason}: {sentence}")
         self._worked.update(seconds)
         self._note()

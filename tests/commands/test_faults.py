@@ -10,6 +10,7 @@ import signal
 import subprocess
 import sys
 import time
+from contextlib import suppress
 from pathlib import Path
 
 import pytest
@@ -27,9 +28,9 @@ pytestmark = [
 
 @pytest.fixture(scope="module")
 def cells(tmp_path_factory):
-    """Some forty batches of small cells, a few files among them that cannot be read."""
+    """Some forty batches of small cells, for `begin`; a few files among them cannot be read."""
     folder = tmp_path_factory.mktemp("night") / "cells"
-    files = {f"{k % 7}/{k}.swc": trees.irregular(300, k, soma=True) if k % 40 else BROKEN for k in range(600)}
+    files = {f"{k % 7}/{k}.swc": trees.irregular(300, k, soma=True) if k % 40 else BROKEN for k in range(200)}
     return fill(folder, files)
 
 
@@ -43,15 +44,26 @@ def undisturbed(cells, tmp_path_factory):
     return tables(results), time.monotonic() - begun
 
 
-def begin(cells, results, *options):
-    words = ["survey", cells, "--into", results, "--samples", "--workers", "2", *options]
-    return subprocess.Popen(
-        [sys.executable, "-m", "morphotone", *map(str, words)],
-        stdout=subprocess.DEVNULL,
+SMALL_BATCHES = """
+from morphotone.night import runner
+from morphotone.__main__ import run
+runner._LEAST_BYTES = 100_000
+print("begins", flush=True)
+run()
+"""
+
+
+def begin(cells, results):
+    words = ["survey", cells, "--into", results, "--samples", "--workers", "2"]
+    process = subprocess.Popen(
+        [sys.executable, "-c", SMALL_BATCHES, *map(str, words)],
+        stdout=subprocess.PIPE,
         stderr=subprocess.PIPE,
         text=True,
         start_new_session=True,
     )
+    assert process.stdout.readline() == "begins\n"
+    return process
 
 
 def children(process):
@@ -81,13 +93,17 @@ def kill_main(process):
 
 
 def kill_a_worker(process):
-    for worker in random.sample(workers := children(process), min(1, len(workers))):
-        os.kill(worker, signal.SIGKILL)
+    kill(random.sample(workers := children(process), min(1, len(workers))))
 
 
 def kill_all_workers(process):
-    for worker in children(process):
-        os.kill(worker, signal.SIGKILL)
+    kill(children(process))
+
+
+def kill(workers):
+    for worker in workers:
+        with suppress(ProcessLookupError):  # it may have ended meanwhile
+            os.kill(worker, signal.SIGKILL)
 
 
 def terminate(process):
@@ -126,8 +142,7 @@ def test_the_same_bytes_after_a_fault_at_any_moment(fault, codes, cells, undistu
         ended = False
         while not ended:
             process = begin(cells, results)
-            # From the time when Python and its libraries are there, to a little after the end.
-            time.sleep(random.uniform(0.7, max(1.4, seconds)))
+            time.sleep(random.uniform(0.0, seconds))
             running = process.poll() is None
             if running:
                 fault(process)

@@ -5,9 +5,11 @@ import signal
 import subprocess
 import sys
 from importlib.metadata import version
+from types import SimpleNamespace
 
 import pytest
 
+from morphotone import commands
 from morphotone.commands import COMMANDS, survey
 from morphotone.errors import AssumptionError, MorphotoneError, ReadingError, ResultsError, TurnedAwayError
 from tests.commands.folders import SOUND, called, examples, fill, run
@@ -129,6 +131,33 @@ def test_a_signal_to_end_is_an_interrupt_and_a_second_one_does_not_break_it_off(
     assert cleaned_up == ["SIGTERM"]
     assert capsys.readouterr().err == "interrupted; the same command goes on from here\n"
     assert signal.getsignal(signal.SIGTERM) is before
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="signals to a process are a POSIX matter")
+def test_who_keeps_asking_is_heard_again_after_some_seconds(monkeypatch):
+    clock, heard = iter([100.0, 100.0, 103.0, 106.0, 106.0]), []
+    monkeypatch.setattr(commands, "time", SimpleNamespace(monotonic=lambda: next(clock)))
+
+    def asked(args):
+        for _ in range(3):
+            try:
+                signal.raise_signal(signal.SIGINT)
+            except KeyboardInterrupt as error:
+                heard.append(str(error))
+        return 0
+
+    monkeypatch.setattr(survey, "run", asked)
+    assert run("survey", "x", "--into", "y") == 0
+    assert heard == ["SIGINT", "SIGINT"]
+
+
+def test_an_interrupt_while_libraries_are_loaded_is_one_too(monkeypatch, capsys):
+    def interrupted(name):
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(commands, "import_module", interrupted)
+    assert run("survey", "x", "--into", "y") == 130
+    assert capsys.readouterr().err == "interrupted; the same command goes on from here\n"
 
 
 @pytest.mark.skipif(not hasattr(signal, "SIGHUP"), reason="no terminal hangs up on Windows")

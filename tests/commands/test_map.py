@@ -1,6 +1,9 @@
 """`morphotone map` from its command line: what it writes, says and returns, and how it goes on."""
 
 import json
+import subprocess
+import sys
+import time
 from importlib.metadata import version
 
 import pytest
@@ -39,8 +42,8 @@ def maps(tmp_path):
 
 
 def files(folder):
-    """Return the paths below a folder of all files but the record and the ledger."""
-    apart = ("run.json", "ledger.sqlite", "assumptions.toml")
+    """Return the paths below a folder of all files but the record, the log and the ledger."""
+    apart = ("run.json", "log.txt", "ledger.sqlite", "assumptions.toml")
     return {path.relative_to(folder).as_posix() for path in folder.rglob("*") if path.is_file()} - set(apart)
 
 
@@ -86,6 +89,9 @@ def test_a_folder_gives_one_of_each_per_cell(small, maps, capsys):
     assert record["counts"].items() >= {"found": 5, "analysed": 3, "turned_away": 2}.items()
     assert record["figure"] == ["svg", "pdf"]
     assert {name: record["packages"][name] for name in DRAWN_BY} == {name: version(name) for name in DRAWN_BY}
+    (sitting,) = record["sittings"]
+    assert (sitting["how"], sitting["entered"]) == ("ended", {"analysed": 3, "turned_away": 2})
+    assert "ended: 3 analysed, 2 turned away" in (maps / "log.txt").read_text(encoding="utf-8")
 
 
 def test_a_mesh_of_another_area_than_its_cable_is_said(small, maps, capsys, monkeypatch):
@@ -177,6 +183,26 @@ def test_any_number_of_workers_gives_the_same_bytes(small, tmp_path):
         mapped(small, into, "--mesh", "obj", "--figure", "pdf", "--workers", workers)
         contents.append({path: (into / path).read_bytes() for path in files(into)})
     assert contents[0] == contents[1]
+
+
+@pytest.mark.slow
+def test_a_run_that_is_killed_goes_on_to_the_same_maps(small, tmp_path):
+    (small / "a.swc").unlink()
+    words = ["map", str(small), "--workers", "2", "--into"]
+    killed, undisturbed = tmp_path / "killed", tmp_path / "undisturbed"
+    process = subprocess.Popen(
+        [sys.executable, "-m", "morphotone", *words, str(killed)], stderr=subprocess.DEVNULL
+    )
+    while process.poll() is None and not list(killed.glob("figures/**/*.png")):
+        time.sleep(0.01)
+    process.kill()
+    assert process.wait() < 0
+    assert not (killed / "maps.csv").exists()
+    time.sleep(2.0)  # its workers end by themselves
+    for into in (killed, undisturbed):
+        assert run(*words, into) == 1
+    assert files(killed) == files(undisturbed)
+    assert all((killed / path).read_bytes() == (undisturbed / path).read_bytes() for path in files(killed))
 
 
 def test_single_cells_stand_beside_each_other(small, maps):

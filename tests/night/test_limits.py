@@ -68,6 +68,8 @@ def test_the_usual_limits_share_out_the_memory(monkeypatch: pytest.MonkeyPatch) 
     monkeypatch.setattr(limits, "available_bytes", lambda: 10 * 10**9)
     assert usual_limits(3) == Limits(seconds=1800.0, size=3 * 10**9)
     assert usual_limits(3, minutes=2, gigabytes=0.5) == Limits(seconds=120.0, size=5 * 10**8)
+    with held(usual_limits(1, minutes=1e300, gigabytes=1e300), ends_process=True):  # as good as none
+        pass
     monkeypatch.setattr(limits, "available_bytes", lambda: None)
     assert usual_limits(1).size is None
 

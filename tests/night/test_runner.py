@@ -6,24 +6,26 @@ import subprocess
 import sys
 import threading
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Mapping, Sequence
 from functools import partial
 from pathlib import Path
+from types import SimpleNamespace
 
 import pandas as pd
 import pytest
 
 from morphotone.errors import MorphotoneError
+from morphotone.night import pool as pools
 from morphotone.night import runner
 from morphotone.night.folder import Found, find_files
 from morphotone.night.ledger import Ledger
 from morphotone.night.limits import Limits
 from morphotone.night.outcome import BatchFunction, Item, Outcome
-from morphotone.night.pool import WorkerDiedError, in_processes, pool_of
+from morphotone.night.pool import WorkerDiedError, in_processes, in_this_process, pool_of
 from morphotone.night.progress import Step
 from morphotone.night.results import export
 from morphotone.night.runner import Tally, run
-from morphotone.night.sitting import Sitting
+from morphotone.night.sitting import Nobody, Sitting
 from tests.night import roots
 
 SMALL = 12_000  # bytes: three of the small files a batch, with what opening each of them costs
@@ -218,6 +220,35 @@ def test_a_worker_killed_while_it_hands_over_does_not_stop_the_night(
     assert [len(done[1]) for done in pool({0: items}, [], roots.roots) if done is not None] == [12]
 
 
+def test_another_joblib_costs_the_search_for_such_a_worker_not_the_night() -> None:
+    executor = SimpleNamespace(_processes={1: SimpleNamespace(exitcode=-9)})
+    assert pools._check_workers(executor) is None
+    assert pools._check_workers(object()) is None
+
+
+def test_workers_end_with_the_run_even_if_somebody_keeps_its_error(
+    found: Callable[[], list[Found]], tmp_path: Path
+) -> None:
+    """As an interactive Python does; they would be ended much later, maybe those of another run by then."""
+    left = []
+
+    def pool(waiting, handed_out, function):  # type: ignore[no-untyped-def]
+        try:
+            yield from in_this_process(waiting, handed_out, function)
+        finally:
+            left.append(True)
+
+    class Interrupted(Nobody):
+        def enter(self, outcomes: Sequence[Outcome], seconds: Mapping[str, float]) -> None:
+            if outcomes:
+                raise KeyboardInterrupt
+
+    with Ledger(tmp_path / "out", {}) as ledger, pytest.raises(KeyboardInterrupt) as kept:
+        run(found(), roots.roots, ledger=ledger, pool=pool, witness=Interrupted())
+    assert left == [True]
+    assert kept.tb
+
+
 def test_work_is_handed_out_no_faster_than_outcomes_are_taken(
     found: Callable[[], list[Found]], tmp_path: Path
 ) -> None:
@@ -334,7 +365,7 @@ def test_two_files_of_one_name_are_refused(found: Callable[[], list[Found]], tmp
 def test_a_run_that_loses_files_is_loud(
     found: Callable[[], list[Found]], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    monkeypatch.setattr(runner, "finished", lambda *_: iter(()))
+    monkeypatch.setattr(runner, "finished", lambda *_: (nothing for nothing in ()))
     with pytest.raises(RuntimeError, match="12 files were found, but 0 analysed and 0 turned away"):
         night(found(), roots.roots, tmp_path / "out")
 
