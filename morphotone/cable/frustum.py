@@ -156,8 +156,9 @@ def _put_short(out: Pi, rows: Rows, geometry: _Geometry, kind: int, R_i: Values,
             values[0, case] if len(values) == 1 else values[rows, case] for values in (R_i, g)
         )
         axial, start, end = factors(powers, here.stretch * (resistivity * density))
-        # [:, case][rows] writes twice as fast as [rows, case]. Products are not taken in place: of two complex
-        # arrays, numpy then multiplies a single row to other last bits than the same row among others.
+        # [:, case][rows] writes twice as fast as [rows, case]. Products are not taken in place: of two
+        # complex arrays, numpy then multiplies a single row to other last bits than the same row among
+        # others.
         out.axial[:, case][rows] = here.conductance / resistivity * axial
         out.start[:, case][rows] = here.at_start * density * start
         out.end[:, case][rows] = here.at_end * density * end

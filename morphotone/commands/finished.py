@@ -13,6 +13,7 @@ import pandas as pd
 from morphotone.cable.assumptions import Assumptions
 from morphotone.commands.survey import read_table
 from morphotone.errors import AssumptionError, ResultsError
+from morphotone.night.ledger import FILE as LEDGER
 
 #: Columns that every survey's tables have, and those who go on from them need.
 _COLUMNS = {
@@ -92,6 +93,11 @@ def _record(folder: Path) -> dict[str, Any]:
     try:
         record = json.loads(path.read_bytes())
     except OSError as error:
+        if isinstance(error, FileNotFoundError) and (folder / LEDGER).exists():
+            raise ResultsError(
+                f"{folder}: the survey there is not finished, so there is no run.json yet; give its command "
+                "again, which goes on from where it stopped"
+            ) from error
         raise ResultsError(f"{path}: cannot be read ({error.strerror}); {way_out}") from error
     except ValueError as error:
         raise ResultsError(f"{path}: no JSON ({error}); {way_out}") from error

@@ -38,7 +38,4 @@ def marks_of(
     (known,) = solve_cables([(sited.cable,)], cases_of([assumptions]))
     distances = Distances(*(values[sited.node] for values in distances_of(known, hz)))
     rank = ranks(np.exp(distances.to_soma))["rank"].to_numpy(np.int64)
-    own = np.zeros(len(prepared.rec.number), np.int64)
-    own[prepared.cables[0].sample] = np.arange(len(prepared.cables[0].sample))
-    node = own[sited.cable.sample[sited.node]]
-    return Marks(placed.sites.site, rank, node, placed.position, distances), away
+    return Marks(placed.sites.site, rank, placed.position, distances), away

@@ -75,8 +75,6 @@ class Marks:
         As in the file of sites.
     rank : ndarray of int64
         In the cell, 1 has the greatest attenuation toward the soma.
-    node : ndarray of int64
-        The node at which the frustum with the site ends; 0 for the soma.
     position : ndarray, shape (sites, 3)
         On the axis, µm.
     distances : Distances
@@ -85,7 +83,6 @@ class Marks:
 
     label: NDArray[np.object_]
     rank: Index
-    node: Index
     position: Real
     distances: Distances
 
@@ -145,17 +142,6 @@ class Portrait:
             One of `Distances`; what a frustum's length is replaced by.
         """
         return transform(*self.ends, self.cell.cable.parent, getattr(self.distances, measure))
-
-    def transformed_marks(self, measure: str) -> Real:
-        """Return where the sites come to lie in the same transform, shape (sites, 3)."""
-        if self.marks is None:
-            return np.empty((0, 3))
-        node, parent = self.marks.node, self.cell.cable.parent[self.marks.node]
-        here, at = self.transformed(measure), getattr(self.distances, measure)
-        along = getattr(self.marks.distances, measure) - at[parent]
-        marks: Real = here[parent] + directions(*self.ends)[node] * along[:, None]
-        marks[node == 0] = here[0]
-        return marks
 
     @cached_property
     def endless(self) -> "Endless":

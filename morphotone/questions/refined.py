@@ -41,7 +41,6 @@ def refined(portrait: Portrait) -> Portrait:
     start, end = portrait.ends
     since, until = _shares(fine.cable.length, of)
     axis = (end - start)[of]
-    marks = portrait.marks and replace(portrait.marks, node=at_end[portrait.marks.node])
     finer = Portrait(
         cell=replace(cell, electrotonus=known),
         hz=portrait.hz,
@@ -49,7 +48,7 @@ def refined(portrait: Portrait) -> Portrait:
         column=portrait.column,
         ends=(start[of] + since[:, None] * axis, start[of] + until[:, None] * axis),
         values=portrait.values[of],
-        marks=marks,
+        marks=portrait.marks,
     )
     if portrait.column == COLOUR + hz_suffix(portrait.hz):
         return replace(finer, values=finer.distances.to_soma)

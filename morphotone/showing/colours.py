@@ -68,11 +68,6 @@ _DOMAINS = {
 _OTHER = PALETTE[4]
 
 
-def category_style(index: int) -> Style:
-    """Return the style of the category of this number, 0 on; past the eighth they come round again."""
-    return PALETTE[index % len(PALETTE)]
-
-
 def domain_style(domain: str) -> Style:
     """Return the style of a domain by its name as in the tables; every other code has one in common."""
     return _DOMAINS.get(domain, _OTHER)

@@ -11,6 +11,7 @@ from morphotone.questions.portrait import Portrait
 from morphotone.showing.colours import CONTINUOUS, INK, Scale
 from morphotone.showing.panels import BACK, ENDLESS, LINE, OTHER, styles_of
 from morphotone.showing.sheet import SMALL, Box, axes_at, even_ticks, factor_ticks, number_text, text_width_mm
+from morphotone.showing.titles import without_unit
 
 Real = NDArray[np.float64]
 
@@ -37,7 +38,6 @@ _WORDS = {
     "log_attenuation_from_soma": "attenuation from the soma",
     "charge_to_soma": "share of the charge that reaches the soma",
 }
-_UNITS = {"um": "µm", "MOhm": "MΩ", "ms": "ms", "mV": "mV", "mV_per_pA": "mV/pA"}
 _AT_HZ = re.compile(r"_([\d.e+-]+)Hz\Z")
 
 
@@ -52,9 +52,10 @@ def column_words(column: str) -> str:
     name = column[: at.start()] if at else column
     words = _WORDS.get(name)
     if words is None:
-        unit = next((unit for unit in sorted(_UNITS, key=len, reverse=True) if name.endswith(f"_{unit}")), "")
-        words = name.removesuffix(f"_{unit}").replace("_", " ") + (f" ({_UNITS[unit]})" if unit else "")
-    return f"{words} at {at.group(1)} Hz" if at else words
+        base, unit = without_unit(name)
+        words = base.replace("_", " ") + (f" ({unit})" if unit else "")
+    # At a frequency there is no resistance, but the magnitude of an impedance.
+    return f"{words.replace('resistance', 'impedance')} at {at.group(1)} Hz" if at else words
 
 
 def draw_colour_bar(figure: Figure, box: Box, scale: Scale, logarithmic: bool) -> Axes:

@@ -208,7 +208,7 @@ def _draw_head(figure: Figure, portrait: Portrait, width_mm: float) -> None:
     tips = len(cell.branches.tips)
     to_soma, from_soma = (values[cell.farthest_tip] for values in portrait.distances[2:])
     facts = [
-        f"{'input impedance' if portrait.hz else 'R_in'} {_three(abs(cell.electrotonus.Z_in[0, case]))} MΩ",
+        f"{'|Z_in|' if portrait.hz else 'R_in'} {_three(abs(cell.electrotonus.Z_in[0, case]))} MΩ",
         f"{_three(cell.cable.length.sum())} µm of cable",
         f"{tips} tip" if tips == 1 else f"{tips} tips",
     ]

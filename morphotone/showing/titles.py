@@ -89,10 +89,15 @@ def title(column: str) -> str:
     """
     at = _HZ.fullmatch(column)
     name, hz = (_at_frequency(at[1]), f", {at[2]} Hz") if at else (column, "")
-    ending = next((end for end in _UNITS if name.endswith(f"_{end}")), "")
-    base = name.removesuffix(f"_{ending}") if ending else name
+    base, unit = without_unit(name)
     words = _WORDS.get(base) or _composed(base)
-    return f"{words}{hz}" + (f" ({_UNITS[ending]})" if ending else "")
+    return f"{words}{hz}" + (f" ({unit})" if unit else "")
+
+
+def without_unit(column: str) -> tuple[str, str]:
+    """Return a column's name, without frequency, without its unit, and the unit as it is printed."""
+    ending = next((end for end in _UNITS if column.endswith(f"_{end}")), "")
+    return (column.removesuffix(f"_{ending}"), _UNITS[ending]) if ending else (column, "")
 
 
 def plain(text: str) -> str:

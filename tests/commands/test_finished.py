@@ -63,6 +63,12 @@ def test_a_record_that_is_none_is_refused(results, text, match):
         read_finished(results)
 
 
+def test_an_unfinished_survey_is_said_to_be_one(results):
+    (results / "run.json").unlink()
+    with pytest.raises(ResultsError, match="the survey there is not finished, so there is no run.json yet"):
+        read_finished(results)
+
+
 def test_a_ranking_is_no_survey(results):
     changed(results, folder=None)
     with pytest.raises(ResultsError, match="no survey's record, 'folder' is not in it"):

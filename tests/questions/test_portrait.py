@@ -166,27 +166,15 @@ def marked():
 
 
 @pytest.mark.parametrize("measure", MEASURES)
-def test_sites_lie_between_the_ends_of_their_frustum(marked, measure):
-    marks, parent = marked.marks, marked.cell.cable.parent
-    distance, at = getattr(marked.distances, measure), getattr(marks.distances, measure)
-    assert (at >= distance[parent[marks.node]] - 1e-12).all()
-    assert (at <= distance[marks.node] + 1e-12).all()
-
-
-@pytest.mark.parametrize("measure", MEASURES)
-def test_transformed_sites_lie_on_the_transformed_frusta(marked, measure):
-    marks, place = marked.marks, marked.transformed(measure)
-    near, far, at = (
-        place[marked.cell.cable.parent[marks.node]],
-        place[marks.node],
-        marked.transformed_marks(measure),
-    )
-    detour = (
-        np.linalg.norm(at - near, axis=1)
-        + np.linalg.norm(far - at, axis=1)
-        - np.linalg.norm(far - near, axis=1)
-    )
-    np.testing.assert_allclose(detour, 0.0, atol=1e-9)
+def test_sites_at_samples_are_as_far_as_these(tmp_path, measure):
+    path = tmp_path / "sites.csv"
+    path.write_text("cell,site,sample\ncell,a,4\ncell,b,1\ncell,c,3\n", encoding="utf-8")
+    marked = portrait(trees.ball_and_stick(), ASSUMPTIONS, hz=50.0, sites=read_sites(path).sites)
+    cell = marked.cell
+    nodes = [int(np.flatnonzero(cell.rec.number[cell.cable.sample] == number)[0]) for number in (4, 1, 3)]
+    expected = getattr(marked.distances, measure)[nodes]
+    np.testing.assert_allclose(getattr(marked.marks.distances, measure), expected, rtol=1e-12)
+    np.testing.assert_array_equal(marked.marks.position[[0, 2]], marked.ends[1][[nodes[0], nodes[2]]])
 
 
 def test_ranks_are_by_attenuation_at_the_frequency_shown(marked):
@@ -202,5 +190,5 @@ def test_a_site_at_the_soma_stays_there(tmp_path):
     path = tmp_path / "sites.csv"
     path.write_text("cell,site,sample\ncell,s,1\n", encoding="utf-8")
     drawn = portrait(trees.ball_and_stick(), sites=read_sites(path).sites)
-    np.testing.assert_array_equal(drawn.transformed_marks("to_soma"), [[0.0, 0.0, 0.0]])
+    assert [values.tolist() for values in drawn.marks.distances] == [[0.0]] * 4
     assert drawn.marks.rank.tolist() == [1]

@@ -5,7 +5,6 @@ import pytest
 
 from morphotone.cable.assumptions import Assumptions
 from morphotone.questions.refined import refined
-from morphotone.reading.sites import read_sites
 from tests import trees
 from tests.commands.folders import STUDY
 from tests.showing.drawn import portrait
@@ -69,14 +68,3 @@ def test_a_densely_traced_cell_is_left_as_it_is():
 def test_other_values_stand_for_whole_frusta():
     coarse = portrait(trees.ball_and_stick(), colour="diameter_um")
     assert set(refined(coarse).values.tolist()) == set(coarse.values.tolist())
-
-
-def test_sites_stay_where_they_are(tmp_path):
-    path = tmp_path / "sites.csv"
-    path.write_text("cell,site,sample,fraction\ncell,a,3,0.7\ncell,b,4,\ncell,c,1,\n", encoding="utf-8")
-    coarse = portrait(trees.ball_and_stick(), sites=read_sites(path).sites)
-    fine = refined(coarse)
-    for measure in MEASURES:
-        np.testing.assert_allclose(
-            fine.transformed_marks(measure), coarse.transformed_marks(measure), atol=1e-12
-        )

@@ -9,7 +9,6 @@ from morphotone.showing.colours import (
     NO_VALUE,
     PALETTE,
     Scale,
-    category_style,
     domain_style,
     scale_of,
 )
@@ -41,7 +40,6 @@ def test_the_palette_is_okabe_and_itos():
 
 def test_categories_differ_in_line_as_well_as_colour():
     assert len({style.dashes for style in PALETTE}) == len(PALETTE)
-    assert category_style(len(PALETTE)) == category_style(0)
 
 
 def test_domains_are_told_apart_without_colour():
