@@ -18,6 +18,8 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from morphotone.reading.findings import CATALOGUE
+
 Real = NDArray[np.float64]
 
 FAR = 3.5
@@ -156,11 +158,12 @@ def notable(cells: pd.DataFrame, findings: pd.DataFrame, far: Distances) -> list
     R_in = cells["R_in_MOhm"].to_numpy(np.float64)
     for row, (file, grade) in enumerate(zip(cells["file"], cells["grade"], strict=True)):
         of_file = codes.get(str(file), [])
-        pressing = [f"unfit, kept all the same: {', '.join(of_file)}"] if grade == "unfit" else []
+        seen = "; ".join(CATALOGUE[code].title if code in CATALOGUE else code for code in of_file)
+        pressing = [f"unfit, kept all the same: {seen}"] if grade == "unfit" else []
         pressing += [] if np.isfinite(R_in[row]) else ["R_in is no finite number"]
         reasons = pressing + _far_in_words(cells, far, row)
         if grade == "doubtful" and len(of_file) > 1:
-            reasons.append(f"doubtful for {len(of_file)} reasons: {', '.join(of_file)}")
+            reasons.append(f"doubtful for {len(of_file)} reasons: {seen}")
         if reasons:
             rank = (not pressing, -greatest[row] if greatest[row] > FAR else 0.0, -len(of_file))
             found.append((rank, Notable(row, float(greatest[row]), tuple(reasons))))

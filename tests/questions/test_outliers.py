@@ -102,11 +102,11 @@ def test_order_and_reasons():
     )
     found = notable(table, findings, distances(table))
     assert {one.row: one.reasons for one in found} == {
-        6: ("unfit, kept all the same: flat",),
+        6: ("unfit, kept all the same: no depth",),
         4: ("R_in is no finite number",),
         3: ("R_in 9.9 times the median of all cells (1000 MΩ against 101 MΩ)",),
         11: ("λ 0.1 times the median of all cells (30 µm against 300 µm)",),
-        8: ("doubtful for 2 reasons: flat, soma_odd",),
+        8: ("doubtful for 2 reasons: no depth; a soma of unlikely size",),
     }
     rows = [one.row for one in found]
     assert set(rows[:2]) == {4, 6}
