@@ -7,9 +7,10 @@ from __future__ import annotations
 
 import hashlib
 import os
-import threading
 import time
+from collections.abc import Callable
 from dataclasses import replace
+from multiprocessing.connection import Connection
 from pathlib import Path
 
 import numpy as np
@@ -110,13 +111,18 @@ def roots_large(batch: list[Item]) -> list[Outcome]:
 
 
 def roots_cut_off(batch: list[Item], culprit: str) -> list[Outcome]:
-    """Hand over far more than a pipe holds, and die in the middle of it."""
+    """Die in the middle of handing over."""
     outcomes = roots(batch)
     if batch[0].name == culprit:
-        threading.Timer(2.0, os._exit, [9]).start()
-        time.sleep(1.0)
-        outcomes = [replace(outcomes[0], parts={"ballast": b"0\r\n" * 50_000_000})]
+        Connection._send = _cut_off
+        outcomes = [replace(outcomes[0], parts={"ballast": b"0\r\n" * 1_000_000})]
     return outcomes
+
+
+def _cut_off(connection: Connection, message: bytes, write: Callable[[int, bytes], int] = os.write) -> None:
+    """Send the length that comes before a long message, and no more."""
+    write(connection.fileno(), message[:1000])
+    os._exit(9)
 
 
 def roots_forgetful(batch: list[Item]) -> list[Outcome]:

@@ -4,7 +4,6 @@ import os
 import signal
 import subprocess
 import sys
-import threading
 import time
 from collections.abc import Callable, Mapping, Sequence
 from functools import partial
@@ -204,18 +203,17 @@ def test_what_happens_is_witnessed(found: Callable[[], list[Found]], tmp_path: P
 
 
 @pytest.mark.slow
+@pytest.mark.skipif(sys.platform == "win32", reason="results go another way there")
 def test_a_worker_killed_while_it_hands_over_does_not_stop_the_night(
     found: Callable[[], list[Found]], tmp_path: Path
 ) -> None:
-    """One dies in the middle of its result, which this process takes no notice of meanwhile."""
     pool = in_processes(2)
     items = [Item(file.name, file.path, None) for file in found()]
     function = partial(roots.roots_cut_off, culprit="a/00.swc")
     work = pool({index: [item] for index, item in enumerate(items[:2])}, [], roots.roots)
     assert sum(done is not None for done in work) == 2  # the workers are there
     work = pool({index: [item] for index, item in enumerate(items[:2])}, [], function)
-    threading.Timer(0.3, sum, [range(3 * 10**8)]).start()  # one step of Python: no other thread has its turn
-    with pytest.raises(WorkerDiedError, match="ended"):
+    with pytest.raises(WorkerDiedError, match="ended while it handed over"):
         list(work)
     assert [len(done[1]) for done in pool({0: items}, [], roots.roots) if done is not None] == [12]
 
