@@ -1,5 +1,6 @@
 from __future__ import annotations
 
+import subprocess
 import sys
 import threading
 import time
@@ -91,3 +92,16 @@ def test_a_batch_schedulers_limit_counts(
     monkeypatch.setattr(limits, "_GROUPS", tmp_path)
     monkeypatch.setattr(Path, "read_text", read_text)
     assert limits.available_bytes() == 5_000_000
+
+
+def test_after_limits_a_profiler_goes_on_as_before():
+    """Once CPython waited for an exception that had been called back, and a profiled loop never ended."""
+    script = (
+        "import sys\n"
+        "from morphotone.night.limits import Limits, held\n"
+        "with held(Limits(seconds=60), ends_process=False):\n"
+        "    pass\n"
+        "sys.setprofile(lambda *_: None)\n"
+        "sum(abs(number) for number in range(1000))\n"
+    )
+    subprocess.run([sys.executable, "-c", script], check=True, timeout=60)
