@@ -1,0 +1,6 @@
+"""What the whole suite needs."""
+
+import signal
+
+# A suite started in the background has Ctrl-C ignored, and so have the programs that it starts and interrupts.
+signal.signal(signal.SIGINT, signal.default_int_handler)
