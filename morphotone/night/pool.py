@@ -12,6 +12,7 @@ import signal
 import threading
 import time
 from collections.abc import Callable, Iterator, Mapping
+from contextlib import contextmanager
 from itertools import islice
 from typing import Any, Protocol, TypeVar
 
@@ -101,7 +102,8 @@ def in_processes(workers: int) -> Pool:
             while True:
                 for index, batch in islice(rest, 2 * workers - len(running)):
                     handed_out.append(index)
-                    running[executor.submit(function, batch)] = index
+                    with _interrupts_held():
+                        running[executor.submit(function, batch)] = index
                 if not running:
                     return
                 # Now and then a look round: on Windows, Ctrl-C does not wake what waits without limit.
@@ -152,6 +154,19 @@ def _finished(running: Mapping[Future[Result], int]) -> list[tuple[int, Result]]
 
 def _is_well(future: Future[Result]) -> bool:
     return future.done() and not future.cancelled() and future.exception() is None
+
+
+@contextmanager
+def _interrupts_held() -> Iterator[None]:
+    """Hold Ctrl-C back while workers may be started, who inherit that: it is for the process of the run."""
+    if not hasattr(signal, "pthread_sigmask"):  # Windows
+        yield
+        return
+    before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
+    try:
+        yield
+    finally:
+        signal.pthread_sigmask(signal.SIG_SETMASK, before)
 
 
 def _begin_worker(run: int) -> None:
